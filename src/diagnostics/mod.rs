@@ -45,7 +45,14 @@ pub struct Fault {
 
 impl Fault {
     pub fn wrong(code: &'static str, message: impl Into<String>) -> Fault {
-        Fault { code, cause: Cause::Wrong, message: message.into(), place: None, expected: None, repair: None }
+        Fault {
+            code,
+            cause: Cause::Wrong,
+            message: message.into(),
+            place: None,
+            expected: None,
+            repair: None,
+        }
     }
 
     pub fn unreadable(code: &'static str, message: impl Into<String>) -> Fault {
