@@ -3,18 +3,28 @@
 use std::fmt;
 
 /// Why a figure does not exist. Printed in the report and written as `why` in answers.json.
+///
+/// A figure that should exist but could not be computed to the promised accuracy is `failed`: the
+/// review turns any such into an error, so that a doubtful digit is never printed.
 #[derive(Debug, Clone, PartialEq, Eq)]
-pub struct Absent(pub String);
+pub struct Absent {
+    pub reason: String,
+    pub failed: bool,
+}
 
 impl Absent {
     pub fn because(reason: impl Into<String>) -> Absent {
-        Absent(reason.into())
+        Absent { reason: reason.into(), failed: false }
+    }
+
+    pub fn failed(reason: impl Into<String>) -> Absent {
+        Absent { reason: reason.into(), failed: true }
     }
 }
 
 impl fmt::Display for Absent {
     fn fmt(&self, f: &mut fmt::Formatter<'_>) -> fmt::Result {
-        f.write_str(&self.0)
+        f.write_str(&self.reason)
     }
 }
 
