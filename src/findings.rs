@@ -1,1 +1,92 @@
-//! findings
+//! What the review found: the one value that the report and the stamp see.
+
+use crate::checks::Check;
+use crate::data::Data;
+use crate::diagnostics::Caution;
+use crate::plan::Plan;
+use crate::posterior::Posterior;
+use crate::quantity::{Absent, Figure};
+use crate::questions::figures::Figures;
+use crate::questions::rule::Given;
+use crate::working::Step;
+
+#[derive(Debug)]
+pub struct Findings {
+    pub plan: Plan,
+    pub data: Data,
+    /// Reviewed series in natural order.
+    pub series: Vec<SeriesFindings>,
+    /// Series with data, but none in the period under review, and their last period.
+    pub not_reviewed: Vec<(String, String)>,
+    pub across: Vec<AcrossFindings>,
+    pub cautions: Vec<Caution>,
+    /// Largest error reached by any quadrature.
+    pub quadrature_error: f64,
+}
+
+#[derive(Debug)]
+pub struct SeriesFindings {
+    pub name: String,
+    pub label: Option<String>,
+    /// Which source gave the prior, in the spec's words ("history"; "peers" where `otherwise` served).
+    pub prior_from: String,
+    /// How the prior was built, in words and figures, for the report.
+    pub prior_notes: Vec<String>,
+    pub prior: Result<Posterior, Absent>,
+    pub readings_only: Result<Posterior, Absent>,
+    pub posterior: Result<Posterior, Absent>,
+    pub influence: Influence,
+    pub answers: Vec<Answer>,
+    pub checks: Vec<Check>,
+    pub sensitivity: Vec<UnderAlternative>,
+    /// True where no verdict on the period can be given (no readings).
+    pub without_readings: bool,
+}
+
+#[derive(Debug, Clone, PartialEq)]
+pub struct Influence {
+    /// Share of the level that comes from the prior.
+    pub prior_weight: Figure,
+    /// The number of readings that the prior is worth.
+    pub prior_readings: Figure,
+}
+
+#[derive(Debug, Clone)]
+pub struct Answer {
+    pub id: String,
+    pub ask: String,
+    pub say: Option<String>,
+    pub words: String,
+    pub symbols: String,
+    pub settings: Vec<(&'static str, String)>,
+    pub figures: Figures,
+    pub prior_only: Figures,
+    pub readings_only: Figures,
+    /// `None`: the question has no rule.
+    pub verdict: Option<Given>,
+    /// What belongs to the rule: acceptance limits, guard band, risks.
+    pub rule_figures: Figures,
+    pub working: Vec<Step>,
+}
+
+#[derive(Debug, Clone)]
+pub struct AcrossFindings {
+    pub id: String,
+    pub ask: String,
+    pub say: Option<String>,
+    pub words: String,
+    /// Per series (empty name where the answer is one for all).
+    pub series: Vec<(String, Figures)>,
+    pub verdict: Option<Given>,
+}
+
+/// All answers of one series again under one alternative.
+#[derive(Debug, Clone)]
+pub struct UnderAlternative {
+    /// A standing alternative's id, or the spec's.
+    pub alternative: String,
+    /// Per question id.
+    pub answers: Vec<(String, Figures, Option<Given>)>,
+    /// Why it was not possible.
+    pub why: Option<String>,
+}
