@@ -3,6 +3,8 @@
 //! A [`Fault`] stops the run; every stage collects all it finds in a [`Faults`] before it stops.
 //! A [`Caution`] does not stop: it is printed in the report beside the figures that it concerns.
 
+pub mod render;
+
 use std::ops::Range;
 
 /// Where in a file something stands: the line itself travels along, so that a message can show it

@@ -3,6 +3,7 @@
 //! of question stays a [`Table`] until the stage that owns it reads it.
 
 use crate::quantity::{Period, Scale, Sd};
+pub use crate::spec::reader::Threshold;
 use crate::spec::table::{Span, Table};
 use jiff::civil::Date;
 use std::collections::BTreeMap;
@@ -24,6 +25,9 @@ pub struct Plan {
     pub otherwise: Option<Table>,
     pub alternatives: Vec<Alternative>,
     pub series: BTreeMap<String, SeriesOverride>,
+    /// A file with more of the same, one row a series; whoever reads it hands each row to
+    /// [`Plan::override_row`].
+    pub overrides: Option<OverridesFile>,
     pub questions: Vec<QuestionPlan>,
     pub report: ReportPlan,
     /// The spec, and its base where it has one: their bytes are stamped.
@@ -286,7 +290,8 @@ pub struct Exclude {
 pub struct Event {
     pub date: Date,
     pub what: String,
-    pub kind: String,
+    /// method, instrument, staff, site or incident.
+    pub kind: Option<String>,
     pub series: Option<String>,
 }
 
@@ -317,6 +322,21 @@ pub struct SeriesOverride {
     pub prior: Option<Table>,
     pub within: Option<Table>,
     pub bias: Option<Bias>,
+}
+
+/// `[overrides]`: a table with one row a series.
+#[derive(Debug, Clone, PartialEq)]
+pub struct OverridesFile {
+    pub file: FileRef,
+    /// The column of the series.
+    pub series: String,
+    /// What a column sets (`label`, `limit.tolerance.upper`, `prior.mean`), the column, and where
+    /// the spec says so.
+    pub columns: Vec<(String, String, Span)>,
+    pub delimiter: Option<u8>,
+    pub decimal_comma: bool,
+    pub encoding: Option<String>,
+    pub skip: u64,
 }
 
 #[derive(Debug, Clone, PartialEq)]
@@ -360,13 +380,6 @@ pub enum Condition {
     EstimateBelow,
     LowerAbove,
     UpperBelow,
-}
-
-/// A number, or the name of a limit (resolved per series).
-#[derive(Debug, Clone, PartialEq)]
-pub enum Threshold {
-    Number(f64),
-    Limit(String),
 }
 
 #[derive(Debug, Clone, PartialEq)]

@@ -1,8 +1,6 @@
-//! TOML tables that own what they hold and remember where it stood, and the reader that takes
-//! typed values out of them while it notes everything that is wrong.
+//! TOML tables that own what they hold and remember where it stood.
 
-use crate::diagnostics::{Fault, Faults, Place};
-use crate::spec::keys::Key;
+use crate::diagnostics::Place;
 use std::ops::Range;
 use std::sync::Arc;
 
@@ -14,10 +12,18 @@ pub struct SpecText {
 }
 
 /// A piece of a spec's text.
-#[derive(Debug, Clone, PartialEq)]
+#[derive(Debug, Clone)]
 pub struct Span {
     pub source: Arc<SpecText>,
     pub bytes: Range<usize>,
+}
+
+/// All spans are equal: where a thing stands does not change what it says, so that two plans read
+/// from differently laid out texts compare as equal when they mean the same.
+impl PartialEq for Span {
+    fn eq(&self, _: &Span) -> bool {
+        true
+    }
 }
 
 impl Span {
@@ -89,19 +95,36 @@ impl Table {
     }
 }
 
-/// Takes typed values out of a table by its table of keys. Every getter notes what is wrong and
-/// returns `None` then, so that all faults are found in one run.
-pub struct Reader<'a> {
-    pub table: &'a Table,
-    pub keys: &'static [Key],
-    pub faults: &'a mut Faults,
+impl Value {
+    /// What was found, in words that follow "found": `the text "abc"`, `the number 95`, `a list`.
+    pub fn in_words(&self) -> String {
+        match &self.kind {
+            Kind::Text(text) if text.is_empty() => "an empty text".into(),
+            Kind::Text(text) => format!("the text \"{}\"", shortened(text)),
+            Kind::Number { written, .. } => format!("the number {}", shortened(written)),
+            Kind::Flag(flag) => format!("{flag}"),
+            Kind::Date(date) => format!("the date {date}"),
+            Kind::List(_) => "a list".into(),
+            Kind::Table(_) => "a table".into(),
+        }
+    }
+
+    /// The value as one text, where it is a single one: a number with the digits as written.
+    pub fn as_plain_text(&self) -> Option<String> {
+        match &self.kind {
+            Kind::Text(text) => Some(text.clone()),
+            Kind::Number { written, .. } => Some(written.clone()),
+            Kind::Flag(flag) => Some(flag.to_string()),
+            Kind::Date(date) => Some(date.to_string()),
+            Kind::List(_) | Kind::Table(_) => None,
+        }
+    }
 }
 
-impl<'a> Reader<'a> {
-    /// A fault at a value of this table (or at the table's head where the key is missing).
-    pub fn fault_at(&mut self, key: &str, fault: Fault) {
-        let span = self.table.get(key).map_or(&self.table.span, |value| &value.span);
-        let place = span.place();
-        self.faults.push(fault.at(place));
+/// At most 40 characters, for a message.
+fn shortened(text: &str) -> String {
+    match text.char_indices().nth(40) {
+        Some((at, _)) => format!("{}…", &text[..at]),
+        None => text.to_string(),
     }
 }
