@@ -20,7 +20,6 @@ pub const TOP: &[Key] = &[
     Key::optional("history", Takes::Table, "which earlier periods count"),
     Key::required("within", Takes::Table, "the standard deviation of single readings about their level"),
     Key::required("prior", Takes::Table, "what was known before this period's readings"),
-    Key::optional("otherwise", Takes::Table, "the prior of a series whose history is too short"),
     Key::optional("alternative", Takes::Tables, "other priors and spreads, for the sensitivity section"),
     Key::optional("series", Takes::Other("tables such as [series.\"A-1\"]"), "what differs for one series"),
     Key::optional("overrides", Takes::Table, "what differs for single series, by a file"),
@@ -302,6 +301,10 @@ pub const REPORT: &[Key] = &[
         "copied (default): the data are kept beside",
     ),
 ];
+
+/// What a [prior] may hold beside the keys of its source.
+pub const OTHERWISE: Key =
+    Key::optional("otherwise", Takes::Table, "the prior of a series whose history is too short");
 
 /// Every section whose keys are settled here, by the name that a reader knows it by. What belongs to
 /// a source of a prior or a kind of question is listed where it is computed.

@@ -64,6 +64,29 @@ impl<'a> Reader<'a> {
         self.faults.push(fault.at(place));
     }
 
+    /// The value as written; its absence is noted, for keys that only some tables require.
+    pub fn required(&mut self, key: &str) -> Option<&'a Value> {
+        let value = self.value(key);
+        if value.is_none()
+            && let Some(known) = self.keys.iter().find(|known| known.name == key && !known.required)
+        {
+            self.faults.push(missing_key(self.table, known));
+        }
+        value
+    }
+
+    /// [`Reader::number`] of a key that this table requires.
+    pub fn number_or_fault(&mut self, key: &str) -> Option<f64> {
+        self.required(key)?;
+        self.number(key)
+    }
+
+    /// [`Reader::positive`] of a key that this table requires.
+    pub fn positive_or_fault(&mut self, key: &str) -> Option<f64> {
+        self.required(key)?;
+        self.positive(key)
+    }
+
     pub fn text(&mut self, key: &str) -> Option<String> {
         let value = self.value(key)?;
         match &value.kind {

@@ -1,6 +1,7 @@
 //! TOML tables that own what they hold and remember where it stood.
 
 use crate::diagnostics::Place;
+pub use crate::spec::reader::Reader;
 use std::ops::Range;
 use std::sync::Arc;
 

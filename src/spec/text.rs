@@ -1,6 +1,7 @@
 //! From bytes to tables: encoding, TOML syntax, dates, and the place of every key and value.
 
 use crate::diagnostics::{Fault, Faults, Place};
+use crate::source;
 use crate::spec::table::{Entry, Kind, Span, SpecText, Table, Value};
 use std::collections::BTreeSet;
 use std::ops::Range;
@@ -15,35 +16,12 @@ const SYNTAX_FAULTS_SHOWN: usize = 5;
 /// The bytes as UTF-8 text, without a byte order mark.
 pub fn decode(bytes: &[u8], file: &str) -> Result<String, Fault> {
     if bytes.starts_with(&[0xff, 0xfe]) || bytes.starts_with(&[0xfe, 0xff]) {
-        return Err(Fault::wrong("not-utf8", format!("{file} is UTF-16, not UTF-8"))
+        return Err(Fault::wrong("not-utf-8", format!("{file} is UTF-16, not UTF-8"))
             .at(Place { file: file.into(), line: 1, column: 1, excerpt: String::new(), mark: 0..0 })
             .expected("UTF-8 text")
             .repair("save the file as UTF-8"));
     }
-    let bytes = bytes.strip_prefix(b"\xef\xbb\xbf").unwrap_or(bytes);
-    match std::str::from_utf8(bytes) {
-        Ok(text) => Ok(text.to_string()),
-        Err(error) => Err(not_utf8(bytes, error.valid_up_to(), file)),
-    }
-}
-
-fn not_utf8(bytes: &[u8], at: usize, file: &str) -> Fault {
-    let line_start = bytes[..at].iter().rposition(|b| *b == b'\n').map_or(0, |newline| newline + 1);
-    let line_end = bytes[at..].iter().position(|b| *b == b'\n').map_or(bytes.len(), |newline| at + newline);
-    let before = String::from_utf8_lossy(&bytes[line_start..at]).into_owned();
-    let excerpt = String::from_utf8_lossy(&bytes[line_start..line_end]).trim_end().to_string();
-    let mark = before.len()..before.len() + char::REPLACEMENT_CHARACTER.len_utf8();
-    let place = Place {
-        file: file.to_string(),
-        line: bytes[..at].iter().filter(|b| **b == b'\n').count() as u64 + 1,
-        column: before.chars().count() as u64 + 1,
-        excerpt,
-        mark,
-    };
-    Fault::wrong("not-utf8", format!("the byte {:02X} here is not UTF-8", bytes[at]))
-        .at(place)
-        .expected("UTF-8 text")
-        .repair("save the file as UTF-8")
+    source::text(bytes, file).map(str::to_string)
 }
 
 /// The tables of a TOML text, entries in the order of the text. Faults are noted; where there are
