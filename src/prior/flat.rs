@@ -13,7 +13,8 @@ use crate::diagnostics::Faults;
 use crate::plan::Plan;
 use crate::quantity::Scale;
 use crate::spec::keys::{Key, Takes};
-use crate::spec::table::{Reader, Table};
+use crate::spec::reader::Reader;
+use crate::spec::table::Table;
 
 const KEYS: &[Key] = &[Key::required("from", Takes::OneOf(&["flat"]), "the readings speak alone")];
 

@@ -25,18 +25,31 @@ use crate::diagnostics::{Caution, Fault, Faults, Place};
 use crate::plan::Plan;
 use crate::quantity::Scale;
 use crate::spec::keys::{Key, Takes};
-use crate::spec::table::{Reader, Table};
+use crate::spec::reader::Reader;
+use crate::spec::table::Table;
 
 pub const BETWEEN: Takes =
     Takes::OneOf(&["uniform", "half-normal", "half-cauchy", "none", "reml", "moments"]);
 
 const KEYS: &[Key] = &[
     Key::required("from", Takes::OneOf(&["history"]), "earlier periods of the series"),
-    Key::optional("pattern", Takes::OneOf(&["about a mean", "random walk"]), "how levels move: about a long-run mean (default) or step by step"),
+    Key::optional(
+        "pattern",
+        Takes::OneOf(&["about a mean", "random walk"]),
+        "how levels move: about a long-run mean (default) or step by step",
+    ),
     Key::optional("between", BETWEEN, "what is held of the between sd before the data; uniform by default"),
-    Key::optional("between_scale", Takes::Positive, "the scale of half-normal or half-cauchy, on the model's scale"),
+    Key::optional(
+        "between_scale",
+        Takes::Positive,
+        "the scale of half-normal or half-cauchy, on the model's scale",
+    ),
     Key::optional("between_sd", Takes::Positive, "instead of between: the between sd, known"),
-    Key::optional("weight_of_history", Takes::Share, "with between = \"none\": what an earlier reading counts against one of this period"),
+    Key::optional(
+        "weight_of_history",
+        Takes::Share,
+        "with between = \"none\": what an earlier reading counts against one of this period",
+    ),
     Key::optional("basis", Takes::Text, "where a stated between_scale or between_sd comes from"),
 ];
 
@@ -72,9 +85,12 @@ fn read(table: &Table, _: Scale, _: &Plan, faults: &mut Faults) -> Option<Box<dy
         && random_walk
         && matches!(read.between, Between::Reml | Between::Moments | Between::None)
     {
-        let fault = Fault::wrong("key-out-of-place", "a random walk needs steps whose sd is known or has a prior law")
-            .expected("between = \"uniform\", \"half-normal\" or \"half-cauchy\", or between_sd")
-            .repair("choose one of these");
+        let fault = Fault::wrong(
+            "key-out-of-place",
+            "a random walk needs steps whose sd is known or has a prior law",
+        )
+        .expected("between = \"uniform\", \"half-normal\" or \"half-cauchy\", or between_sd")
+        .repair("choose one of these");
         reader.fault_at("between", fault);
     }
     reader.finish();
@@ -88,7 +104,7 @@ pub fn read_between(reader: &mut Reader<'_>) -> Option<BetweenRead> {
     let scale = reader.positive("between_scale");
     let known = reader.positive("between_sd");
     let weight = reader.share("weight_of_history");
-    let has = |reader: &Reader<'_>, key: &str| reader.table.get(key).is_some();
+    let has = |reader: &Reader<'_>, key: &str| reader.has(key);
     let needs_scale = matches!(name, "half-normal" | "half-cauchy");
     if has(reader, "between_sd") && has(reader, "between") {
         let fault = Fault::wrong("either-or", "the between sd is stated, and has a prior law as well")
@@ -109,9 +125,12 @@ pub fn read_between(reader: &mut Reader<'_>) -> Option<BetweenRead> {
         reader.fault_at("between_scale", fault);
     }
     if has(reader, "weight_of_history") && name != "none" {
-        let fault = Fault::wrong("key-out-of-place", "weight_of_history serves only where all periods share one level")
-            .expected("between = \"none\" beside it")
-            .repair("leave weight_of_history out, or set between = \"none\"");
+        let fault = Fault::wrong(
+            "key-out-of-place",
+            "weight_of_history serves only where all periods share one level",
+        )
+        .expected("between = \"none\" beside it")
+        .repair("leave weight_of_history out, or set between = \"none\"");
         reader.fault_at("weight_of_history", fault);
     }
     let states = has(reader, "between_scale") || has(reader, "between_sd");

@@ -17,7 +17,8 @@ use crate::diagnostics::{Fault, Faults};
 use crate::plan::Plan;
 use crate::quantity::Scale;
 use crate::spec::keys::{Key, Takes};
-use crate::spec::table::{Kind, Reader, Table};
+use crate::spec::reader::Reader;
+use crate::spec::table::{Kind, Table};
 
 const KEYS: &[Key] = &[
     Key::required("from", Takes::OneOf(&["mixture"]), "several priors, each with a weight"),
@@ -40,7 +41,7 @@ fn read(table: &Table, scale: Scale, plan: &Plan, faults: &mut Faults) -> Option
     let tables = reader.tables("parts");
     reader.finish();
     let mut parts = Vec::new();
-    for part in tables? {
+    for part in tables {
         let weight = match part.get("weight").map(|value| (&value.kind, &value.span)) {
             Some((Kind::Number { value, .. }, _)) if *value > 0.0 && value.is_finite() => Some(*value),
             found => {

@@ -1,8 +1,110 @@
 //! Stage 4: what was known before this period's readings. One file a source; each reads its own keys
 //! of `[prior]` and turns them, with the data of earlier periods or other series, into a [`Model`].
 
+mod basis;
+pub mod flat;
+pub mod ground;
+pub mod history;
+pub mod mixture;
+pub mod peers;
+pub mod quantiles;
+pub mod stated;
+pub mod within;
+
 use crate::data::evidence::Evidence;
+use crate::diagnostics::{Caution, Fault, Faults};
+use crate::plan::Plan;
 use crate::quantity::{Period, Scale};
+use crate::spec::keys::{Key, nearest};
+use crate::spec::table::{Kind, Table};
+use ground::Ground;
+use std::fmt::Debug;
+
+/// A source of a prior: a row of the registry.
+pub struct SourceKind {
+    /// As the spec says it: `from = "history"`.
+    pub from: &'static str,
+    /// The user's page: the head comment of the source's file.
+    pub page: &'static str,
+    /// Its keys of `[prior]` beside `from`.
+    pub keys: &'static [Key],
+    pub read: fn(&Table, Scale, &Plan, &mut Faults) -> Option<Box<dyn Source>>,
+}
+
+/// All sources of a prior, in the order of the reference page.
+pub const ALL: &[SourceKind] =
+    &[stated::KIND, quantiles::KIND, history::KIND, peers::KIND, flat::KIND, mixture::KIND];
+
+/// A source with its keys read, ready to give the prior of any series.
+pub trait Source: Debug + Send + Sync {
+    /// The name of the source, as the spec says it.
+    fn from(&self) -> &'static str;
+
+    /// The prior of one series.
+    fn level(&self, ground: &Ground<'_>) -> Result<Built, Refusal>;
+
+    /// Every key with the value used, defaults filled in, as TOML values.
+    fn settings(&self) -> Vec<(&'static str, String)>;
+}
+
+/// A prior, and what the reader must know of how it came about.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Built {
+    pub level: LevelPrior,
+    /// Sentences for the report: which source, which periods, which figures.
+    pub notes: Vec<String>,
+    pub cautions: Vec<Caution>,
+}
+
+/// Why a source gives no prior for a series.
+#[derive(Debug, Clone, PartialEq)]
+pub enum Refusal {
+    /// The history is too short: `otherwise` may serve.
+    TooShort(Fault),
+    Wrong(Fault),
+}
+
+/// Reads a `[prior]` table by the source that it names.
+pub fn read(table: &Table, scale: Scale, plan: &Plan, faults: &mut Faults) -> Option<Box<dyn Source>> {
+    let kind = named(table, "the source of the prior", ALL.iter().map(|kind| kind.from), faults)?;
+    ALL.iter().find(|known| known.from == kind).and_then(|kind| (kind.read)(table, scale, plan, faults))
+}
+
+/// The value of `from`, which must be one of `known`.
+fn named<'t>(
+    table: &'t Table,
+    what: &str,
+    known: impl Iterator<Item = &'static str> + Clone,
+    faults: &mut Faults,
+) -> Option<&'t str> {
+    let choices: Vec<&str> = known.clone().collect();
+    let expected = crate::spec::keys::one_of(&choices);
+    let Some(value) = table.get("from") else {
+        let fault =
+            Fault::wrong("missing-key", format!("{} does not say where {what} comes from", table.name))
+                .at(table.span.place())
+                .expected(format!("from = {expected}"))
+                .repair("add the key \"from\"");
+        faults.push(fault);
+        return None;
+    };
+    let text = match &value.kind {
+        Kind::Text(text) => text.as_str(),
+        _ => "",
+    };
+    if choices.contains(&text) {
+        return Some(text);
+    }
+    let repair = nearest(text, known)
+        .map_or_else(|| "choose one of these".to_string(), |near| format!("write from = \"{near}\""));
+    faults.push(
+        Fault::wrong("unknown-source", format!("{what} cannot come from this"))
+            .at(value.span.place())
+            .expected(expected)
+            .repair(repair),
+    );
+    None
+}
 
 /// How one series' readings of the period under review arise: everything that the posterior needs
 /// beside these readings themselves. On the model's scale (logarithms where the scale is log).

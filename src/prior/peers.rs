@@ -18,14 +18,27 @@ use crate::diagnostics::Faults;
 use crate::plan::Plan;
 use crate::quantity::Scale;
 use crate::spec::keys::{Key, Takes};
-use crate::spec::table::{Reader, Table};
+use crate::spec::reader::Reader;
+use crate::spec::table::Table;
 
 const KEYS: &[Key] = &[
     Key::required("from", Takes::OneOf(&["peers"]), "the other series of the same period"),
-    Key::optional("between", BETWEEN, "what is held of the sd between series before the data; uniform by default"),
-    Key::optional("between_scale", Takes::Positive, "the scale of half-normal or half-cauchy, on the model's scale"),
+    Key::optional(
+        "between",
+        BETWEEN,
+        "what is held of the sd between series before the data; uniform by default",
+    ),
+    Key::optional(
+        "between_scale",
+        Takes::Positive,
+        "the scale of half-normal or half-cauchy, on the model's scale",
+    ),
     Key::optional("between_sd", Takes::Positive, "instead of between: the sd between series, known"),
-    Key::optional("weight_of_history", Takes::Share, "with between = \"none\": what a peer's reading counts against one of this series"),
+    Key::optional(
+        "weight_of_history",
+        Takes::Share,
+        "with between = \"none\": what a peer's reading counts against one of this series",
+    ),
     Key::optional("basis", Takes::Text, "where a stated between_scale or between_sd comes from"),
 ];
 

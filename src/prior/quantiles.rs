@@ -19,7 +19,8 @@ use crate::math::{fm, normal};
 use crate::plan::Plan;
 use crate::quantity::Scale;
 use crate::spec::keys::{Key, Takes};
-use crate::spec::table::{Kind, Reader, Table, Value};
+use crate::spec::reader::Reader;
+use crate::spec::table::Table;
 
 const KEYS: &[Key] = &[
     Key::required("from", Takes::OneOf(&["quantiles"]), "quantiles of the level are stated here"),
@@ -28,8 +29,16 @@ const KEYS: &[Key] = &[
         Takes::Other("a list of pairs [probability, value], such as [[0.05, 34.0], [0.95, 50.0]]"),
         "two or more pairs of a probability and the value below which the level lies with it",
     ),
-    Key::optional("of_period", Takes::OneOf(&["this", "long run"]), "what they speak of: this period's level (default) or the long-run mean"),
-    Key::optional("between_sd", Takes::Positive, "with of_period = \"long run\": the known sd of the levels about the long-run mean"),
+    Key::optional(
+        "of_period",
+        Takes::OneOf(&["this", "long run"]),
+        "what they speak of: this period's level (default) or the long-run mean",
+    ),
+    Key::optional(
+        "between_sd",
+        Takes::Positive,
+        "with of_period = \"long run\": the known sd of the levels about the long-run mean",
+    ),
     Key::optional("basis", Takes::Text, "where the quantiles come from"),
 ];
 
@@ -63,9 +72,10 @@ fn read(table: &Table, scale: Scale, _: &Plan, faults: &mut Faults) -> Option<Bo
     let between_sd = reader.positive("between_sd");
     let basis = basis::required(&mut reader, "quantiles");
     if long_run != table.get("between_sd").is_some() {
-        let fault = Fault::wrong("key-out-of-place", "of_period = \"long run\" and between_sd belong together")
-            .expected("both or neither")
-            .repair("add the missing one, or leave the other out");
+        let fault =
+            Fault::wrong("key-out-of-place", "of_period = \"long run\" and between_sd belong together")
+                .expected("both or neither")
+                .repair("add the missing one, or leave the other out");
         reader.fault_at("of_period", fault);
     }
     let fit = pairs.and_then(|pairs| {
@@ -91,56 +101,29 @@ fn read(table: &Table, scale: Scale, _: &Plan, faults: &mut Faults) -> Option<Bo
     }))
 }
 
-/// The pairs (probability, value on the model's scale), all checked.
+/// The pairs (probability, value on the model's scale), all checked, in order of probability.
 fn pairs(reader: &mut Reader<'_>, scale: Scale) -> Option<Vec<(f64, f64)>> {
-    let value = reader.required("quantiles")?;
-    let wrong = |message: &str| {
-        Fault::wrong("wrong-quantiles", message.to_string())
-            .expected("at least two pairs [probability, value], such as [[0.05, 34.0], [0.95, 50.0]]")
-            .repair("give each quantile as [probability, value]")
-    };
-    let Kind::List(items) = &value.kind else {
-        reader.faults.push(wrong("the quantiles are not a list of pairs").at(value.span.place()));
-        return None;
-    };
-    let mut pairs: Vec<(f64, f64)> = Vec::new();
-    for item in items {
-        match pair(item) {
-            Some((p, _)) if !(p > 0.0 && p < 1.0) => {
-                let message = format!("{p} is not a probability of a quantile: it must lie between 0 and 1");
-                reader.faults.push(wrong(&message).at(item.span.place()));
-                return None;
-            }
-            Some((_, q)) if scale == Scale::Log && q <= 0.0 => {
-                reader.faults.push(wrong("on the log scale a value must lie above 0").at(item.span.place()));
-                return None;
-            }
-            Some((p, q)) => pairs.push((p, if scale == Scale::Log { fm::ln(q) } else { q })),
-            None => {
-                reader.faults.push(wrong("this is not a pair of numbers").at(item.span.place()));
-                return None;
-            }
+    let mut pairs = reader.pairs("quantiles")?;
+    let outside = pairs.iter().find(|(p, _)| !(*p > 0.0 && *p < 1.0));
+    let message = match outside {
+        Some((p, _)) => format!("{p} is not the probability of a quantile: it must lie between 0 and 1"),
+        None if scale == Scale::Log && pairs.iter().any(|(_, q)| *q <= 0.0) => {
+            "on the log scale every value must lie above 0".to_string()
         }
-    }
-    pairs.sort_by(|a, b| a.0.total_cmp(&b.0));
-    let distinct = pairs.windows(2).all(|two| two[0].0 < two[1].0);
-    if pairs.len() < 2 || !distinct {
-        reader.faults.push(wrong("two different probabilities are needed").at(value.span.place()));
-        return None;
-    }
-    Some(pairs)
-}
-
-fn pair(item: &Value) -> Option<(f64, f64)> {
-    let Kind::List(two) = &item.kind else { return None };
-    match two.as_slice() {
-        [Value { kind: Kind::Number { value: p, .. }, .. }, Value { kind: Kind::Number { value: q, .. }, .. }]
-            if q.is_finite() =>
-        {
-            Some((*p, *q))
+        None => {
+            pairs.sort_by(|a, b| a.0.total_cmp(&b.0));
+            if pairs.len() >= 2 && pairs.windows(2).all(|two| two[0].0 < two[1].0) {
+                let on_scale = |q: f64| if scale == Scale::Log { fm::ln(q) } else { q };
+                return Some(pairs.into_iter().map(|(p, q)| (p, on_scale(q))).collect());
+            }
+            "two quantiles of different probability are needed".to_string()
         }
-        _ => None,
-    }
+    };
+    let fault = Fault::wrong("wrong-quantiles", message)
+        .expected("at least two pairs [probability, value], such as [[0.05, 34.0], [0.95, 50.0]]")
+        .repair("give each quantile as [probability, value]");
+    reader.fault_at("quantiles", fault);
+    None
 }
 
 /// Least squares of the values on z; `None` where they do not rise with the probabilities.
@@ -148,11 +131,8 @@ fn fit(pairs: &[(f64, f64)]) -> Option<Fit> {
     if pairs.windows(2).any(|two| two[0].1 >= two[1].1) {
         return None;
     }
-    let points: Vec<(f64, f64)> = pairs
-        .iter()
-        .map(|(p, q)| normal::quantile(*p).map(|z| (z, *q)))
-        .collect::<Result<_, _>>()
-        .ok()?;
+    let points: Vec<(f64, f64)> =
+        pairs.iter().map(|(p, q)| normal::quantile(*p).map(|z| (z, *q))).collect::<Result<_, _>>().ok()?;
     let n = points.len() as f64;
     let z_mean = points.iter().map(|(z, _)| z).sum::<f64>() / n;
     let q_mean = points.iter().map(|(_, q)| q).sum::<f64>() / n;

@@ -21,19 +21,32 @@ use crate::math::fm;
 use crate::plan::Plan;
 use crate::quantity::Scale;
 use crate::spec::keys::{Key, Takes};
-use crate::spec::table::{Reader, Table};
+use crate::spec::reader::Reader;
+use crate::spec::table::Table;
 
 const KEYS: &[Key] = &[
     Key::required("from", Takes::OneOf(&["stated"]), "the figures are stated here"),
     Key::optional("mean", Takes::Number, "the prior mean of the level"),
     Key::optional("sd", Takes::Positive, "the prior sd of the level"),
-    Key::optional("worth_readings", Takes::Positive, "instead of sd: the number of readings the prior is worth"),
+    Key::optional(
+        "worth_readings",
+        Takes::Positive,
+        "instead of sd: the number of readings the prior is worth",
+    ),
     Key::optional("geometric_mean", Takes::Positive, "log scale: the prior geometric mean of the level"),
     Key::optional("geometric_sd", Takes::Positive, "log scale: its geometric sd, above 1"),
     Key::optional("log_mean", Takes::Number, "log scale: the prior mean of the level's natural logarithm"),
     Key::optional("log_sd", Takes::Positive, "log scale: its sd"),
-    Key::optional("of_period", Takes::OneOf(&["this", "long run"]), "what the figures speak of: this period's level (default) or the long-run mean"),
-    Key::optional("between_sd", Takes::Positive, "with of_period = \"long run\": the known sd of the levels about the long-run mean"),
+    Key::optional(
+        "of_period",
+        Takes::OneOf(&["this", "long run"]),
+        "what the figures speak of: this period's level (default) or the long-run mean",
+    ),
+    Key::optional(
+        "between_sd",
+        Takes::Positive,
+        "with of_period = \"long run\": the known sd of the levels about the long-run mean",
+    ),
     Key::optional("basis", Takes::Text, "where the figures come from"),
 ];
 
@@ -64,9 +77,10 @@ fn read(table: &Table, scale: Scale, _: &Plan, faults: &mut Faults) -> Option<Bo
     let between_sd = reader.positive("between_sd");
     let basis = basis::required(&mut reader, "a prior");
     if long_run && table.get("between_sd").is_none() {
-        let fault = Fault::wrong("missing-key", "a prior of the long-run mean needs the sd of the levels about it")
-            .expected("between_sd = a number above 0")
-            .repair("state between_sd, or say of_period = \"this\"");
+        let fault =
+            Fault::wrong("missing-key", "a prior of the long-run mean needs the sd of the levels about it")
+                .expected("between_sd = a number above 0")
+                .repair("state between_sd, or say of_period = \"this\"");
         reader.fault_at("of_period", fault);
     }
     if !long_run && table.get("between_sd").is_some() {
@@ -94,12 +108,16 @@ fn read(table: &Table, scale: Scale, _: &Plan, faults: &mut Faults) -> Option<Bo
 /// The prior's location on the model's scale.
 fn location(reader: &mut Reader<'_>, scale: Scale) -> Option<f64> {
     match scale {
-        Scale::Linear => only_linear(reader).then(|| reader.number_or_fault("mean"))?,
+        Scale::Linear => {
+            only_linear(reader);
+            needed(reader, "mean", Reader::number)
+        }
         Scale::Log => {
             refuse_on_log(reader, &["mean", "sd"]);
-            match reader.table.get("geometric_mean") {
-                Some(_) => reader.positive("geometric_mean").map(fm::ln),
-                None => reader.number_or_fault("log_mean"),
+            if reader.has("geometric_mean") {
+                reader.positive("geometric_mean").map(fm::ln)
+            } else {
+                needed(reader, "log_mean", Reader::number)
             }
         }
     }
@@ -108,12 +126,25 @@ fn location(reader: &mut Reader<'_>, scale: Scale) -> Option<f64> {
 /// The prior's sd on the model's scale.
 fn width(reader: &mut Reader<'_>, scale: Scale) -> Option<f64> {
     match scale {
-        Scale::Linear => reader.positive_or_fault("sd"),
-        Scale::Log => match reader.table.get("geometric_sd") {
-            Some(_) => geometric_sd(reader, "geometric_sd"),
-            None => reader.positive_or_fault("log_sd"),
-        },
+        Scale::Linear => needed(reader, "sd", Reader::positive),
+        Scale::Log if reader.has("geometric_sd") => geometric_sd(reader, "geometric_sd"),
+        Scale::Log => needed(reader, "log_sd", Reader::positive),
     }
+}
+
+/// The value of a key that must be there in this case.
+pub fn needed(
+    reader: &mut Reader<'_>,
+    key: &'static str,
+    get: impl for<'r> Fn(&mut Reader<'r>, &str) -> Option<f64>,
+) -> Option<f64> {
+    if !reader.has(key) {
+        let fault = Fault::wrong("missing-key", format!("{} has no \"{key}\"", reader.table.name))
+            .expected(format!("{key} = a number"))
+            .repair(format!("state {key}"));
+        reader.fault_at(key, fault);
+    }
+    get(reader, key)
 }
 
 /// ln of a geometric sd, which must lie above 1.
@@ -131,27 +162,31 @@ pub fn geometric_sd(reader: &mut Reader<'_>, key: &str) -> Option<f64> {
 
 /// Refuses keys of the linear scale on the log scale.
 pub fn refuse_on_log(reader: &mut Reader<'_>, keys: &[&str]) {
-    for key in keys.iter().filter(|key| reader.table.get(key).is_some()).collect::<Vec<_>>() {
-        let fault = Fault::wrong("wrong-scale", format!("on the log scale \"{key}\" is not clear: of the readings or of their logarithms?"))
-            .expected("geometric_mean with geometric_sd, or log_mean with log_sd")
-            .repair("say which is meant by these keys");
+    for key in keys {
+        if !reader.has(key) {
+            continue;
+        }
+        let fault = Fault::wrong(
+            "wrong-scale",
+            format!("on the log scale \"{key}\" is not clear: of the readings or of their logarithms?"),
+        )
+        .expected("geometric_mean with geometric_sd, or log_mean with log_sd")
+        .repair("say which is meant by these keys");
         reader.fault_at(key, fault);
     }
 }
 
-/// False, with faults, where keys of the log scale stand in a linear spec.
-pub fn only_linear(reader: &mut Reader<'_>) -> bool {
-    let mut only = true;
+/// Refuses keys of the log scale on the linear scale.
+pub fn only_linear(reader: &mut Reader<'_>) {
     for key in ["geometric_mean", "geometric_sd", "log_mean", "log_sd"] {
-        if reader.table.get(key).is_some() {
-            only = false;
-            let fault = Fault::wrong("wrong-scale", format!("\"{key}\" belongs to a quantity on the log scale"))
-                .expected("mean with sd")
-                .repair("use mean and sd, or set scale = \"log\" in [quantity]");
+        if reader.has(key) {
+            let fault =
+                Fault::wrong("wrong-scale", format!("\"{key}\" belongs to a quantity on the log scale"))
+                    .expected("mean with sd")
+                    .repair("use mean and sd, or set scale = \"log\" in [quantity]");
             reader.fault_at(key, fault);
         }
     }
-    only
 }
 
 impl Source for Stated {
