@@ -38,7 +38,7 @@ struct Mixture {
 
 fn read(table: &Table, scale: Scale, plan: &Plan, faults: &mut Faults) -> Option<Box<dyn Source>> {
     let mut reader = Reader::new(table, KEYS, faults);
-    let tables = reader.tables("parts");
+    let tables: Vec<Table> = reader.tables("parts").into_iter().cloned().collect();
     reader.finish();
     let mut parts = Vec::new();
     for part in tables {

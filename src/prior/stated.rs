@@ -132,11 +132,11 @@ fn width(reader: &mut Reader<'_>, scale: Scale) -> Option<f64> {
     }
 }
 
-/// The value of a key that must be there in this case.
-pub fn needed(
-    reader: &mut Reader<'_>,
+/// Notes that a key which must be there in this case is missing; gives its value by `get`.
+pub fn needed<'t>(
+    reader: &mut Reader<'t>,
     key: &'static str,
-    get: impl for<'r> Fn(&mut Reader<'r>, &str) -> Option<f64>,
+    get: fn(&mut Reader<'t>, &str) -> Option<f64>,
 ) -> Option<f64> {
     if !reader.has(key) {
         let fault = Fault::wrong("missing-key", format!("{} has no \"{key}\"", reader.table.name))
