@@ -1,0 +1,3 @@
+//! All integration tests, in one binary: one link, one run.
+
+mod tidiness;
