@@ -1,4 +1,16 @@
 //! The report: numbers to text, figures, Markdown and HTML. It computes nothing that is an answer.
 
 pub mod escape;
+pub mod figure_axis;
+pub mod figure_frame;
+pub mod figure_labels;
+pub mod figure_level;
+pub mod figure_lines;
+pub mod figure_periods;
+pub mod figure_quantiles;
+pub mod figure_rows;
+pub mod svg;
 pub mod text;
+
+#[cfg(test)]
+mod figure_tests;
