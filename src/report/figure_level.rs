@@ -69,6 +69,10 @@ pub fn level(figure: &LevelFigure) -> Result<String, FigureError> {
     for (curve, _) in &curves {
         labels.keep_clear_of(curve.points.iter().map(|point| frame.at(*point)).collect());
     }
+    // The filled shape is kept free as well: every few points an upright from the curve to the axis.
+    for point in figure.posterior.points.iter().filter(|(x, y)| x.is_finite() && y.is_finite()).step_by(3) {
+        labels.keep_clear_of(vec![frame.at(*point), frame.at((point.0, 0.0))]);
+    }
     let mut legend = Vec::new();
     let mut limit_lines = Vec::new();
     for mark in figure.limits.iter().filter(|mark| mark.value.is_finite()) {
