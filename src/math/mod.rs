@@ -9,3 +9,4 @@ pub mod sums;
 pub mod roots;
 pub mod normal;
 pub mod quadrature;
+pub mod mixture;

@@ -8,10 +8,12 @@ pub mod expect;
 pub mod kronrod;
 pub mod line;
 pub mod maps;
+pub mod plane;
 
 pub use expect::expect_normal;
 pub use kronrod::gk21;
 pub use line::{Line, LineOptions, Node, Tails, line};
+pub use plane::{Plane, PlaneNode, PlaneOptions, plane};
 
 /// The value of an integral and a bound on its error, from the rule's own comparison of two results.
 #[derive(Debug, Clone, Copy, PartialEq)]
