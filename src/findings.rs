@@ -5,6 +5,7 @@ use crate::data::Data;
 use crate::diagnostics::Caution;
 use crate::plan::Plan;
 use crate::posterior::Posterior;
+use crate::prior::spread::SpreadOfMeans;
 use crate::quantity::{Absent, Figure};
 use crate::questions::figures::Figures;
 use crate::questions::rule::Given;
@@ -32,6 +33,10 @@ pub struct SeriesFindings {
     pub prior_from: String,
     /// How the prior was built, in words and figures, for the report.
     pub prior_notes: Vec<String>,
+    /// What is held of the within sd, in words.
+    pub within_words: String,
+    /// How far the earlier periods' means differ, where the prior is their history.
+    pub spread_of_means: Option<SpreadOfMeans>,
     pub prior: Result<Posterior, Absent>,
     pub readings_only: Result<Posterior, Absent>,
     pub posterior: Result<Posterior, Absent>,

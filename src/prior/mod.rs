@@ -8,6 +8,7 @@ pub mod history;
 pub mod mixture;
 pub mod peers;
 pub mod quantiles;
+pub mod spread;
 pub mod stated;
 pub mod within;
 
