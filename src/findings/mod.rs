@@ -1,5 +1,7 @@
 //! What the review found: the one value that the report and the stamp see.
 
+pub mod cautions;
+
 use crate::checks::Check;
 use crate::data::Data;
 use crate::diagnostics::Caution;

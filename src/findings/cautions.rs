@@ -1,0 +1,282 @@
+//! What the reader must be told beside the figures: every caution that follows from the findings
+//! themselves. The wording adapts common practice in reports on probabilities and limits; each code is
+//! stable and listed in the report.
+
+use super::{Answer, Findings, SeriesFindings};
+use crate::checks::Concern;
+use crate::diagnostics::Caution;
+use crate::plan::{AppliesTo, Condition, Plan, QuestionPlan, Threshold};
+use crate::spec::table::Kind;
+use jiff::civil::Date;
+
+/// A chance this near to its threshold is printed with more digits and pointed out.
+const NEAR_THRESHOLD: f64 = 0.0005;
+/// Shares of rows that call for a word (common practice, no source).
+const MANY_EXCLUDED: f64 = 0.10;
+const MANY_MARKED: f64 = 0.50;
+const MOST_MARKED: f64 = 0.80;
+/// A prior that alone comes this near to a claim's threshold decides it (share of the way).
+const NEARLY_MET: f64 = 0.9;
+
+/// All cautions of the findings, in a fixed order: the plan's, then series by series.
+pub fn of(findings: &Findings) -> Vec<Caution> {
+    let plan = &findings.plan;
+    let mut all = of_rules(findings);
+    all.extend(of_limits(plan));
+    all.extend(of_events(findings));
+    if plan.quantity.bias.is_none() && plan.series.values().all(|own| own.bias.is_none()) {
+        all.push(Caution::new(
+            "no-common-bias",
+            "No allowance for a bias common to all readings was given: the intervals cover random variation only.",
+        ));
+    }
+    for series in &findings.series {
+        all.extend(of_series(findings, series));
+    }
+    all
+}
+
+fn of_rules(findings: &Findings) -> Vec<Caution> {
+    let first = first_reading(findings);
+    let mut cautions = Vec::new();
+    for question in &findings.plan.questions {
+        let Some(rule) = &question.rule else { continue };
+        let caution = match (rule.agreed, first) {
+            (None, _) => Some(Caution::new(
+                "rule-without-date",
+                "The rule states no date on which it was agreed: it is not shown to be older than the readings.",
+            )),
+            (Some(agreed), Some(first)) if agreed >= first => Some(Caution::new(
+                "rule-after-readings",
+                format!(
+                    "The rule was agreed on {agreed}, but the first reading of the period is of {first}."
+                ),
+            )),
+            _ => None,
+        };
+        cautions.extend(caution.map(|caution| caution.of_question(&question.id)));
+    }
+    cautions
+}
+
+fn first_reading(findings: &Findings) -> Option<Date> {
+    let period = &findings.plan.review.period;
+    findings.data.series.iter().filter_map(|series| series.period(period)?.facts.first_date).min()
+}
+
+/// A limit for one thing held against another.
+fn of_limits(plan: &Plan) -> Vec<Caution> {
+    let mut cautions = Vec::new();
+    for question in &plan.questions {
+        let Some(asked) = asked_about(question) else { continue };
+        for key in ["above", "below", "between", "outside"] {
+            let Some(Kind::Text(name)) = question.table.get(key).map(|value| &value.kind) else { continue };
+            let Some(limit) = plan.limit(name).filter(|limit| limit.applies_to != asked) else { continue };
+            cautions.push(
+                Caution::new(
+                    "limit-for-something-else",
+                    format!(
+                        "The limit \"{name}\" applies to {}, but the question asks about {}.",
+                        in_words(limit.applies_to),
+                        in_words(asked)
+                    ),
+                )
+                .of_question(&question.id),
+            );
+        }
+    }
+    cautions
+}
+
+/// What a kind of question holds against a limit.
+fn asked_about(question: &QuestionPlan) -> Option<AppliesTo> {
+    match question.ask.as_str() {
+        "level chance" | "period mean" | "difference" => Some(AppliesTo::Level),
+        "reading chance" | "count beyond" | "readings beyond" | "share beyond" => {
+            Some(AppliesTo::EachReading)
+        }
+        "percentile" => Some(AppliesTo::Percentile),
+        _ => None,
+    }
+}
+
+fn in_words(applies_to: AppliesTo) -> &'static str {
+    match applies_to {
+        AppliesTo::EachReading => "each reading",
+        AppliesTo::Level => "the level",
+        AppliesTo::Percentile => "a percentile of the readings",
+    }
+}
+
+/// A change of method or instrument since the earlier periods that make the prior.
+fn of_events(findings: &Findings) -> Vec<Caution> {
+    let plan = &findings.plan;
+    let from_history =
+        findings.series.iter().any(|series| series.prior_from != "stated" && series.prior_from != "flat");
+    plan.events
+        .iter()
+        .filter(|event| from_history && matches!(event.kind.as_str(), "method" | "instrument"))
+        .map(|event| {
+            let text = format!(
+                "On {} ({}): {}. Readings before and after may not be comparable; the column of the readings alone does not rest on earlier periods.",
+                event.date, event.kind, event.what
+            );
+            let caution = Caution::new("method-changed", text);
+            match &event.series {
+                Some(series) => caution.of_series(series),
+                None => caution,
+            }
+        })
+        .collect()
+}
+
+fn of_series(findings: &Findings, series: &SeriesFindings) -> Vec<Caution> {
+    let mut cautions = of_data(findings, series);
+    cautions.extend(of_influence(findings, series));
+    cautions.extend(of_checks(series));
+    for answer in &series.answers {
+        cautions.extend(of_answer(findings, answer));
+    }
+    cautions.into_iter().map(|caution| caution.of_series(&series.name)).collect()
+}
+
+fn of_data(findings: &Findings, series: &SeriesFindings) -> Vec<Caution> {
+    let plan = &findings.plan;
+    let mut cautions = Vec::new();
+    if series.without_readings {
+        cautions.push(Caution::new(
+            "no-readings",
+            format!(
+                "There is no reading of {}: all answers rest on the prior alone, and no verdict on the period is given.",
+                plan.review.period
+            ),
+        ));
+        return cautions;
+    }
+    let data = findings.data.series.iter().find(|data| data.name == series.name);
+    let Some(facts) = data.and_then(|data| data.period(&plan.review.period)).map(|period| &period.facts)
+    else {
+        return cautions;
+    };
+    let planned = planned(plan, &series.name);
+    if let Some(planned) = planned
+        && facts.n < planned
+    {
+        cautions.push(Caution::new(
+            "fewer-than-planned",
+            format!(
+                "{} of {planned} planned readings were used; missing ones are seldom missing by chance.",
+                facts.n
+            ),
+        ));
+    }
+    let marked = facts.marked_below + facts.marked_above;
+    let share = |part: u64, whole: u64| part as f64 / whole.max(1) as f64;
+    if share(facts.excluded, facts.n + facts.excluded) > MANY_EXCLUDED {
+        cautions.push(Caution::new(
+            "many-excluded",
+            format!(
+                "{} of {} readings are excluded: see the answers with the exclusions restored.",
+                facts.excluded,
+                facts.n + facts.excluded
+            ),
+        ));
+    }
+    if share(marked, facts.n) > MOST_MARKED {
+        cautions.push(Caution::new(
+            "most-readings-marked",
+            format!("{marked} of {} readings are known only to lie below or above a limit: the level rests on the assumed shape beyond it and should not be quoted without it.", facts.n),
+        ));
+    } else if share(marked, facts.n) > MANY_MARKED {
+        cautions.push(Caution::new(
+            "many-readings-marked",
+            format!("{marked} of {} readings are known only to lie below or above a limit; the level depends on the assumed shape beyond it.", facts.n),
+        ));
+    }
+    cautions
+}
+
+/// The readings planned for one series of the period under review.
+pub fn planned(plan: &Plan, series: &str) -> Option<u64> {
+    plan.series.get(series).and_then(|own| own.planned).or_else(|| {
+        plan.sources.iter().find_map(|source| match &source.what {
+            crate::plan::SourceKind::Readings { planned, .. } => *planned,
+            crate::plan::SourceKind::Summaries(_) => None,
+        })
+    })
+}
+
+fn of_influence(findings: &Findings, series: &SeriesFindings) -> Option<Caution> {
+    let data = findings.data.series.iter().find(|data| data.name == series.name)?;
+    let n = data.period(&findings.plan.review.period)?.facts.n;
+    let worth = series.influence.prior_readings.as_ref().ok()?;
+    (*worth > n as f64).then(|| {
+        Caution::new(
+            "prior-outweighs-readings",
+            format!(
+                "The prior carries the weight of {worth:.1} readings against {n} of this period. If conditions changed, use the column of the readings alone."
+            ),
+        )
+    })
+}
+
+fn of_checks(series: &SeriesFindings) -> Vec<Caution> {
+    series
+        .checks
+        .iter()
+        .filter(|check| check.concern == Concern::Flag)
+        .map(|check| {
+            let text =
+                format!("The check \"{}\" is flagged. {} {}", check.id, check.meaning, check.consequence);
+            Caution::new("check-flagged", text.trim().to_string())
+        })
+        .collect()
+}
+
+fn of_answer(findings: &Findings, answer: &Answer) -> Vec<Caution> {
+    let Some(question) = findings.plan.questions.iter().find(|question| question.id == answer.id) else {
+        return Vec::new();
+    };
+    let Some(rule) = &question.rule else { return Vec::new() };
+    let mut cautions = Vec::new();
+    let chance = answer.figures.value("chance");
+    let prior_chance = answer.prior_only.value("chance");
+    for verdict in &rule.verdicts {
+        for (condition, threshold) in &verdict.conditions {
+            let Threshold::Number(threshold) = threshold else { continue };
+            let at_least = match condition {
+                Condition::ChanceAtLeast => true,
+                Condition::ChanceAtMost => false,
+                _ => continue,
+            };
+            if let Some(chance) = chance
+                && (chance - threshold).abs() < NEAR_THRESHOLD
+            {
+                cautions.push(Caution::new(
+                    "near-threshold",
+                    format!("The chance {chance:.6} lies within 0.0005 of the threshold {threshold}; unrounded figures were compared."),
+                ));
+            }
+            if let Some(prior) = prior_chance {
+                let nearly = if at_least {
+                    prior >= NEARLY_MET * threshold
+                } else {
+                    1.0 - prior >= NEARLY_MET * (1.0 - threshold)
+                        && *threshold > 0.0
+                        && prior <= threshold / NEARLY_MET
+                };
+                let given = answer.verdict.as_ref().and_then(|given| given.say.as_deref());
+                if nearly && given == Some(verdict.say.as_str()) {
+                    cautions.push(Caution::new(
+                        "prior-nearly-decides",
+                        format!(
+                            "The prior alone puts the chance at {prior:.3} against the threshold {threshold}: the verdict \"{}\" nearly holds before any reading of this period.",
+                            verdict.say
+                        ),
+                    ));
+                }
+            }
+        }
+    }
+    cautions.into_iter().map(|caution| caution.of_question(&answer.id)).collect()
+}
