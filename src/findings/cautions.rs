@@ -115,11 +115,11 @@ fn of_events(findings: &Findings) -> Vec<Caution> {
         findings.series.iter().any(|series| series.prior_from != "stated" && series.prior_from != "flat");
     plan.events
         .iter()
-        .filter(|event| from_history && matches!(event.kind.as_str(), "method" | "instrument"))
+        .filter(|event| from_history && matches!(event.kind.as_deref(), Some("method" | "instrument")))
         .map(|event| {
             let text = format!(
-                "On {} ({}): {}. Readings before and after may not be comparable; the column of the readings alone does not rest on earlier periods.",
-                event.date, event.kind, event.what
+                "On {}: {}. Readings before and after may not be comparable; the column of the readings alone does not rest on earlier periods.",
+                event.date, event.what
             );
             let caution = Caution::new("method-changed", text);
             match &event.series {
