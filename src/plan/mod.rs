@@ -2,6 +2,19 @@
 //! past here nobody asks whether a key is missing. What belongs to one source of a prior or one kind
 //! of question stays a [`Table`] until the stage that owns it reads it.
 
+mod about;
+mod compared;
+mod load;
+mod make;
+mod questions;
+mod rows;
+mod series;
+mod sources;
+
+pub use about::BUILT_IN_TEMPLATES;
+pub use load::{ReadBytes, load};
+pub use series::{OverrideCell, STANDING_ALTERNATIVES};
+
 use crate::quantity::{Period, Scale, Sd};
 pub use crate::spec::reader::Threshold;
 use crate::spec::table::{Span, Table};
@@ -319,7 +332,11 @@ pub struct SeriesOverride {
     pub planned: Option<u64>,
     /// By name of the limit: bounds that replace the general ones.
     pub limits: BTreeMap<String, Bounds>,
+    /// As written: put over the general table by [`Plan::prior_table`].
     pub prior: Option<Table>,
+    /// The `otherwise` of this series' own prior.
+    pub otherwise: Option<Table>,
+    /// As written: put over the general table by [`Plan::within_table`].
     pub within: Option<Table>,
     pub bias: Option<Bias>,
 }

@@ -91,6 +91,24 @@ pub struct Table {
 }
 
 impl Table {
+    /// The table at a key, where there is one; a [`Reader`] notes what is there instead.
+    pub fn table(&self, key: &str) -> Option<&Table> {
+        match &self.get(key)?.kind {
+            Kind::Table(table) => Some(table),
+            _ => None,
+        }
+    }
+
+    /// The tables of the list at a key, as [`Table::table`].
+    pub fn tables(&self, key: &str) -> Vec<&Table> {
+        let Some(Kind::List(items)) = self.get(key).map(|value| &value.kind) else { return Vec::new() };
+        let tables = items.iter().filter_map(|item| match &item.kind {
+            Kind::Table(table) => Some(table),
+            _ => None,
+        });
+        tables.collect()
+    }
+
     pub fn get(&self, key: &str) -> Option<&Value> {
         self.entries.iter().find(|entry| entry.key == key).map(|entry| &entry.value)
     }
