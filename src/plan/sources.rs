@@ -349,9 +349,9 @@ fn files(table: &Table, ground: &mut Ground) -> Option<Vec<FileRef>> {
             continue;
         };
         let pinned = pins.get(at).copied();
-        let text = pinned.and_then(|value| match &value.kind {
-            Kind::Text(text) => Some(text.as_str()),
-            _ => Some(""),
+        let text = pinned.map(|value| match &value.kind {
+            Kind::Text(text) => text.as_str(),
+            _ => "",
         });
         let sha256 = pin(text, pinned, ground);
         let Some(file) = ground.file(written, sha256, &item.span) else { continue };
