@@ -4,12 +4,26 @@
 pub mod figures;
 pub mod rule;
 
+pub mod beyond;
+pub mod binomial;
+pub mod steps;
+pub mod terms;
+
+pub mod characteristic_value;
+pub mod level_chance;
+pub mod level_interval;
+pub mod percentile;
+pub mod reading_chance;
+pub mod reading_interval;
+pub mod readings_beyond;
+pub mod share_beyond;
+
 use crate::data::{PeriodData, SeriesData};
-use crate::diagnostics::Faults;
+use crate::diagnostics::{Caution, Fault, Faults};
 use crate::plan::{Plan, QuestionPlan};
-use crate::posterior::{Basis, Posterior};
-use crate::quantity::Absent;
-use crate::spec::keys::Key;
+use crate::posterior::{Basis, Posterior, When};
+use crate::quantity::{Absent, Beyond, Scale};
+use crate::spec::keys::{Key, nearest, one_of};
 use crate::working::Step;
 use figures::Figures;
 use std::fmt::Debug;
@@ -24,6 +38,18 @@ pub struct QuestionKind {
     pub keys: &'static [Key],
     pub read: fn(&QuestionPlan, &Plan, &mut Faults) -> Option<Box<dyn Question>>,
 }
+
+/// All kinds of question, in the order of the reference page.
+pub const ALL: &[QuestionKind] = &[
+    level_interval::KIND,
+    level_chance::KIND,
+    reading_interval::KIND,
+    reading_chance::KIND,
+    readings_beyond::KIND,
+    share_beyond::KIND,
+    percentile::KIND,
+    characteristic_value::KIND,
+];
 
 /// A question, read and ready to be asked of any series.
 pub trait Question: Debug + Send + Sync {
@@ -49,6 +75,32 @@ pub trait Question: Debug + Send + Sync {
 
     /// Every key of the kind with the value used, defaults filled in, as TOML values.
     fn settings(&self) -> Vec<(&'static str, String)>;
+
+    /// The names of the figures that a rule can compare: among `chance`, `count`, `estimate`, `lower`, `upper`.
+    fn gives(&self) -> Vec<&'static str>;
+
+    /// What the reader must know about how the question was put, whatever the series: for instance a
+    /// limit that its basis sets for single readings, asked about a level.
+    fn cautions(&self, _plan: &Plan) -> Vec<Caution> {
+        Vec::new()
+    }
+
+    /// Where the chance is that of a normal number lying beyond limits once σ is given: that number.
+    fn linear(&self, _subject: &Subject<'_>, _reading_sd: f64) -> Option<Linear> {
+        None
+    }
+}
+
+/// A chance of the shape P(θ + shift + N(0, variance) lies beyond), θ the level of that period, on
+/// the model's scale.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub struct Linear {
+    pub when: When,
+    /// Whether a stated bias is taken out of θ: levels yes, readings no.
+    pub true_level: bool,
+    pub beyond: Beyond,
+    pub shift: f64,
+    pub variance: f64,
 }
 
 /// One series as a question sees it.
@@ -61,4 +113,54 @@ pub struct Subject<'a> {
     pub period: Option<&'a PeriodData>,
     pub basis: Basis,
     pub posterior: Result<&'a Posterior, Absent>,
+}
+
+impl Subject<'_> {
+    pub fn scale(&self) -> Scale {
+        self.plan.quantity.scale
+    }
+
+    /// " mg/L", or nothing where the quantity has no unit.
+    pub fn unit(&self) -> String {
+        terms::unit(self.plan)
+    }
+
+    /// What is known, as symbols have it behind the bar.
+    pub fn known(&self) -> &'static str {
+        match self.basis {
+            Basis::PriorOnly => "prior",
+            Basis::ReadingsOnly => "readings",
+            Basis::Both => "prior, readings",
+        }
+    }
+}
+
+/// Reads every question of the plan that is well put; what is wrong with the others is noted.
+///
+/// The number is the question's index in [`Plan::questions`].
+pub fn read_all(plan: &Plan, faults: &mut Faults) -> Vec<(usize, Box<dyn Question>)> {
+    let mut questions = Vec::with_capacity(plan.questions.len());
+    for (index, asked) in plan.questions.iter().enumerate() {
+        match ALL.iter().find(|kind| kind.ask == asked.ask) {
+            Some(kind) => {
+                let read = (kind.read)(asked, plan, faults);
+                rule::check(asked, read.as_deref(), plan, faults);
+                questions.extend(read.map(|question| (index, question)));
+            }
+            None => faults.push(unknown_kind(asked)),
+        }
+    }
+    questions
+}
+
+fn unknown_kind(asked: &QuestionPlan) -> Fault {
+    let names: Vec<&str> = ALL.iter().map(|kind| kind.ask).collect();
+    let span = asked.table.get("ask").map_or(&asked.table.span, |value| &value.span);
+    let fault = Fault::wrong("unknown-question", format!("\"{}\" is not a kind of question", asked.ask))
+        .at(span.place())
+        .expected(one_of(&names));
+    match nearest(&asked.ask, names.iter().copied()) {
+        Some(meant) => fault.repair(format!("write ask = \"{meant}\"")),
+        None => fault.repair("choose the kind that fits; `reassay explain questions` tells them apart"),
+    }
 }

@@ -1,0 +1,314 @@
+//! # share beyond
+//! "What share of readings lies above the limit?" Not the share counted among a few readings, but that
+//! of all readings such a level and spread bring about: π = P(reading beyond | θ, σ). The answer is
+//! its mean (the chance of the next reading) and a credible bound, the upper one by default; with
+//! `more_than = 0.05` the chance that the share is more than one in twenty.
+//!
+//! Above L: π ≤ p where θ + z_{1−p} σ ≤ L, so P(π ≤ p) = Σ w Φ((L − z_{1−p} σ − m)/√v); below L:
+//! Σ w Φ((m − L + z_p σ)/√v). The bounds solve these for p. Between or outside two limits the share
+//! depends on how far θ lies from their middle, c: given σ it exceeds p where |θ − c| exceeds (inside:
+//! stays under) the distance d(σ) at which the share is p, found by solving for it.
+//!
+//! Assumes normal readings (lognormal on the log scale) out to the limit; readings are meant as measured.
+//!
+//! Source: the share is a percentile read backwards; Hahn & Meeker, Statistical Intervals, 1991,
+//! §4.5; Gelman et al., Bayesian Data Analysis, 3rd ed., §2.5.
+//!
+//! A worked number: prior N(40, 2²), σ = 1.5, six readings of mean 43.1, L = 45: m = 42.834286, √v =
+//! 0.585540; the mean is 0.089318, and the upper 95 % bound solves 45 − z_{1−p} · 1.5 − 42.834286 =
+//! 1.644854 · 0.585540, so z_{1−p} = 0.801723 and p = 0.21136.
+
+use super::beyond::{self, ANY_SIDE, About, Asked};
+use super::figures::{Figures, Meaning};
+use super::terms::{self, Interval};
+use super::{Linear, Question, QuestionKind, Subject, steps};
+use crate::diagnostics::{Caution, Fault, Faults};
+use crate::math::{normal, roots};
+use crate::plan::{Plan, QuestionPlan};
+use crate::posterior::{Posterior, When};
+use crate::quantity::{Absent, Beyond, Figure};
+use crate::spec::keys::{Key, Takes};
+use crate::spec::language;
+use crate::spec::reader::Reader;
+use crate::working::Step;
+use std::cell::RefCell;
+
+const KEYS: &[Key] = &[
+    beyond::ABOVE,
+    beyond::BELOW,
+    beyond::BETWEEN,
+    beyond::OUTSIDE,
+    terms::PROBABILITY,
+    Key::optional("interval", Takes::OneOf(terms::INTERVALS), "default upper bound"),
+    Key::optional("more_than", Takes::Probability, "gives the chance that the share is more than this"),
+];
+
+pub const KIND: QuestionKind =
+    QuestionKind { ask: "share beyond", page: include_str!("share_beyond.rs"), keys: KEYS, read };
+
+#[derive(Debug)]
+struct ShareBeyond {
+    beyond: Asked,
+    probability: f64,
+    interval: Interval,
+    more_than: Option<f64>,
+}
+
+fn read(asked: &QuestionPlan, plan: &Plan, faults: &mut Faults) -> Option<Box<dyn Question>> {
+    let mut reader = Reader::new(&asked.table, KEYS, faults);
+    let beyond = beyond::read(&mut reader, plan, ANY_SIDE, true);
+    let probability = terms::read_probability(&mut reader);
+    let interval = Interval::read(&mut reader, Interval::UpperBound);
+    if interval == Interval::Shortest {
+        let fault = Fault::wrong("no-such-quantity", "the shortest interval of a share is not offered: a share is bounded by 0")
+            .expected("interval = \"upper bound\", \"lower bound\" or \"central\"")
+            .repair("write interval = \"upper bound\"");
+        reader.fault_at("interval", fault);
+    }
+    let more_than = reader.probability("more_than").map(|share| share.get());
+    reader.finish_beside(&[language::QUESTION]);
+    Some(Box::new(ShareBeyond { beyond: beyond?, probability, interval, more_than }))
+}
+
+/// A share, by the normal quantile that stands for it: p = Φ(−z), 1 − p = Φ(z). Both are then exact.
+#[derive(Debug, Clone, Copy)]
+struct Share {
+    z: f64,
+}
+
+impl Share {
+    /// The share itself.
+    fn value(self) -> f64 {
+        normal::sf(self.z)
+    }
+
+    /// What is left.
+    fn rest(self) -> f64 {
+        normal::cdf(self.z)
+    }
+}
+
+/// P(share > p) and P(share ≤ p), each from its own tail.
+fn split(posterior: &Posterior, beyond: Beyond, share: Share) -> Result<(f64, f64), Absent> {
+    let z = share.z;
+    match beyond {
+        Beyond::Above(limit) => {
+            let law = posterior.affine(When::This, 1.0, &|sigma| (z * sigma, 0.0))?;
+            Ok((law.sf(limit), law.cdf(limit)))
+        }
+        Beyond::Below(limit) => {
+            let law = posterior.affine(When::This, 1.0, &|sigma| (-z * sigma, 0.0))?;
+            Ok((law.cdf(limit), law.sf(limit)))
+        }
+        Beyond::Outside(lower, upper) => {
+            let (far, near) = apart(posterior, lower, upper, share.value(), share.rest())?;
+            Ok((far, near))
+        }
+        Beyond::Between(lower, upper) => {
+            // The share inside exceeds p where the share outside stays under 1 − p.
+            let (far, near) = apart(posterior, lower, upper, share.rest(), share.value())?;
+            Ok((near, far))
+        }
+    }
+}
+
+/// The chances that the level lies further from the middle of two limits than where the share outside
+/// them is `outside`, and nearer.
+fn apart(
+    posterior: &Posterior,
+    lower: f64,
+    upper: f64,
+    outside: f64,
+    inside: f64,
+) -> Result<(f64, f64), Absent> {
+    let (middle, half) = (0.5 * (lower + upper), 0.5 * (upper - lower));
+    let failed = RefCell::new(None);
+    let distance = |sigma: f64| match distance(half, sigma, outside, inside) {
+        Ok(distance) => distance,
+        Err(error) => {
+            failed.borrow_mut().get_or_insert(Absent::failed(error.to_string()));
+            0.0
+        }
+    };
+    let above = posterior.affine(When::This, 1.0, &|sigma| (-distance(sigma), 0.0))?;
+    let below = posterior.affine(When::This, 1.0, &|sigma| (distance(sigma), 0.0))?;
+    let far = above.sf(middle) + below.cdf(middle);
+    // θ − d ≤ c less θ + d ≤ c: from the tail that is smaller.
+    let near = if above.cdf(middle) <= below.sf(middle) {
+        above.cdf(middle) - below.cdf(middle)
+    } else {
+        below.sf(middle) - above.sf(middle)
+    };
+    match failed.into_inner() {
+        Some(absent) => Err(absent),
+        None => Ok((far, near.max(0.0))),
+    }
+}
+
+/// The distance of θ from the middle at which the share outside ± half is `outside`; 0 where it is
+/// more than that in the middle already.
+fn distance(half: f64, sigma: f64, outside: f64, inside: f64) -> Result<f64, crate::math::error::MathError> {
+    let h = half / sigma;
+    let excess = |t: f64| {
+        if outside <= 0.5 {
+            normal::sf(h - t) + normal::sf(h + t) - outside
+        } else {
+            inside - crate::math::fm::exp(normal::ln_interval(t - h, t + h))
+        }
+    };
+    if excess(0.0) >= 0.0 {
+        return Ok(0.0);
+    }
+    // One tail alone reaches the share at the first of these, and not before the whole does.
+    let reach = h + if outside <= 0.5 { -normal::upper_quantile(outside)? } else { normal::upper_quantile(inside)? };
+    let t = roots::solve(excess, 0.0, reach.max(1e-300) + 1e-9, roots::Tolerance::tight(1.0))?;
+    Ok(t * sigma)
+}
+
+impl ShareBeyond {
+    fn known<'a>(&self, subject: &Subject<'a>) -> Result<(&'a Posterior, Beyond), Absent> {
+        let beyond = self.beyond.on_scale(subject.plan, subject.series)?;
+        let posterior = subject.posterior.clone()?;
+        terms::needs_within_sd(posterior)?;
+        Ok((posterior, beyond))
+    }
+
+    fn mean(&self, subject: &Subject<'_>) -> Figure {
+        let (posterior, beyond) = self.known(subject)?;
+        Ok(beyond::chance(&posterior.reading(When::This, 1, None)?, beyond))
+    }
+
+    /// The share with P(share > p) = `above`, or with P(share ≤ p) = `below`: the smaller is given.
+    fn bound(&self, subject: &Subject<'_>, tail: f64, upper: bool) -> Figure {
+        let (posterior, beyond) = self.known(subject)?;
+        let failed = RefCell::new(None);
+        // Against z, which falls as the share rises: P(share > p) rises with z, P(share ≤ p) falls.
+        let excess = |z: f64| match split(posterior, beyond, Share { z }) {
+            Ok((more, less)) => {
+                if upper {
+                    more - tail
+                } else {
+                    tail - less
+                }
+            }
+            Err(absent) => {
+                failed.borrow_mut().get_or_insert(absent);
+                f64::NAN
+            }
+        };
+        const REACH: f64 = 37.0;
+        // Shares below 1e−299, or as near to 1, are not told apart.
+        let root = if excess(REACH) < 0.0 {
+            Ok(REACH)
+        } else if excess(-REACH) > 0.0 {
+            Ok(-REACH)
+        } else {
+            roots::solve(&excess, -REACH, REACH, roots::Tolerance::tight(1.0))
+        };
+        match (root, failed.into_inner()) {
+            (_, Some(absent)) => Err(absent),
+            (Ok(z), None) => Ok(Share { z }.value()),
+            (Err(error), None) => Err(Absent::failed(error.to_string())),
+        }
+    }
+
+    fn more_than(&self, subject: &Subject<'_>, share: f64) -> Figure {
+        let (posterior, beyond) = self.known(subject)?;
+        let z = normal::upper_quantile(share).map_err(|error| Absent::failed(error.to_string()))?;
+        Ok(split(posterior, beyond, Share { z })?.0)
+    }
+}
+
+impl Question for ShareBeyond {
+    fn answer(&self, subject: &Subject<'_>) -> Figures {
+        let left_over = 1.0 - self.probability;
+        let (lower, upper) = match self.interval {
+            Interval::LowerBound => {
+                (self.bound(subject, left_over, false), terms::no_other_end(self.interval))
+            }
+            Interval::UpperBound => (terms::no_other_end(self.interval), self.bound(subject, left_over, true)),
+            Interval::Central | Interval::Shortest => {
+                (self.bound(subject, 0.5 * left_over, false), self.bound(subject, 0.5 * left_over, true))
+            }
+        };
+        let figures = Figures::default()
+            .number("estimate", self.mean(subject), Meaning::Share)
+            .number("lower", lower, Meaning::Share)
+            .number("upper", upper, Meaning::Share);
+        match self.more_than {
+            Some(share) => figures.number("chance", self.more_than(subject, share), Meaning::Chance),
+            None => figures,
+        }
+    }
+
+    fn words(&self, subject: &Subject<'_>) -> String {
+        let period = terms::period_words(subject.plan, When::This);
+        let interval = self.interval.words(self.probability);
+        let beyond = self.beyond.words(subject);
+        let measured = terms::as_measured(subject);
+        let share = format!("share of readings of {period} that lie {beyond}: mean and {interval}");
+        match self.more_than {
+            Some(more) => {
+                format!("{share}, and the probability that it is more than {}{measured}", terms::percent(more))
+            }
+            None => format!("{share}{measured}"),
+        }
+    }
+
+    fn symbols(&self, subject: &Subject<'_>) -> String {
+        let share = format!("π = P({} | θ, σ)", self.beyond.symbols("x", subject));
+        let known = subject.known();
+        match self.more_than {
+            Some(more) => format!("{share}; E(π | {known}), P(π > {more} | {known})"),
+            None => format!("{share}; E(π | {known})"),
+        }
+    }
+
+    fn working(&self, subject: &Subject<'_>) -> Vec<Step> {
+        let mut steps = steps::level(subject, When::This);
+        if let Ok(mean) = self.mean(subject) {
+            let formula = "E π = Σ w P(N(m, v + σ²) beyond)";
+            steps.push(Step::new("mean share: the chance of the next reading", formula, &[], mean));
+        }
+        let figures = self.answer(subject);
+        steps.extend(steps::read_off(&figures, "p with P(π ≤ p) = tail", self.probability));
+        if let (Some(share), Some(chance)) = (self.more_than, figures.value("chance")) {
+            let put_in = [("p", share)];
+            steps.push(Step::new("chance of a larger share", "P(π > p)", &put_in, chance));
+        }
+        steps
+    }
+
+    fn gives(&self) -> Vec<&'static str> {
+        let mut names = self.interval.gives();
+        if self.more_than.is_some() {
+            names.push("chance");
+        }
+        names
+    }
+
+    fn settings(&self) -> Vec<(&'static str, String)> {
+        let mut settings = vec![
+            self.beyond.setting(),
+            ("probability", format!("{}", self.probability)),
+            ("interval", terms::quoted(self.interval.name())),
+        ];
+        settings.extend(self.more_than.map(|share| ("more_than", format!("{share}"))));
+        settings
+    }
+
+    fn cautions(&self, plan: &Plan) -> Vec<Caution> {
+        self.beyond.caution(About::Reading, plan).into_iter().collect()
+    }
+
+    fn linear(&self, subject: &Subject<'_>, reading_sd: f64) -> Option<Linear> {
+        let z = normal::upper_quantile(self.more_than?).ok()?;
+        let beyond = self.beyond.on_scale(subject.plan, subject.series).ok()?;
+        let shift = match beyond {
+            Beyond::Above(_) => z * reading_sd,
+            Beyond::Below(_) => -z * reading_sd,
+            Beyond::Between(..) | Beyond::Outside(..) => return None,
+        };
+        Some(Linear { when: When::This, true_level: false, beyond, shift, variance: 0.0 })
+    }
+}
