@@ -12,7 +12,8 @@ use crate::spec::keys::{Key, Takes, nearest, one_of};
 use crate::spec::reader::Reader;
 use crate::spec::table::{Kind, Value};
 
-const PAIR: Takes = Takes::Other("two rising numbers such as [40, 60], or the name of a two-sided limit in quotes");
+const PAIR: Takes =
+    Takes::Other("two rising numbers such as [40, 60], or the name of a two-sided limit in quotes");
 
 pub const ABOVE: Key = Key::optional("above", Takes::NumberOrLimit, "above this number or limit");
 pub const BELOW: Key = Key::optional("below", Takes::NumberOrLimit, "below this number or limit");
@@ -74,9 +75,10 @@ pub fn read(reader: &mut Reader<'_>, plan: &Plan, sides: &[Side], required: bool
     match given.as_slice() {
         [] => {
             if required {
-                let fault = Fault::wrong("missing-key", format!("{} does not say beyond what", reader.table.name))
-                    .expected(format!("exactly one of the keys {}", one_of(&keys).replace('"', "`")))
-                    .repair("add a line such as above = 50");
+                let fault =
+                    Fault::wrong("missing-key", format!("{} does not say beyond what", reader.table.name))
+                        .expected(format!("exactly one of the keys {}", one_of(&keys).replace('"', "`")))
+                        .repair("add a line such as above = 50");
                 reader.fault_at("ask", fault);
             }
             None
@@ -88,7 +90,11 @@ pub fn read(reader: &mut Reader<'_>, plan: &Plan, sides: &[Side], required: bool
         [first, second, ..] => {
             let fault = Fault::wrong(
                 "either-or",
-                format!("`{}` stands beside `{}`, and a question has one direction", second.key(), first.key()),
+                format!(
+                    "`{}` stands beside `{}`, and a question has one direction",
+                    second.key(),
+                    first.key()
+                ),
             )
             .expected(format!("exactly one of the keys {}", one_of(&keys).replace('"', "`")))
             .repair("leave one of them out, or ask two questions");
@@ -132,9 +138,12 @@ fn against(reader: &mut Reader<'_>, plan: &Plan, side: Side) -> Option<Against> 
             Against::Limit(name) => smallest_of(plan, name),
         };
         if smallest <= 0.0 {
-            let fault = Fault::wrong("out-of-range", format!("on the log scale nothing lies at or below 0, and `{key}` is {smallest}"))
-                .expected("a number above 0")
-                .repair("ask against a number above 0, or set scale = \"linear\" in [quantity]");
+            let fault = Fault::wrong(
+                "out-of-range",
+                format!("on the log scale nothing lies at or below 0, and `{key}` is {smallest}"),
+            )
+            .expected("a number above 0")
+            .repair("ask against a number above 0, or set scale = \"linear\" in [quantity]");
             reader.fault_at(key, fault);
             return None;
         }
@@ -170,16 +179,18 @@ fn limit_named(reader: &mut Reader<'_>, plan: &Plan, side: Side, name: &str) -> 
     };
     let fault = match (limit.bounds, side.two_sided()) {
         (Bounds::Value(_), false) | (Bounds::Range(..), true) => return Some(name.to_string()),
-        (Bounds::Range(..), false) => {
-            Fault::wrong("two-sided-limit", format!("the limit \"{name}\" has two sides, and `{key}` takes one"))
-                .expected("a number, or the name of a limit with one value")
-                .repair(format!("write outside = \"{name}\" (or between), or name a limit with one value"))
-        }
-        (Bounds::Value(_), true) => {
-            Fault::wrong("one-sided-limit", format!("the limit \"{name}\" has one value, and `{key}` takes two"))
-                .expected("two rising numbers, or the name of a limit with lower and upper")
-                .repair(format!("write above = \"{name}\" (or below), or give two numbers"))
-        }
+        (Bounds::Range(..), false) => Fault::wrong(
+            "two-sided-limit",
+            format!("the limit \"{name}\" has two sides, and `{key}` takes one"),
+        )
+        .expected("a number, or the name of a limit with one value")
+        .repair(format!("write outside = \"{name}\" (or between), or name a limit with one value")),
+        (Bounds::Value(_), true) => Fault::wrong(
+            "one-sided-limit",
+            format!("the limit \"{name}\" has one value, and `{key}` takes two"),
+        )
+        .expected("two rising numbers, or the name of a limit with lower and upper")
+        .repair(format!("write above = \"{name}\" (or below), or give two numbers")),
     };
     reader.fault_at(key, fault);
     None
@@ -188,10 +199,17 @@ fn limit_named(reader: &mut Reader<'_>, plan: &Plan, side: Side, name: &str) -> 
 /// The fault for a limit that the spec does not have.
 pub fn unknown_limit(plan: &Plan, key: &str, name: &str) -> Fault {
     let names: Vec<&str> = plan.limits.iter().map(|limit| limit.name.as_str()).collect();
-    let fault = Fault::wrong("unknown-limit", format!("`{key}` names the limit \"{name}\", which the spec does not have"));
+    let fault = Fault::wrong(
+        "unknown-limit",
+        format!("`{key}` names the limit \"{name}\", which the spec does not have"),
+    );
     match nearest(name, names.iter().copied()) {
-        Some(meant) => fault.expected(format!("one of {}", names.join(", "))).repair(format!("write \"{meant}\"")),
-        None if names.is_empty() => fault.repair(format!("add a table [limit.{name}], or write a number without quotes")),
+        Some(meant) => {
+            fault.expected(format!("one of {}", names.join(", "))).repair(format!("write \"{meant}\""))
+        }
+        None if names.is_empty() => {
+            fault.repair(format!("add a table [limit.{name}], or write a number without quotes"))
+        }
         None => fault
             .expected(format!("one of {}", names.join(", ")))
             .repair("name one of these limits, or write a number without quotes"),
@@ -204,16 +222,18 @@ impl Asked {
         let bounds = match &self.against {
             Against::One(value, _) => Bounds::Value(*value),
             Against::Two((lower, _), (upper, _)) => Bounds::Range(*lower, *upper),
-            Against::Limit(name) => plan
-                .bounds(name, series)
-                .ok_or_else(|| Absent::because(format!("the limit \"{name}\" has no value for this series")))?,
+            Against::Limit(name) => plan.bounds(name, series).ok_or_else(|| {
+                Absent::because(format!("the limit \"{name}\" has no value for this series"))
+            })?,
         };
         match (self.side, bounds) {
             (Side::Above, Bounds::Value(value)) => Ok(Beyond::Above(value)),
             (Side::Below, Bounds::Value(value)) => Ok(Beyond::Below(value)),
             (Side::Between, Bounds::Range(lower, upper)) => Ok(Beyond::Between(lower, upper)),
             (Side::Outside, Bounds::Range(lower, upper)) => Ok(Beyond::Outside(lower, upper)),
-            _ => Err(Absent::because("for this series the limit has one value where two are needed, or two for one")),
+            _ => Err(Absent::because(
+                "for this series the limit has one value where two are needed, or two for one",
+            )),
         }
     }
 
@@ -264,7 +284,9 @@ impl Asked {
             (Side::Above, Some((one, None))) => format!("{symbol} > {one}"),
             (Side::Below, Some((one, None))) => format!("{symbol} < {one}"),
             (Side::Between, Some((lower, Some(upper)))) => format!("{lower} ≤ {symbol} ≤ {upper}"),
-            (Side::Outside, Some((lower, Some(upper)))) => format!("{symbol} < {lower} or {symbol} > {upper}"),
+            (Side::Outside, Some((lower, Some(upper)))) => {
+                format!("{symbol} < {lower} or {symbol} > {upper}")
+            }
             _ => format!("{symbol} {} L", self.side.key()),
         }
     }
@@ -340,16 +362,20 @@ fn inside(law: &Law, lower: f64, upper: f64) -> f64 {
         // Most lies inside: what is outside is small and known well.
         return (0.5 - left) + (0.5 - right);
     }
-    let (larger, smaller) =
-        if left <= right { (law.cdf(upper), left) } else { (law.sf(lower), right) };
+    let (larger, smaller) = if left <= right { (law.cdf(upper), left) } else { (law.sf(lower), right) };
     let difference = larger - smaller;
     if difference > 1e-4 * larger {
         return difference.max(0.0);
     }
     // So narrow an interval cancels; on it the density hardly bends, and five points integrate it to
     // the last digit.
-    const PLACES: [f64; 5] =
-        [-0.906_179_845_938_664, -0.538_469_310_105_683_1, 0.0, 0.538_469_310_105_683_1, 0.906_179_845_938_664];
+    const PLACES: [f64; 5] = [
+        -0.906_179_845_938_664,
+        -0.538_469_310_105_683_1,
+        0.0,
+        0.538_469_310_105_683_1,
+        0.906_179_845_938_664,
+    ];
     const WEIGHTS: [f64; 5] = [
         0.236_926_885_056_189_08,
         0.478_628_670_499_366_47,
@@ -358,7 +384,8 @@ fn inside(law: &Law, lower: f64, upper: f64) -> f64 {
         0.236_926_885_056_189_08,
     ];
     let (middle, half) = (0.5 * (lower + upper), 0.5 * (upper - lower));
-    let sum: f64 = PLACES.iter().zip(WEIGHTS).map(|(at, weight)| weight * law.density(middle + half * at)).sum();
+    let sum: f64 =
+        PLACES.iter().zip(WEIGHTS).map(|(at, weight)| weight * law.density(middle + half * at)).sum();
     half * sum
 }
 

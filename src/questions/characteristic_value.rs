@@ -90,7 +90,12 @@ impl Question for CharacteristicValue {
         if let ([piece], Some(z)) = (posterior.pieces.as_slice(), z_of_percent(self.percentile)) {
             let sd = (piece.level_var + piece.reading_sd * piece.reading_sd + own * own).sqrt();
             let put_in = [("v", piece.level_var), ("σ", piece.reading_sd), ("u", own)];
-            steps.push(Step::new("standard deviation of the next reading", "s = √(v + σ² + u²)", &put_in, sd));
+            steps.push(Step::new(
+                "standard deviation of the next reading",
+                "s = √(v + σ² + u²)",
+                &put_in,
+                sd,
+            ));
             let put_in = [("m", piece.level_mean), ("z_p", z), ("s", sd)];
             steps.push(Step::new("end", "m + z_p s", &put_in, piece.level_mean + z * sd));
             return steps::in_unit(steps, subject.scale());

@@ -70,17 +70,21 @@ pub fn read_percentile(reader: &mut Reader<'_>) -> Option<f64> {
     let percentile = reader.positive("percentile")?;
     let shares = [0.05, 0.1, 0.25, 0.75];
     if percentile >= 100.0 {
-        let fault = Fault::wrong("out-of-range", format!("`percentile` is {percentile}, and it is in per cent"))
-            .expected("a number above 0 and below 100, such as 95")
-            .repair("write percentile = 95");
+        let fault =
+            Fault::wrong("out-of-range", format!("`percentile` is {percentile}, and it is in per cent"))
+                .expected("a number above 0 and below 100, such as 95")
+                .repair("write percentile = 95");
         reader.fault_at("percentile", fault);
         return None;
     }
     if (0.5..1.0).contains(&percentile) || shares.contains(&percentile) {
         let meant = terms::number_text((percentile * 1e14).round() / 1e12, 0);
-        let fault = Fault::wrong("out-of-range", format!("`percentile` is in per cent, and {percentile} reads like a share"))
-            .expected("per cent, such as 5 or 95")
-            .repair(format!("write percentile = {meant}"));
+        let fault = Fault::wrong(
+            "out-of-range",
+            format!("`percentile` is in per cent, and {percentile} reads like a share"),
+        )
+        .expected("per cent, such as 5 or 95")
+        .repair(format!("write percentile = {meant}"));
         reader.fault_at("percentile", fault);
         return None;
     }
@@ -167,7 +171,12 @@ impl Question for Percentile {
     fn working(&self, subject: &Subject<'_>) -> Vec<Step> {
         let Ok(posterior) = &subject.posterior else { return Vec::new() };
         let mut steps = steps::level(subject, When::This);
-        steps.push(Step::new("normal quantile of the percentile", "z_p", &[("p in %", self.percentile)], self.z));
+        steps.push(Step::new(
+            "normal quantile of the percentile",
+            "z_p",
+            &[("p in %", self.percentile)],
+            self.z,
+        ));
         if let [piece] = posterior.pieces.as_slice()
             && self.interval != Interval::Shortest
         {

@@ -73,29 +73,37 @@ fn read(asked: &QuestionPlan, plan: &Plan, faults: &mut Faults) -> Option<Box<dy
         _ => Of::Each,
     };
     if reader.has("of") && reader.has("at_least") {
-        let fault = Fault::wrong("either-or", "`at_least` counts readings, and `of` asks about each or their mean")
-            .expected("either `of` or `at_least`")
-            .repair("leave one of them out");
+        let fault =
+            Fault::wrong("either-or", "`at_least` counts readings, and `of` asks about each or their mean")
+                .expected("either `of` or `at_least`")
+                .repair("leave one of them out");
         reader.fault_at("at_least", fault);
     }
     if let Of::AtLeast(least) = of
         && least > readings
     {
-        let fault = Fault::wrong("out-of-range", format!("`at_least` is {least}, and there are {readings} readings"))
-            .expected(format!("a whole number from 1 to {readings}"))
-            .repair(format!("write readings = {least} or more beside it"));
+        let fault =
+            Fault::wrong("out-of-range", format!("`at_least` is {least}, and there are {readings} readings"))
+                .expected(format!("a whole number from 1 to {readings}"))
+                .repair(format!("write readings = {least} or more beside it"));
         reader.fault_at("at_least", fault);
     }
     if of == Of::Mean && !reader.has("readings") {
-        let fault = Fault::wrong("missing-key", "`of` speaks of several readings, and `readings` does not say how many")
-            .expected("readings = a whole number")
-            .repair("add readings = 12, or leave `of` out");
+        let fault = Fault::wrong(
+            "missing-key",
+            "`of` speaks of several readings, and `readings` does not say how many",
+        )
+        .expected("readings = a whole number")
+        .repair("add readings = 12, or leave `of` out");
         reader.fault_at("of", fault);
     }
     if readings > 1 && !reader.has("of") && !reader.has("at_least") {
-        let fault = Fault::wrong("not-clear", format!("`readings` is {readings}, and nothing says what is asked of them"))
-            .expected("at_least = a whole number, or of = \"each\" or \"mean\"")
-            .repair("add at_least = 1 for the chance that any of them lies beyond");
+        let fault = Fault::wrong(
+            "not-clear",
+            format!("`readings` is {readings}, and nothing says what is asked of them"),
+        )
+        .expected("at_least = a whole number, or of = \"each\" or \"mean\"")
+        .repair("add at_least = 1 for the chance that any of them lies beyond");
         reader.fault_at("readings", fault);
     }
     let when = terms::read_when_of_readings(&mut reader);
@@ -141,7 +149,10 @@ impl Question for ReadingChance {
             Of::Each if self.readings == 1 => format!("probability that {readings} lies {beyond}{measured}"),
             Of::Each => format!("probability that each single one of {readings} lies {beyond}{measured}"),
             Of::Mean => {
-                format!("probability that {} of {readings} lies {beyond}{measured}", terms::mean_words(subject))
+                format!(
+                    "probability that {} of {readings} lies {beyond}{measured}",
+                    terms::mean_words(subject)
+                )
             }
             Of::AtLeast(1) => format!("probability that at least one of {readings} lies {beyond}{measured}"),
             Of::AtLeast(least) => {
@@ -156,7 +167,11 @@ impl Question for ReadingChance {
             Of::Each => format!("P({} | {known})", self.beyond.symbols("x_new", subject)),
             Of::Mean => format!("P({} | {known})", self.beyond.symbols("x̄_new", subject)),
             Of::AtLeast(least) => {
-                format!("P(#{{{}}} ≥ {least} of {} | {known})", self.beyond.symbols("x_new", subject), self.readings)
+                format!(
+                    "P(#{{{}}} ≥ {least} of {} | {known})",
+                    self.beyond.symbols("x_new", subject),
+                    self.readings
+                )
             }
         }
     }

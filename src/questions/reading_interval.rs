@@ -39,7 +39,11 @@ const KEYS: &[Key] = &[
     terms::PROBABILITY,
     terms::INTERVAL,
     READINGS,
-    Key::optional("of", Takes::OneOf(&["each", "mean", "all"]), "of each of them (default), of their mean, or holding all"),
+    Key::optional(
+        "of",
+        Takes::OneOf(&["each", "mean", "all"]),
+        "of each of them (default), of their mean, or holding all",
+    ),
     terms::OF_PERIOD,
     terms::UNCERTAINTY,
 ];
@@ -75,21 +79,30 @@ fn read(asked: &QuestionPlan, _: &Plan, faults: &mut Faults) -> Option<Box<dyn Q
         _ => Of::Each,
     };
     if readings > 1 && !reader.has("of") {
-        let fault = Fault::wrong("not-clear", format!("`readings` is {readings}, and `of` does not say what is asked of them"))
-            .expected("of = \"each\", \"mean\" or \"all\"")
-            .repair("add of = \"all\" for an interval that holds all of them");
+        let fault = Fault::wrong(
+            "not-clear",
+            format!("`readings` is {readings}, and `of` does not say what is asked of them"),
+        )
+        .expected("of = \"each\", \"mean\" or \"all\"")
+        .repair("add of = \"all\" for an interval that holds all of them");
         reader.fault_at("readings", fault);
     }
     if of != Of::Each && !reader.has("readings") {
-        let fault = Fault::wrong("missing-key", "`of` speaks of several readings, and `readings` does not say how many")
-            .expected("readings = a whole number")
-            .repair("add readings = 12, or leave `of` out");
+        let fault = Fault::wrong(
+            "missing-key",
+            "`of` speaks of several readings, and `readings` does not say how many",
+        )
+        .expected("readings = a whole number")
+        .repair("add readings = 12, or leave `of` out");
         reader.fault_at("of", fault);
     }
     if of == Of::All && interval == Interval::Shortest {
-        let fault = Fault::wrong("no-such-quantity", "an interval that holds all of several readings is not offered as the shortest")
-            .expected("interval = \"central\", \"lower bound\" or \"upper bound\"")
-            .repair("write interval = \"central\"");
+        let fault = Fault::wrong(
+            "no-such-quantity",
+            "an interval that holds all of several readings is not offered as the shortest",
+        )
+        .expected("interval = \"central\", \"lower bound\" or \"upper bound\"")
+        .repair("write interval = \"central\"");
         reader.fault_at("interval", fault);
     }
     let when = terms::read_when_of_readings(&mut reader);
@@ -103,9 +116,10 @@ pub fn read_readings(reader: &mut Reader<'_>) -> u64 {
     let readings = reader.count("readings").unwrap_or(1);
     if readings > binomial::MOST_READINGS {
         let most = binomial::MOST_READINGS;
-        let fault = Fault::wrong("out-of-range", format!("`readings` is {readings}; at most {most} are served"))
-            .expected(format!("a whole number from 1 to {most}"))
-            .repair("ask about a share of readings instead (ask = \"share beyond\")");
+        let fault =
+            Fault::wrong("out-of-range", format!("`readings` is {readings}; at most {most} are served"))
+                .expected(format!("a whole number from 1 to {most}"))
+                .repair("ask about a share of readings instead (ask = \"share beyond\")");
         reader.fault_at("readings", fault);
         return 1;
     }
@@ -217,7 +231,9 @@ impl Question for ReadingInterval {
         match self.of {
             Of::Each if self.readings == 1 => format!("predictive {interval} of {readings}{measured}"),
             Of::Each => format!("predictive {interval} of each of {readings}{measured}"),
-            Of::Mean => format!("predictive {interval} of {} of {readings}{measured}", terms::mean_words(subject)),
+            Of::Mean => {
+                format!("predictive {interval} of {} of {readings}{measured}", terms::mean_words(subject))
+            }
             Of::All => format!("predictive {interval} holding all of {readings} at once{measured}"),
         }
     }
@@ -235,7 +251,8 @@ impl Question for ReadingInterval {
     }
 
     fn working(&self, subject: &Subject<'_>) -> Vec<Step> {
-        let (Ok(posterior), Ok(own)) = (&subject.posterior, terms::own_uncertainty(subject, self.uncertainty))
+        let (Ok(posterior), Ok(own)) =
+            (&subject.posterior, terms::own_uncertainty(subject, self.uncertainty))
         else {
             return Vec::new();
         };
@@ -259,7 +276,11 @@ impl Question for ReadingInterval {
             }
         }
         let figures = self.answer(subject);
-        let formula = if self.of == Of::All { "E[(F(b) − F(a))^m] = probability" } else { "Σ w Φ((t − m)/s) = tail" };
+        let formula = if self.of == Of::All {
+            "E[(F(b) − F(a))^m] = probability"
+        } else {
+            "Σ w Φ((t − m)/s) = tail"
+        };
         steps.extend(steps::read_off(&figures, formula, self.probability));
         steps
     }

@@ -206,7 +206,9 @@ pub fn check(asked: &QuestionPlan, question: Option<&dyn Question>, plan: &Plan,
                     Some(Bounds::Range(..)) => faults.push(
                         Fault::wrong(
                             "two-sided-limit",
-                            format!("`{key}` compares with one number, and the limit \"{limit}\" has two sides"),
+                            format!(
+                                "`{key}` compares with one number, and the limit \"{limit}\" has two sides"
+                            ),
                         )
                         .at(span.place())
                         .expected("a number, or the name of a limit with one value")

@@ -60,9 +60,12 @@ fn read(asked: &QuestionPlan, plan: &Plan, faults: &mut Faults) -> Option<Box<dy
     let probability = terms::read_probability(&mut reader);
     let interval = Interval::read(&mut reader, Interval::UpperBound);
     if interval == Interval::Shortest {
-        let fault = Fault::wrong("no-such-quantity", "the shortest interval of a share is not offered: a share is bounded by 0")
-            .expected("interval = \"upper bound\", \"lower bound\" or \"central\"")
-            .repair("write interval = \"upper bound\"");
+        let fault = Fault::wrong(
+            "no-such-quantity",
+            "the shortest interval of a share is not offered: a share is bounded by 0",
+        )
+        .expected("interval = \"upper bound\", \"lower bound\" or \"central\"")
+        .repair("write interval = \"upper bound\"");
         reader.fault_at("interval", fault);
     }
     let more_than = reader.probability("more_than").map(|share| share.get());
@@ -160,7 +163,8 @@ fn distance(half: f64, sigma: f64, outside: f64, inside: f64) -> Result<f64, cra
         return Ok(0.0);
     }
     // One tail alone reaches the share at the first of these, and not before the whole does.
-    let reach = h + if outside <= 0.5 { -normal::upper_quantile(outside)? } else { normal::upper_quantile(inside)? };
+    let reach =
+        h + if outside <= 0.5 { -normal::upper_quantile(outside)? } else { normal::upper_quantile(inside)? };
     let t = roots::solve(excess, 0.0, reach.max(1e-300) + 1e-9, roots::Tolerance::tight(1.0))?;
     Ok(t * sigma)
 }
@@ -226,7 +230,9 @@ impl Question for ShareBeyond {
             Interval::LowerBound => {
                 (self.bound(subject, left_over, false), terms::no_other_end(self.interval))
             }
-            Interval::UpperBound => (terms::no_other_end(self.interval), self.bound(subject, left_over, true)),
+            Interval::UpperBound => {
+                (terms::no_other_end(self.interval), self.bound(subject, left_over, true))
+            }
             Interval::Central | Interval::Shortest => {
                 (self.bound(subject, 0.5 * left_over, false), self.bound(subject, 0.5 * left_over, true))
             }
@@ -249,7 +255,10 @@ impl Question for ShareBeyond {
         let share = format!("share of readings of {period} that lie {beyond}: mean and {interval}");
         match self.more_than {
             Some(more) => {
-                format!("{share}, and the probability that it is more than {}{measured}", terms::percent(more))
+                format!(
+                    "{share}, and the probability that it is more than {}{measured}",
+                    terms::percent(more)
+                )
             }
             None => format!("{share}{measured}"),
         }

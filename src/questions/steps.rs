@@ -16,10 +16,9 @@ use crate::working::Step;
 pub fn moments(piece: &Piece, when: When) -> Option<(f64, f64)> {
     match (when, piece.periods) {
         (When::This, _) => Some((piece.level_mean, piece.level_var)),
-        (When::Next, Some(periods)) => Some((
-            periods.long_run_mean,
-            periods.between_sd * periods.between_sd + periods.long_run_var,
-        )),
+        (When::Next, Some(periods)) => {
+            Some((periods.long_run_mean, periods.between_sd * periods.between_sd + periods.long_run_var))
+        }
         (When::LongRun, Some(periods)) => Some((periods.long_run_mean, periods.long_run_var)),
         (_, None) => None,
     }
@@ -50,7 +49,12 @@ fn one_piece(posterior: &Posterior, piece: &Piece, when: When) -> Vec<Step> {
         Evidence::Sums { n, mean, .. } if *n > 0 && posterior.basis != Basis::PriorOnly => {
             let (n, mean) = (*n as f64, *mean);
             let variance = sigma * sigma / n;
-            steps.push(Step::new("variance of the readings' mean", "σ²/n", &[("σ", sigma), ("n", n)], variance));
+            steps.push(Step::new(
+                "variance of the readings' mean",
+                "σ²/n",
+                &[("σ", sigma), ("n", n)],
+                variance,
+            ));
             Some((mean, variance))
         }
         Evidence::Mean { mean, uncertainty } if posterior.basis != Basis::PriorOnly => {
@@ -61,7 +65,9 @@ fn one_piece(posterior: &Posterior, piece: &Piece, when: When) -> Vec<Step> {
         _ => None,
     };
     let stated = match (&posterior.model.level, posterior.basis) {
-        (LevelPrior::Stated { mean, sd }, Basis::PriorOnly | Basis::Both) if posterior.model.bias_sd == 0.0 => {
+        (LevelPrior::Stated { mean, sd }, Basis::PriorOnly | Basis::Both)
+            if posterior.model.bias_sd == 0.0 =>
+        {
             Some((*mean, sd * sd))
         }
         (LevelPrior::Worth { mean, readings }, Basis::PriorOnly | Basis::Both) => {
@@ -69,7 +75,8 @@ fn one_piece(posterior: &Posterior, piece: &Piece, when: When) -> Vec<Step> {
         }
         _ => None,
     };
-    if let (Some((prior_mean, prior_var)), Some((mean, variance)), When::This) = (stated, from_readings, when) {
+    if let (Some((prior_mean, prior_var)), Some((mean, variance)), When::This) = (stated, from_readings, when)
+    {
         let weight = variance / (prior_var + variance);
         steps.push(Step::new(
             "weight of the prior",
@@ -97,8 +104,12 @@ fn one_piece(posterior: &Posterior, piece: &Piece, when: When) -> Vec<Step> {
 }
 
 fn mixture(posterior: &Posterior, pieces: &[Piece], when: When) -> Vec<Step> {
-    let mut steps =
-        vec![Step::new("normal pieces (one for each node of the unknown spreads)", "K", &[], pieces.len() as f64)];
+    let mut steps = vec![Step::new(
+        "normal pieces (one for each node of the unknown spreads)",
+        "K",
+        &[],
+        pieces.len() as f64,
+    )];
     if posterior.model.bias_sd > 0.0 {
         return steps;
     }
@@ -198,7 +209,12 @@ pub fn in_unit(mut steps: Vec<Step>, scale: Scale) -> Vec<Step> {
             .iter()
             .filter(|step| matches!(step.label.as_str(), "lower end" | "upper end" | "end"))
             .map(|step| {
-                Step::new(&format!("{} in the unit", step.label), "exp t", &[("t", step.result)], fm::exp(step.result))
+                Step::new(
+                    &format!("{} in the unit", step.label),
+                    "exp t",
+                    &[("t", step.result)],
+                    fm::exp(step.result),
+                )
             })
             .collect();
         steps.extend(ends);

@@ -1,8 +1,8 @@
 //! The terms that several kinds of question share: which period, which interval, how sure; and how
 //! such terms are said in words.
 
-use super::figures::{Figures, Meaning};
 use super::Subject;
+use super::figures::{Figures, Meaning};
 use crate::data::evidence::Evidence;
 use crate::diagnostics::Fault;
 use crate::math::fm;
@@ -15,7 +15,8 @@ use crate::spec::reader::Reader;
 
 pub const INTERVALS: &[&str] = &["central", "shortest", "lower bound", "upper bound"];
 
-pub const PROBABILITY: Key = Key::optional("probability", Takes::Probability, "of the interval; default 0.95");
+pub const PROBABILITY: Key =
+    Key::optional("probability", Takes::Probability, "of the interval; default 0.95");
 pub const INTERVAL: Key = Key::optional("interval", Takes::OneOf(INTERVALS), "default central");
 pub const OF_PERIOD_LEVEL: Key =
     Key::optional("of_period", Takes::OneOf(&["this", "next", "long run"]), "which period; default this");
@@ -293,10 +294,11 @@ pub fn interval_figures(
         Err(absent) => (Err(absent.clone()), (Err(absent.clone()), Err(absent.clone()))),
     };
     let in_unit = |end: Figure| end.map(|value| printed(value, scale));
-    Figures::default()
-        .number("estimate", middle, meaning)
-        .number("lower", in_unit(lower), meaning)
-        .number("upper", in_unit(upper), meaning)
+    Figures::default().number("estimate", middle, meaning).number("lower", in_unit(lower), meaning).number(
+        "upper",
+        in_unit(upper),
+        meaning,
+    )
 }
 
 /// The own standard uncertainty of a reading to come: as stated in the question, else what all
