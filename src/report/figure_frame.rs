@@ -27,15 +27,19 @@ const SAMPLE: i32 = 30 * UNIT;
 /// Height of a row of labels above the plot, in drawing units.
 const ROW_ABOVE: i32 = 20 * UNIT;
 
-/// Rows above the plot that the names of upright lines need: more where they are many and wide.
-pub fn rows_above(marks: &[Mark]) -> i32 {
-    let width: i64 = marks.iter().map(|mark| i64::from(text_width(&mark.label, LETTERS))).sum();
-    match marks.len() {
-        0 => 0,
-        1 => 1,
-        _ if width < 280 * i64::from(UNIT) => 2,
-        _ => 3,
+/// Rows above the plot that the names of upright lines need on a horizontal axis: as many as it takes for names
+/// centred on their lines not to touch, three at most.
+pub fn rows_above(marks: &[Mark], axis: &Axis) -> i32 {
+    let mut rows: [Vec<(i32, i32)>; 3] = Default::default();
+    for mark in marks {
+        // The plot is a little narrower than the drawing; the difference is on the safe side of a row too many.
+        let middle = along(axis, mark.value, 0, WIDTH * 4 / 5);
+        let half = text_width(&mark.label, LETTERS) * 11 / 20 + 5 * UNIT;
+        let span = (middle - half, middle + half);
+        let free = rows.iter().position(|row| row.iter().all(|other| span.1 < other.0 || other.1 < span.0));
+        rows[free.unwrap_or(2)].push(span);
     }
+    rows.iter().filter(|row| !row.is_empty()).count() as i32
 }
 
 /// Why a figure could not be drawn.

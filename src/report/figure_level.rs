@@ -60,7 +60,7 @@ pub fn level(figure: &LevelFigure) -> Result<String, FigureError> {
     let shown = figure.limits.iter().filter(near).map(|mark| mark.value);
     let x = Axis::covering(all().map(|(x, _)| x).chain(shown), 0.03, 7, &figure.value_title)?;
     let y = Axis::heights(all().map(|(_, y)| y), &figure.height_title)?;
-    let rows = rows_above(&figure.limits);
+    let rows = rows_above(&figure.limits, &x);
     let frame = Frame::new(x, y, HEIGHT, rows);
     let plot = frame.plot();
 

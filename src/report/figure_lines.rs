@@ -53,7 +53,7 @@ pub fn lines(figure: &LinesFigure) -> Result<String, FigureError> {
             Axis::covering(points().map(|(_, y)| y).chain(marks), 0.06, 6, &figure.y_title)?
         }
     };
-    let rows = rows_above(&figure.x_marks);
+    let rows = rows_above(&figure.x_marks, &x);
     let frame = Frame::new(x, y, HEIGHT, rows);
     let plot = frame.plot();
 

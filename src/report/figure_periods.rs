@@ -86,7 +86,7 @@ pub fn periods(figure: &PeriodsFigure) -> Result<String, FigureError> {
         }
     }
     for mark in figure.events.iter().filter(|mark| frame.shows_x(mark.value)) {
-        let spots = frame.spots_above(mark.value, rows_above(&figure.events));
+        let spots = frame.spots_above(mark.value, rows_above(&figure.events, &frame.x));
         if !labels.place(&mark.label, Ink::Event, false, spots) {
             legend.push(Entry { sample: Sample::Line(Ink::Event), text: mark.label.clone() });
         }
@@ -162,7 +162,8 @@ fn frame(figure: &PeriodsFigure) -> Result<Frame, FigureError> {
     shown.extend(figure.limits.iter().map(|mark| mark.value).filter(near));
     let x = Axis::names(figure.periods.iter().map(|period| period.name.clone()), &figure.period_title)?;
     let y = Axis::covering(shown, 0.08, 6, &figure.value_title)?;
-    Ok(Frame::new(x, y, HEIGHT, rows_above(&figure.events)).thin_names())
+    let rows = rows_above(&figure.events, &x);
+    Ok(Frame::new(x, y, HEIGHT, rows).thin_names())
 }
 
 fn keep_clear_of_marks(figure: &PeriodsFigure, frame: &Frame, labels: &mut Labels) {

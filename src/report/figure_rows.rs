@@ -45,7 +45,7 @@ pub fn rows(figure: &RowsFigure) -> Result<String, FigureError> {
     let y = Axis::names(names, "")?;
     let remarks = figure.rows.iter().map(|row| text_width(&row.remark, LETTERS)).max().unwrap_or(0);
     let right = if remarks > 0 { remarks.min(REMARKS_AT_MOST) + 22 * UNIT } else { 18 * UNIT };
-    let strip = rows_above(&figure.limits);
+    let strip = rows_above(&figure.limits, &x);
     let count = i32::try_from(figure.rows.len()).map_err(|_| FigureError::NoRange)?;
     let height = 10 * UNIT + count * ROW + 48 * UNIT;
     let frame = Frame::new(x, y, height, strip).with_right_margin(right);

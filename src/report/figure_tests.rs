@@ -247,13 +247,32 @@ fn values_of_extreme_size_and_none() {
     assert_eq!(rows(&figure), Err(FigureError::NothingToDraw));
 }
 
-/// Writes the figures where one can look at them: `FIGURES=folder cargo test --lib figure_tests -- --ignored`.
+/// Writes the figures and a page with all of them where one can look at them:
+/// `FIGURES=folder cargo test --lib figure_tests -- --ignored`.
 #[test]
 #[ignore = "writes files to look at"]
 fn write_the_figures() {
-    if let Some(folder) = std::env::var_os("FIGURES") {
-        for (name, text) in all() {
-            std::fs::write(std::path::Path::new(&folder).join(format!("{name}.svg")), text).unwrap();
-        }
+    let Some(folder) = std::env::var_os("FIGURES") else { return };
+    let folder = std::path::Path::new(&folder);
+    let figures = all();
+    for (name, text) in &figures {
+        std::fs::write(folder.join(format!("{name}.svg")), text).unwrap();
     }
+    let figures: Vec<(&str, &str)> = figures.iter().map(|(name, text)| (*name, text.as_str())).collect();
+    let head = super::html::PageHead {
+        title: "Nitrate at the boreholes of Saltfen, 2025".into(),
+        facts: [
+            ("review", "SF-NO3-2025"),
+            ("period", "2025"),
+            ("status", "final"),
+            ("date", "2026-01-20"),
+            ("stamp", "3f9a 1c20 77be 04d1"),
+        ]
+        .map(|(name, value)| (name.to_owned(), value.to_owned()))
+        .to_vec(),
+        page_label: "SF-NO3-2025 · stamp 3f9a 1c20 77be 04d1".into(),
+        footer: vec!["Saltfen is an invented place.".into(), "End of report SF-NO3-2025.".into()],
+    };
+    let page = super::html::page(include_str!("figure_tests_page.md"), &figures, &head).unwrap();
+    std::fs::write(folder.join("page.html"), page).unwrap();
 }

@@ -9,6 +9,7 @@ pub mod figure_lines;
 pub mod figure_periods;
 pub mod figure_quantiles;
 pub mod figure_rows;
+pub mod html;
 pub mod svg;
 pub mod text;
 
