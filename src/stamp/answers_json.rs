@@ -1,0 +1,368 @@
+//! answers.json: every figure in full precision, in the order of the contract.
+
+use crate::data::Data;
+use crate::findings::{AcrossFindings, Answer, Findings, SeriesFindings, UnderAlternative};
+use crate::plan::{Plan, Status};
+use crate::posterior::Posterior;
+use crate::quantity::{Absent, Scale};
+use crate::questions::figures::{Figures, Item};
+use crate::questions::rule::Given;
+use crate::stamp::json::{Json, Object, reason_against};
+use crate::stamp::laws::{self, LawFigures};
+use toml::de::{DeTable, DeValue};
+
+pub const FORMAT: &str = "reassay-answers/1";
+
+/// The whole of answers.json.
+pub fn answers_json(findings: &Findings) -> Json {
+    let plan = &findings.plan;
+    let series = findings.series.iter().map(|series| one_series(series, plan, &findings.data)).collect();
+    let cautions = findings.cautions.iter().map(|caution| {
+        Object::new()
+            .text("code", caution.code)
+            .text_if("series", caution.series.as_deref())
+            .text_if("question", caution.question.as_deref())
+            .text("text", caution.text.as_str())
+            .done()
+    });
+    Object::new()
+        .text("format", FORMAT)
+        .put("review", review(plan))
+        .put("quantity", quantity(plan))
+        .put("series", Json::List(series))
+        .put("across", Json::List(findings.across.iter().map(across).collect()))
+        .put("cautions", Json::List(cautions.collect()))
+        .put("previous", Object::new().done())
+        .put("numerics", Object::new().number("quadrature_error", findings.quadrature_error).done())
+        .done()
+}
+
+/// "draft", "interim" or "final".
+pub fn status_word(status: Status) -> &'static str {
+    match status {
+        Status::Draft => "draft",
+        Status::Interim => "interim",
+        Status::Final => "final",
+    }
+}
+
+/// "linear" or "log".
+pub fn scale_word(scale: Scale) -> &'static str {
+    match scale {
+        Scale::Linear => "linear",
+        Scale::Log => "log",
+    }
+}
+
+fn review(plan: &Plan) -> Json {
+    let review = &plan.review;
+    Object::new()
+        .text("id", review.id.as_str())
+        .text("title", review.title.as_str())
+        .text("period", review.period.as_str())
+        .text("date", review.date.to_string())
+        .text("status", status_word(review.status))
+        .done()
+}
+
+/// Name, unit and scale of the quantity; the handover says the same.
+pub fn quantity(plan: &Plan) -> Json {
+    Object::new()
+        .text("name", plan.quantity.name.as_str())
+        .text("unit", plan.quantity.unit.as_str())
+        .text("scale", scale_word(plan.quantity.scale))
+        .done()
+}
+
+fn one_series(series: &SeriesFindings, plan: &Plan, data: &Data) -> Json {
+    let prior = Object::new().text("from", series.prior_from.as_str());
+    let prior = put_law(prior, "level", &laws::of_prior(series)).done();
+    let influence = Object::new()
+        .figure("prior_weight", &series.influence.prior_weight)
+        .figure("prior_readings", &series.influence.prior_readings)
+        .done();
+    Object::new()
+        .text("name", series.name.as_str())
+        .put("readings", readings(series, plan, data))
+        .put("prior", prior)
+        .put("posterior", posterior(&series.posterior))
+        .put("influence", influence)
+        .put("answers", Json::List(series.answers.iter().map(answer).collect()))
+        .put("checks", Json::List(series.checks.iter().map(check).collect()))
+        .put("sensitivity", Json::List(series.sensitivity.iter().map(under_alternative).collect()))
+        .done()
+}
+
+fn readings(series: &SeriesFindings, plan: &Plan, data: &Data) -> Json {
+    let found = data.series.iter().find(|own| own.name == series.name);
+    let Some(period) = found.and_then(|own| own.period(&plan.review.period)) else {
+        let none = "no readings in the period under review";
+        let counts = Object::new().whole("n", 0).absent("mean", none).absent("sd", none);
+        return ["marked_below", "marked_above", "missing", "excluded"]
+            .iter()
+            .fold(counts, |object, name| object.whole(name, 0))
+            .done();
+    };
+    let facts = &period.facts;
+    let reason = if facts.marked_below + facts.marked_above > 0 {
+        "some readings are marked"
+    } else if facts.from_summary {
+        "the period is given as a summary without it"
+    } else if facts.n == 0 {
+        "no reading was used"
+    } else {
+        "a single reading"
+    };
+    let plain = |value: Option<f64>| value.ok_or_else(|| Absent::because(reason));
+    Object::new()
+        .whole("n", facts.n)
+        .figure("mean", &plain(facts.mean))
+        .figure("sd", &plain(facts.sd))
+        .whole("marked_below", facts.marked_below)
+        .whole("marked_above", facts.marked_above)
+        .whole("missing", facts.missing)
+        .whole("excluded", facts.excluded)
+        .done()
+}
+
+fn posterior(posterior: &Result<Posterior, Absent>) -> Json {
+    const NAMES: [&str; 6] =
+        ["level", "next_level", "long_run_mean", "within_sd", "between_sd", "next_reading"];
+    match posterior {
+        Ok(posterior) => laws::of_posterior(posterior)
+            .iter()
+            .fold(Object::new(), |object, (name, law)| put_law(object, name, law))
+            .done(),
+        Err(absent) => {
+            NAMES.iter().fold(Object::new(), |object, name| object.absent(name, &absent.reason)).done()
+        }
+    }
+}
+
+fn put_law(object: Object, name: &str, law: &Result<LawFigures, Absent>) -> Object {
+    let law = match law {
+        Ok(law) => law,
+        Err(absent) => return object.absent(name, &absent.reason),
+    };
+    let quantiles =
+        law.quantiles.iter().fold(Object::new(), |object, (name, figure)| object.figure(name, figure));
+    let mut own = Object::new().figure("mean", &law.mean).figure("sd", &law.sd);
+    if let Some((mean, sd)) = &law.logs {
+        own = own.figure("log_mean", mean).figure("log_sd", sd);
+    }
+    object.put(name, own.put("quantiles", quantiles.done()).done())
+}
+
+fn answer(answer: &Answer) -> Json {
+    let mut object = Object::new().text("id", answer.id.as_str()).text("ask", answer.ask.as_str());
+    for (key, value) in &answer.settings {
+        // A setting that has the name of a figure would hide it; the plan holds it too.
+        if answer.figures.get(key).is_none() && !object.has(key) {
+            object = object.put(key, setting(value));
+        }
+    }
+    object = put_figures(object, &answer.figures);
+    object = put_verdict(object, answer.verdict.as_ref());
+    object = put_figures(object, &answer.rule_figures);
+    object
+        .put("prior_only", put_figures(Object::new(), &answer.prior_only).done())
+        .put("readings_only", put_figures(Object::new(), &answer.readings_only).done())
+        .done()
+}
+
+fn put_verdict(mut object: Object, given: Option<&Given>) -> Object {
+    let Some(given) = given else { return object };
+    if let Some(reason) = &given.why {
+        object.because("verdict", reason.as_str());
+    }
+    match &given.say {
+        Some(say) => object.text("verdict", say.as_str()),
+        None => object.put("verdict", Json::Null),
+    }
+    .flag("fail", given.fail)
+}
+
+/// All figures as fields of an object.
+pub fn put_figures(object: Object, figures: &Figures) -> Object {
+    figures.0.iter().fold(object, |object, (name, item)| match item {
+        Item::Number(figure, _) => object.figure(name, figure),
+        Item::Whole(Some(count)) => object.whole(name, *count),
+        Item::Whole(None) => object.absent(name, "there is none"),
+        Item::Numbers(numbers, _) => {
+            let mut object = object;
+            if let Some(reason) = numbers.iter().find_map(|number| reason_against(*number)) {
+                object.because(name, format!("null stands for {reason}"));
+            }
+            object.put(name, Json::List(numbers.iter().map(|number| Json::number(*number)).collect()))
+        }
+        Item::Texts(texts) => object.put(name, Json::List(texts.iter().map(Json::text).collect())),
+        Item::Rows(rows) => {
+            let rows = rows.iter().map(|row| put_figures(Object::new(), row).done());
+            object.put(name, Json::List(rows.collect()))
+        }
+        Item::Text(text) => object.text(name, text.as_str()),
+    })
+}
+
+fn check(check: &crate::checks::Check) -> Json {
+    let reason = check.why.as_deref().unwrap_or("this check has none");
+    let figure = |value: Option<f64>| value.ok_or_else(|| Absent::because(reason));
+    let object = Object::new()
+        .text("id", check.id)
+        .figure("statistic", &figure(check.statistic))
+        .figure("p", &figure(check.p))
+        .flag("flag", check.concern == crate::checks::Concern::Flag);
+    if check.extra.is_empty() {
+        return object.done();
+    }
+    let extra = check.extra.iter().fold(Object::new(), |object, (name, value)| object.number(name, *value));
+    object.put("figures", extra.done()).done()
+}
+
+fn under_alternative(under: &UnderAlternative) -> Json {
+    let answers = under.answers.iter().map(|(id, figures, verdict)| {
+        let object = put_figures(Object::new().text("id", id.as_str()), figures);
+        put_verdict(object, verdict.as_ref()).done()
+    });
+    let mut object = Object::new().text("alternative", under.alternative.as_str());
+    if let Some(reason) = &under.why {
+        object.because("answers", reason.as_str());
+    }
+    object.put("answers", Json::List(answers.collect())).done()
+}
+
+fn across(across: &AcrossFindings) -> Json {
+    let object = Object::new().text("id", across.id.as_str()).text("ask", across.ask.as_str());
+    let object = match across.series.as_slice() {
+        // One answer for all: its figures stand beside the question's id.
+        [(name, figures)] if name.is_empty() => put_figures(object, figures),
+        series => {
+            let rows = series.iter().map(|(name, figures)| {
+                put_figures(Object::new().text("name", name.as_str()), figures).done()
+            });
+            object.put("series", Json::List(rows.collect()))
+        }
+    };
+    put_verdict(object, across.verdict.as_ref()).done()
+}
+
+/// A setting, given as a TOML value; what is none is kept as its text.
+fn setting(written: &str) -> Json {
+    let line = format!("x = {written}");
+    match DeTable::parse(&line) {
+        Ok(table) => {
+            let value = table.get_ref().iter().find(|(key, _)| key.get_ref() == "x");
+            value.map_or_else(|| Json::text(written), |(_, value)| from_toml(value.get_ref()))
+        }
+        Err(_) => Json::text(written),
+    }
+}
+
+fn from_toml(value: &DeValue<'_>) -> Json {
+    match value {
+        DeValue::String(text) => Json::text(text.as_ref()),
+        DeValue::Boolean(flag) => Json::Flag(*flag),
+        DeValue::Integer(whole) => {
+            let digits = whole.as_str().replace('_', "");
+            match u64::from_str_radix(&digits, whole.radix()) {
+                Ok(whole) => Json::Whole(whole),
+                Err(_) => digits.parse().map_or(Json::Null, Json::number),
+            }
+        }
+        DeValue::Float(float) => {
+            let number = float.as_str().replace('_', "").parse().unwrap_or(f64::NAN);
+            // A spec may say `inf`, JSON may not.
+            if f64::is_finite(number) { Json::number(number) } else { Json::text(float.as_str()) }
+        }
+        DeValue::Datetime(date) => Json::text(date.to_string()),
+        DeValue::Array(items) => Json::List(items.iter().map(|item| from_toml(item.get_ref())).collect()),
+        DeValue::Table(table) => {
+            let field = |key: &str, value| (key.to_string(), from_toml(value));
+            Json::Object(table.iter().map(|(key, value)| field(key.get_ref(), value.get_ref())).collect())
+        }
+    }
+}
+
+#[cfg(test)]
+mod tests {
+    use super::*;
+    use crate::questions::figures::Meaning;
+    use proptest::prelude::*;
+
+    #[test]
+    fn settings_become_json_values() {
+        assert_eq!(setting("0.95").to_line(), "0.95");
+        assert_eq!(setting("12").to_line(), "12");
+        assert_eq!(setting("-3").to_line(), "-3.0");
+        assert_eq!(setting("\"central\"").to_line(), "\"central\"");
+        assert_eq!(setting("[25.0, 50.0]").to_line(), "[25.0, 50.0]");
+        assert_eq!(setting("true").to_line(), "true");
+        assert_eq!(setting("inf").to_line(), "\"inf\"");
+        assert_eq!(setting("not a value").to_line(), "\"not a value\"");
+    }
+
+    #[test]
+    fn an_absent_figure_is_null_with_its_reason() {
+        let figures = Figures::default()
+            .number("estimate", Ok(44.25), Meaning::Value)
+            .number("lower", Err(Absent::because("an upper bound has no lower end")), Meaning::Value)
+            .with("chances", Item::Numbers(vec![0.5, f64::NAN], Meaning::Chance));
+        assert_eq!(
+            put_figures(Object::new(), &figures).done().to_line(),
+            "{\"estimate\": 44.25, \"lower\": null, \"chances\": [0.5, null], \
+             \"why\": {\"lower\": \"an upper bound has no lower end\", \"chances\": \"null stands for undefined\"}}"
+        );
+    }
+
+    #[test]
+    fn a_verdict_held_back_says_why() {
+        let given =
+            Given { say: Some("not decided".into()), fail: false, why: Some("prior conflict".into()) };
+        assert_eq!(
+            put_verdict(Object::new(), Some(&given)).done().to_line(),
+            "{\"verdict\": \"not decided\", \"fail\": false, \"why\": {\"verdict\": \"prior conflict\"}}"
+        );
+    }
+
+    pub fn any_figures() -> impl Strategy<Value = Figures> {
+        const NAMES: [&str; 6] = ["estimate", "lower", "upper", "chance", "chances", "table"];
+        let number = prop_oneof![
+            any::<f64>(),
+            Just(f64::NAN),
+            Just(f64::INFINITY),
+            Just(f64::NEG_INFINITY),
+            Just(-0.0),
+            Just(5e-324),
+            Just(f64::MAX),
+        ];
+        let figure =
+            prop_oneof![number.clone().prop_map(Ok), ".{0,9}".prop_map(|why| Err(Absent::because(why)))];
+        let item = prop_oneof![
+            figure.prop_map(|figure| Item::Number(figure, Meaning::Value)),
+            any::<Option<u64>>().prop_map(Item::Whole),
+            prop::collection::vec(number, 0..4).prop_map(|numbers| Item::Numbers(numbers, Meaning::Chance)),
+            prop::collection::vec(".{0,9}", 0..3).prop_map(Item::Texts),
+            ".{0,9}".prop_map(Item::Text),
+        ];
+        let row = prop::collection::vec(item.clone(), 0..4)
+            .prop_map(|items| Figures(NAMES.into_iter().zip(items).collect()));
+        let items = prop_oneof![item, prop::collection::vec(row, 0..3).prop_map(Item::Rows)];
+        prop::collection::vec(items, 0..6).prop_map(|items| Figures(NAMES.into_iter().zip(items).collect()))
+    }
+
+    proptest! {
+        #[test]
+        fn any_figures_give_valid_json(figures in any_figures()) {
+            let json = put_figures(Object::new(), &figures).done();
+            prop_assert_eq!(Json::read(&json.to_file()), Ok(json.clone()));
+            let read: serde_json::Value = serde_json::from_str(&json.to_line()).unwrap();
+            prop_assert!(read.is_object());
+            for (name, item) in &figures.0 {
+                if let Item::Number(Ok(number), _) = item {
+                    let back = json.get(name).and_then(Json::as_f64).map(f64::to_bits);
+                    prop_assert_eq!(back, number.is_finite().then(|| number.to_bits()));
+                }
+            }
+        }
+    }
+}
