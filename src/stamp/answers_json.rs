@@ -65,8 +65,7 @@ fn review(plan: &Plan) -> Json {
         .done()
 }
 
-/// Name, unit and scale of the quantity; the handover says the same.
-pub fn quantity(plan: &Plan) -> Json {
+fn quantity(plan: &Plan) -> Json {
     Object::new()
         .text("name", plan.quantity.name.as_str())
         .text("unit", plan.quantity.unit.as_str())
