@@ -134,7 +134,12 @@ impl Frame {
         let title = if y.title.is_empty() { 0 } else { 22 * UNIT };
         let margins = Margins {
             left: widest.max(8 * UNIT) + 14 * UNIT,
-            right: 18 * UNIT,
+            // Half of the last name of the horizontal axis may reach beyond the plot.
+            right: x
+                .ticks
+                .last()
+                .map_or(0, |(_, text)| text_width(text, LETTERS) / 2 + 4 * UNIT)
+                .max(18 * UNIT),
             top: 10 * UNIT + title + strip,
             bottom: 28 * UNIT + if x.title.is_empty() { 0 } else { 20 * UNIT },
         };

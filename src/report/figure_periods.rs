@@ -85,6 +85,16 @@ pub fn periods(figure: &PeriodsFigure) -> Result<String, FigureError> {
             legend.push(Entry { sample: Sample::Line(Ink::Limit), text: mark.label.clone() });
         }
     }
+    for mark in figure.limits.iter().filter(|mark| mark.value.is_finite() && !frame.shows_y(mark.value)) {
+        let above = mark.value > frame.y.high;
+        let text = format!("{} {}", mark.label, if above { '↑' } else { '↓' });
+        let y = if above { plot.top + 11 * UNIT } else { plot.bottom - 11 * UNIT };
+        let spots = [(plot.right - 4 * UNIT, Side::End), (plot.left + 6 * UNIT, Side::Start)]
+            .map(|(x, side)| Spot { x, y, side });
+        if !labels.place_within(plot, &text, Ink::Limit, true, spots) {
+            legend.push(Entry { sample: Sample::Line(Ink::Limit), text });
+        }
+    }
     for mark in figure.events.iter().filter(|mark| frame.shows_x(mark.value)) {
         let spots = frame.spots_above(mark.value, rows_above(&figure.events, &frame.x));
         if !labels.place(&mark.label, Ink::Event, false, spots) {
@@ -156,7 +166,7 @@ fn frame(figure: &PeriodsFigure) -> Result<Frame, FigureError> {
     let mut shown: Vec<f64> = values(figure).into_iter().filter(|value| value.is_finite()).collect();
     let low = shown.iter().copied().reduce(f64::min).ok_or(FigureError::NothingToDraw)?;
     let high = shown.iter().copied().reduce(f64::max).ok_or(FigureError::NothingToDraw)?;
-    // A limit far from everything else would flatten the rest; it is then named in the report, not drawn.
+    // A limit far from everything else would flatten the rest; it is then named at the edge with an arrow.
     let reach = if high > low { 1.5 * (high - low) } else { 0.2 * high.abs() };
     let near = |value: &f64| *value >= low - reach && *value <= high + reach;
     shown.extend(figure.limits.iter().map(|mark| mark.value).filter(near));

@@ -229,6 +229,18 @@ fn every_label_of_limits_and_events_appears_however_many() {
 }
 
 #[test]
+fn limits_out_of_reach_are_named_at_the_edge() {
+    let mut figure = periods_example();
+    figure.limits = vec![mark(500.0, "far limit"), mark(-500.0, "low limit")];
+    let text = periods(&figure).unwrap();
+    assert!(text.contains(">far limit ↑</text>") && text.contains(">low limit ↓</text>"));
+    let mut figure = level_example();
+    figure.limits = vec![mark(500.0, "far limit"), mark(-500.0, "low limit")];
+    let text = level(&figure).unwrap();
+    assert!(text.contains(">far limit →</text>") && text.contains(">← low limit</text>"));
+}
+
+#[test]
 fn values_of_extreme_size_and_none() {
     let mut figure = level_example();
     figure.prior = None;
