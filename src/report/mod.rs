@@ -13,5 +13,14 @@ pub mod html;
 pub mod svg;
 pub mod text;
 
+/// A report as its files hold it.
+#[derive(Debug, Clone, Default, PartialEq, Eq)]
+pub struct Rendered {
+    pub markdown: String,
+    pub html: String,
+    /// The figures by the name of their file, which the Markdown shows; each a whole SVG.
+    pub figures: Vec<(String, String)>,
+}
+
 #[cfg(test)]
 mod figure_tests;
