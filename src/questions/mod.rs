@@ -10,12 +10,16 @@ pub mod steps;
 pub mod terms;
 
 pub mod characteristic_value;
+pub mod classes;
+pub mod count_beyond;
 pub mod level_chance;
 pub mod level_interval;
 pub mod percentile;
+pub mod period_mean;
 pub mod reading_chance;
 pub mod reading_interval;
 pub mod readings_beyond;
+pub mod sd_interval;
 pub mod share_beyond;
 
 use crate::data::{PeriodData, SeriesData};
@@ -45,10 +49,14 @@ pub const ALL: &[QuestionKind] = &[
     level_chance::KIND,
     reading_interval::KIND,
     reading_chance::KIND,
+    count_beyond::KIND,
     readings_beyond::KIND,
     share_beyond::KIND,
     percentile::KIND,
     characteristic_value::KIND,
+    period_mean::KIND,
+    classes::KIND,
+    sd_interval::KIND,
 ];
 
 /// A question, read and ready to be asked of any series.

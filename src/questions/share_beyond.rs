@@ -16,7 +16,7 @@
 //!
 //! A worked number: prior N(40, 2²), σ = 1.5, six readings of mean 43.1, L = 45: m = 42.834286, √v =
 //! 0.585540; the mean is 0.089318, and the upper 95 % bound solves 45 − z_{1−p} · 1.5 − 42.834286 =
-//! 1.644854 · 0.585540, so z_{1−p} = 0.801723 and p = 0.21136.
+//! 1.644854 · 0.585540, so z_{1−p} = 0.801724 and p = 0.21136.
 
 use super::beyond::{self, ANY_SIDE, About, Asked};
 use super::figures::{Figures, Meaning};
