@@ -4,10 +4,14 @@
 pub mod figures;
 pub mod rule;
 
+pub mod acceptance;
 pub mod beyond;
 pub mod binomial;
+pub mod moved;
+pub mod risks;
 pub mod steps;
 pub mod terms;
+pub mod tipping;
 
 pub mod characteristic_value;
 pub mod classes;

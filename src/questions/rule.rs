@@ -78,7 +78,7 @@ fn holds(condition: Condition, figure: f64, threshold: f64) -> bool {
 }
 
 /// The figure of that name, or why it does not exist.
-fn figure(figures: &Figures, name: &str) -> Figure {
+pub fn figure(figures: &Figures, name: &str) -> Figure {
     match figures.get(name) {
         Some(Item::Number(figure, _)) => figure.clone(),
         Some(Item::Whole(Some(count))) => Ok(*count as f64),
