@@ -1,12 +1,34 @@
 //! Stage 5: the model updated by the readings, as a mixture of normal pieces or, with marked
 //! readings, as densities on nodes; one interface that answers see.
 
+mod about_mean;
+mod axis;
+mod between;
+mod build;
+mod grid;
 pub mod law;
+mod legendre;
+mod marginal;
+mod moments;
+mod plane;
+mod shapes;
+mod solve;
+mod told;
+mod units;
+mod walk;
+mod weighing;
+#[cfg(test)]
+mod published;
 
 use crate::data::evidence::Evidence;
+use crate::math::fm;
+use crate::math::mixture::NormalMixture;
 use crate::prior::Model;
 use crate::quantity::{Absent, Figure};
 pub use law::Law;
+use moments::moment;
+pub use solve::solve;
+use std::sync::Arc;
 
 /// Which knowledge goes in.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
@@ -30,16 +52,19 @@ pub struct Piece {
     pub weight: f64,
     pub level_mean: f64,
     pub level_var: f64,
-    /// σ.
+    /// σ; NaN where nothing is known of it.
     pub reading_sd: f64,
     pub periods: Option<PeriodsPart>,
 }
 
+/// The long-run mean N(mean, var); in a random walk the level itself.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct PeriodsPart {
     pub long_run_mean: f64,
     pub long_run_var: f64,
     pub between_sd: f64,
+    /// σ of the history: the piece's own, unless within is from this period's readings.
+    pub history_sd: f64,
 }
 
 /// What is known of one series, under one basis. All laws are on the model's scale.
@@ -48,25 +73,31 @@ pub struct Posterior {
     pub model: Model,
     pub readings: Evidence,
     pub basis: Basis,
-    /// Empty where the level is held as a density (marked readings).
+    /// Given each node of (σ, τ), the level as measured; with marked readings also each node of the level,
+    /// with variance 0.
     pub pieces: Vec<Piece>,
     /// Largest relative error reached by the quadratures, 0 for closed forms.
     pub quadrature_error: f64,
-}
-
-/// Updates the model by the readings.
-///
-/// `Basis::PriorOnly` leaves the readings out, `Basis::ReadingsOnly` puts a flat prior in the place
-/// of the level's prior (the within sd stays as the model has it).
-pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posterior, Absent> {
-    let _ = (model, readings, basis);
-    Err(Absent::because("not computed"))
+    inner: Arc<solve::Inner>,
 }
 
 impl Posterior {
     /// The true level (a stated bias taken out) of a period, or the long-run mean.
     pub fn level(&self, when: When) -> Result<Law, Absent> {
-        self.affine(when, 1.0, &|_| (0.0, 0.0))
+        if self.inner.bias_sd == 0.0 {
+            return self.affine(when, 1.0, &|_| (0.0, 0.0));
+        }
+        self.models(when)?;
+        let parts = self.pieces.iter().zip(&self.inner.true_levels).map(|(piece, level)| {
+            let (mean, var) = match when {
+                When::This => level.this,
+                When::LongRun => level.long_run,
+                When::Next => level.next,
+            };
+            (piece.weight, mean, var)
+        });
+        let bound = self.bound(when);
+        mixture(parts.collect(), bound, self.name(when))
     }
 
     /// The law of `factor`·θ + shift(σ) + N(0, variance(σ)), θ the level as measured in that period:
@@ -77,8 +108,24 @@ impl Posterior {
         factor: f64,
         shift_and_variance: &dyn Fn(f64) -> (f64, f64),
     ) -> Result<Law, Absent> {
-        let _ = (when, factor, shift_and_variance);
-        Err(Absent::because("not computed"))
+        self.models(when)?;
+        let uses_sd = {
+            let size = self.pieces.iter().map(|p| p.reading_sd).find(|s| *s > 0.0).unwrap_or(1.0);
+            shift_and_variance(size) != shift_and_variance(2.0 * size)
+        };
+        if uses_sd && let Some(reason) = &self.inner.no_sd {
+            return Err(reason.clone());
+        }
+        let parts = self.pieces.iter().map(|piece| {
+            let (mean, var) = piece.level(when);
+            let (shift, added) = shift_and_variance(piece.reading_sd);
+            (piece.weight, factor * mean + shift, factor * factor * var + added)
+        });
+        let mut bound = self.bound(when);
+        if uses_sd {
+            bound = bound.min(self.inner.bounds.sd);
+        }
+        mixture(parts.collect(), bound, if uses_sd { "a reading" } else { self.name(when) })
     }
 
     /// The mean of the next `mean_of` readings; `uncertainty` is each one's own, where σ is none.
@@ -88,22 +135,135 @@ impl Posterior {
         self.affine(when, 1.0, &|sigma| (0.0, (sigma * sigma + own * own) / m))
     }
 
-    /// E g(θ, σ), θ as measured.
+    /// E g(θ, σ), θ as measured: trapezoid in the standard score of every piece, halved until two agree.
     pub fn expect(&self, when: When, g: &dyn Fn(f64, f64) -> f64) -> Figure {
-        let _ = (when, g);
-        Err(Absent::because("not computed"))
+        self.models(when)?;
+        if let Some(reason) = &self.inner.no_sd {
+            return Err(reason.clone());
+        }
+        const REACH: f64 = 15.0;
+        let sum = |step: f64, offset: f64| {
+            let half = (REACH / step) as i64;
+            let mut total = 0.0;
+            for piece in &self.pieces {
+                let (mean, var) = piece.level(when);
+                if var == 0.0 {
+                    total += piece.weight * g(mean, piece.reading_sd) / step;
+                    continue;
+                }
+                let sd = var.sqrt();
+                let mut inner = 0.0;
+                for i in -half..=half {
+                    let z = (i as f64 + offset) * step;
+                    inner += fm::exp(-0.5 * z * z) * g(mean + sd * z, piece.reading_sd);
+                }
+                total += piece.weight * inner * fm::INV_SQRT_TWO_PI;
+            }
+            total * step
+        };
+        let mut step = 0.5;
+        let mut value = sum(step, 0.0);
+        for _ in 0..9 {
+            // The points between: their mean with the old ones is the halved rule.
+            let finer = 0.5 * (value + sum(step, 0.5));
+            if !finer.is_finite() {
+                return Err(Absent::failed("an expectation over the posterior is not a number"));
+            }
+            if (finer - value).abs() <= 1e-11 * finer.abs() || finer.abs() < 1e-290 {
+                return Ok(finer);
+            }
+            value = finer;
+            step *= 0.5;
+        }
+        Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
     }
 
+    /// The within sd σ.
     pub fn within_sd(&self) -> Result<Law, Absent> {
-        Err(Absent::because("not computed"))
+        self.inner.within_sd()
     }
 
+    /// The between sd τ (random walk: of one step).
     pub fn between_sd(&self) -> Result<Law, Absent> {
-        Err(Absent::because("not computed"))
+        self.inner.between_sd()
     }
 
     /// Share of the answer that comes from the prior, Σ w B.
     pub fn prior_weight(&self) -> Figure {
-        Err(Absent::because("not computed"))
+        match self.basis {
+            Basis::PriorOnly => Ok(1.0),
+            Basis::ReadingsOnly => Ok(0.0),
+            Basis::Both => {
+                Ok(self.pieces.iter().zip(&self.inner.prior_shares).map(|(p, b)| p.weight * b).sum())
+            }
+        }
     }
+
+    /// How many readings the prior is worth: n B/(1 − B).
+    pub fn prior_readings(&self) -> Figure {
+        let n = match self.readings.n() {
+            None => return Err(Absent::because("this period is given by its mean, not by counted readings")),
+            Some(0) => return Err(Absent::because("there is no reading to weigh the prior against")),
+            Some(n) => n as f64,
+        };
+        let share = self.prior_weight()?;
+        if share >= 1.0 {
+            return Err(Absent::because("the readings have no weight"));
+        }
+        Ok(n * share / (1.0 - share))
+    }
+
+    /// Whether a level of that kind is part of the model.
+    fn models(&self, when: When) -> Result<(), Absent> {
+        match when {
+            When::This => Ok(()),
+            When::Next if self.inner.has_next => Ok(()),
+            When::LongRun if self.inner.has_long_run => Ok(()),
+            When::LongRun if self.inner.has_next => {
+                Err(Absent::because("a random walk has no long-run mean"))
+            }
+            When::Next => Err(Absent::because(
+                "the prior is about this period's level only, so nothing is known of the next period's: a history, or a stated long run with its between sd, would say it",
+            )),
+            When::LongRun => Err(Absent::because(
+                "the prior is about this period's level only, so there is no long-run mean: a history, or a stated long run with its between sd, would give one",
+            )),
+        }
+    }
+
+    fn bound(&self, when: When) -> f64 {
+        match when {
+            When::This => self.inner.bounds.level,
+            When::Next => self.inner.bounds.next,
+            When::LongRun => self.inner.bounds.long_run,
+        }
+    }
+
+    fn name(&self, when: When) -> &'static str {
+        match when {
+            When::This => "the level",
+            When::Next => "the next level",
+            When::LongRun => "the long-run mean",
+        }
+    }
+}
+
+impl Piece {
+    /// The level of a period, or the long-run mean: mean and variance.
+    fn level(&self, when: When) -> (f64, f64) {
+        match (when, self.periods) {
+            (When::This, _) | (_, None) => (self.level_mean, self.level_var),
+            (When::Next, Some(p)) => (p.long_run_mean, p.long_run_var + p.between_sd * p.between_sd),
+            (When::LongRun, Some(p)) => (p.long_run_mean, p.long_run_var),
+        }
+    }
+}
+
+/// A law from (weight, mean, variance), with the moments below `bound`.
+fn mixture(parts: Vec<(f64, f64, f64)>, bound: f64, what: &str) -> Result<Law, Absent> {
+    let shape = NormalMixture::new(parts.into_iter().map(|(w, m, v)| (w, m, v.sqrt())).collect())
+        .map_err(grid::failed)?;
+    let mean = moment(1.0, bound, what, || shape.mean());
+    let sd = moment(2.0, bound, what, || shape.variance().sqrt());
+    Ok(Law::new(Arc::new(shapes::Mixture(shape)), mean, sd))
 }

@@ -1,0 +1,137 @@
+//! The law of σ or τ: its marginal density over the plane of spreads, integrated on panels of its
+//! logarithm by a rule of its own.
+
+use super::build::Part;
+use super::grid::{self, MOST, Place};
+use super::legendre::Panels;
+use super::plane::{BetweenSd, Coordinate, Sd};
+use super::weighing::Weighed;
+use crate::math::{fm, roots};
+use crate::quantity::Absent;
+
+/// How far below its top the marginal density is followed: 1e-19.
+const DEPTH: f64 = 44.0;
+
+/// A part with its nodes and its share of the whole.
+pub(super) struct Weighted<'a> {
+    pub part: &'a Part,
+    pub weighed: &'a Weighed,
+    pub share: f64,
+}
+
+/// ln density of x = ln spread (inner units) within one part; `None` where the part has no such axis.
+fn ln_density(weighted: &Weighted<'_>, wanted: Coordinate, x: f64) -> Result<f64, Absent> {
+    let plane = &weighted.part.plane;
+    let frame = &weighted.weighed.frame;
+    let coordinates = plane.coordinates();
+    let Some(d) = coordinates.iter().position(|c| *c == wanted) else {
+        return Err(Absent::failed("a part of the prior has no such spread"));
+    };
+    let spread = fm::exp(x);
+    let (u, slope) = match (wanted, &plane.between, plane.history_sd.unwrap_or(plane.sd), plane.sd) {
+        (Coordinate::Between, BetweenSd::Unknown(axis), _, _) => {
+            let u = axis.coordinate(spread);
+            (u, axis.slope(u))
+        }
+        (Coordinate::HistorySd, _, Sd::Unknown(axis), _) | (Coordinate::Sd, _, _, Sd::Unknown(axis)) => {
+            let u = axis.coordinate(spread);
+            (u, axis.slope(u))
+        }
+        _ => return Err(Absent::failed("a part of the prior has no such spread")),
+    };
+    let mut rest = frame.clone();
+    rest.dims = frame.dims - 1;
+    for i in d..rest.dims {
+        rest.centre[i] = frame.centre[i + 1];
+        rest.width[i] = frame.width[i + 1];
+    }
+    let f = |place: &Place| {
+        let mut whole = [0.0; MOST];
+        whole[..d].copy_from_slice(&place[..d]);
+        whole[d] = u;
+        whole[d + 1..frame.dims].copy_from_slice(&place[d..rest.dims]);
+        plane.node(&whole)
+    };
+    let ln = if rest.dims == 0 {
+        f(&[0.0; MOST]).ln_weight
+    } else {
+        // The line's own top, not the plane's, decides what is negligible on it.
+        rest.ln_top = f64::NEG_INFINITY;
+        let factor = weighted.weighed.factor;
+        let nodes = grid::sweep(&f, &rest, factor, 0.0, 40.0)?;
+        if nodes.is_empty() { f64::NEG_INFINITY } else { grid::ln_integral(&nodes, &rest, factor) }
+    };
+    Ok(ln - fm::ln(slope) - weighted.weighed.ln_integral)
+}
+
+/// The density of x = ln spread over all parts, on panels.
+pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate) -> Result<Panels, Absent> {
+    let trouble = std::cell::RefCell::new(None);
+    let ln_all = |x: f64| {
+        let mut total = f64::NEG_INFINITY;
+        for weighted in parts.iter().filter(|w| w.share > 0.0) {
+            match ln_density(weighted, wanted, x) {
+                Ok(ln) => total = fm::ln_add_exp(total, fm::ln(weighted.share) + ln),
+                Err(e) => {
+                    trouble.borrow_mut().get_or_insert(e);
+                    return f64::NAN;
+                }
+            }
+        }
+        total
+    };
+    // Begin at the spread of the heaviest node.
+    let mut start = None;
+    let mut best = f64::NEG_INFINITY;
+    for weighted in parts {
+        for node in &weighted.weighed.nodes {
+            let ln = node.ln_weight - weighted.weighed.ln_integral + fm::ln(weighted.share);
+            let spread = match wanted {
+                Coordinate::Between => node.tau,
+                Coordinate::HistorySd => node.history_sigma,
+                Coordinate::Sd => node.sigma,
+            };
+            if ln > best && spread > 0.0 {
+                best = ln;
+                start = Some(fm::ln(spread));
+            }
+        }
+    }
+    let start = start.ok_or_else(|| Absent::failed("a spread has no node"))?;
+    let mode = roots::mode(ln_all, start, 0.3);
+    if let Some(e) = trouble.borrow_mut().take() {
+        return Err(e);
+    }
+    let mode = mode.map_err(grid::failed)?;
+    let edge = |width: f64| {
+        let mut edges = Vec::new();
+        let mut step = width;
+        let mut x = mode.x;
+        for _ in 0..200 {
+            x += step;
+            edges.push(x);
+            let ln = ln_all(x);
+            if ln.is_nan() || ln <= mode.ln_height - DEPTH {
+                break;
+            }
+            step *= 1.3;
+        }
+        edges
+    };
+    let mut edges: Vec<f64> = edge(-1.5 * mode.left).into_iter().rev().collect();
+    edges.push(mode.x);
+    edges.extend(edge(1.5 * mode.right));
+    let made = Panels::new(&|x| fm::exp(ln_all(x)), &edges);
+    if let Some(e) = trouble.borrow_mut().take() {
+        return Err(e);
+    }
+    let made = made?;
+    // Two roads to one number: the panels' whole mass against the grid's.
+    if (made.total() - 1.0).abs() > 1e-9 {
+        return Err(Absent::failed(format!(
+            "the density of a spread integrates to {} by panels, not to 1",
+            made.total()
+        )));
+    }
+    Ok(made)
+}

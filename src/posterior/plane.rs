@@ -1,0 +1,284 @@
+//! The plane of spreads: for every σ and τ the weight that prior, history and readings leave it, and the
+//! normal piece of the level there. Everything a posterior answers is a sum over its nodes. Inner units.
+
+use super::about_mean::AboutMean;
+use super::axis::{SdAxis, TauAxis};
+use super::grid::{MOST, Place, Weighted};
+use super::told::Told;
+use super::walk::Walk;
+use crate::math::fm;
+
+/// A within sd: known, unknown with its axis, or not spoken of at all.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) enum Sd {
+    Fixed(f64),
+    Unknown(SdAxis),
+    Undefined,
+}
+
+/// The between sd.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) enum BetweenSd {
+    Fixed(f64),
+    Unknown(TauAxis),
+}
+
+/// The prior of the level as measured, given σ and τ.
+#[derive(Debug, Clone, PartialEq)]
+pub(super) enum Level {
+    Flat,
+    Normal {
+        mean: f64,
+        var: f64,
+    },
+    /// N(mean, σ²/readings + extra); `periods`: it stands for periods that share one level (τ = 0).
+    PerReading {
+        mean: f64,
+        readings: f64,
+        extra: f64,
+        periods: bool,
+    },
+    /// Long-run mean N(mean, var).
+    LongRun {
+        mean: f64,
+        var: f64,
+    },
+    /// The long-run mean's variance is divided by `share` (weight of history).
+    AboutMean {
+        periods: AboutMean,
+        share: f64,
+    },
+    Walk(Walk),
+}
+
+/// Pieces N(m, v) become N(centre + stretch (m − centre) + shift, stretch² v).
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Move {
+    pub centre: f64,
+    pub stretch: f64,
+    pub shift: f64,
+}
+
+impl Move {
+    pub fn mean(&self, m: f64) -> f64 {
+        self.centre + self.stretch * (m - self.centre) + self.shift
+    }
+
+    pub fn var(&self, v: f64) -> f64 {
+        self.stretch * self.stretch * v
+    }
+}
+
+#[derive(Debug, Clone, PartialEq)]
+pub(super) struct Plane {
+    /// σ of the history where it is another than this period's; its axis comes first.
+    pub history_sd: Option<Sd>,
+    pub sd: Sd,
+    pub between: BetweenSd,
+    pub level: Level,
+    pub moved: Option<Move>,
+    pub readings: Told,
+}
+
+/// One node: its weight and the level's piece N(mean, var) there.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Node {
+    pub ln_weight: f64,
+    pub sigma: f64,
+    pub history_sigma: f64,
+    pub tau: f64,
+    pub mean: f64,
+    pub var: f64,
+    /// Long-run mean N(long_mean, long_var); for a walk the level itself. NaN where there is none.
+    pub long_mean: f64,
+    pub long_var: f64,
+    /// The level's prior before this period's readings; var is infinite where flat.
+    pub prior_mean: f64,
+    pub prior_var: f64,
+}
+
+impl Weighted for Node {
+    fn ln_weight(&self) -> f64 {
+        self.ln_weight
+    }
+}
+
+/// What a coordinate of the plane is.
+#[derive(Debug, Clone, Copy, PartialEq, Eq)]
+pub(super) enum Coordinate {
+    HistorySd,
+    Between,
+    Sd,
+}
+
+impl Plane {
+    /// The coordinates in use, in order.
+    pub fn coordinates(&self) -> Vec<Coordinate> {
+        let mut all = Vec::with_capacity(MOST);
+        match self.history_sd {
+            Some(Sd::Unknown(_)) => all.push(Coordinate::HistorySd),
+            None if matches!(self.sd, Sd::Unknown(_)) => all.push(Coordinate::Sd),
+            _ => {}
+        }
+        if matches!(self.between, BetweenSd::Unknown(_)) {
+            all.push(Coordinate::Between);
+        }
+        if self.history_sd.is_some() && matches!(self.sd, Sd::Unknown(_)) {
+            all.push(Coordinate::Sd);
+        }
+        all
+    }
+
+    /// A place to begin the search for the highest weight.
+    pub fn start(&self) -> Place {
+        let mut place = [0.0; MOST];
+        for (d, coordinate) in self.coordinates().into_iter().enumerate() {
+            place[d] = match coordinate {
+                Coordinate::Between => 1.0,
+                Coordinate::HistorySd | Coordinate::Sd => 0.0,
+            };
+        }
+        place
+    }
+
+    /// What the axes' weights leave out, for comparing models.
+    pub fn ln_constant(&self) -> f64 {
+        let of = |sd: &Sd| if let Sd::Unknown(axis) = sd { axis.ln_constant() } else { 0.0 };
+        of(&self.sd) + self.history_sd.as_ref().map_or(0.0, of)
+    }
+
+    /// The node at these coordinates.
+    pub fn node(&self, place: &Place) -> Node {
+        let mut next = 0;
+        let mut ln_weight = 0.0;
+        let history_sigma = sigma_at(self.history_sd.unwrap_or(self.sd), place, &mut next, &mut ln_weight);
+        let tau = match self.between {
+            BetweenSd::Fixed(tau) => tau,
+            BetweenSd::Unknown(axis) => {
+                let (tau, ln_density) = axis.at(place[next]);
+                next += 1;
+                ln_weight += ln_density;
+                tau
+            }
+        };
+        let sigma = match self.history_sd {
+            None => history_sigma,
+            Some(_) => sigma_at(self.sd, place, &mut next, &mut ln_weight),
+        };
+        let mut node = Node {
+            ln_weight,
+            sigma,
+            history_sigma,
+            tau,
+            mean: f64::NAN,
+            var: f64::INFINITY,
+            long_mean: f64::NAN,
+            long_var: f64::NAN,
+            prior_mean: f64::NAN,
+            prior_var: f64::INFINITY,
+        };
+        if ln_weight > f64::NEG_INFINITY {
+            self.prior(&mut node);
+            self.update(&mut node);
+            if node.ln_weight.is_nan() && (sigma == 0.0 || history_sigma == 0.0) {
+                node.ln_weight = f64::NEG_INFINITY;
+            }
+        }
+        node
+    }
+
+    /// The level before this period's readings.
+    fn prior(&self, node: &mut Node) {
+        let (sigma2, history2, tau2) =
+            (node.sigma * node.sigma, node.history_sigma * node.history_sigma, node.tau * node.tau);
+        match &self.level {
+            Level::Flat => {}
+            Level::Normal { mean, var } => {
+                node.mean = *mean;
+                node.var = *var;
+            }
+            Level::PerReading { mean, readings, extra, periods } => {
+                node.mean = *mean;
+                node.var = sigma2 / readings + extra;
+                if *periods {
+                    node.long_mean = node.mean;
+                    node.long_var = node.var;
+                }
+            }
+            Level::LongRun { mean, var } => {
+                node.long_mean = *mean;
+                node.long_var = *var;
+                node.mean = *mean;
+                node.var = var + tau2;
+            }
+            Level::AboutMean { periods, share } => {
+                let long = periods.at(history2, tau2);
+                node.ln_weight += long.ln_weight;
+                node.long_mean = long.mean;
+                node.long_var = long.var / share;
+                node.mean = long.mean;
+                node.var = node.long_var + tau2;
+            }
+            Level::Walk(walk) => {
+                let last = walk.at(history2, tau2);
+                node.ln_weight += last.ln_weight;
+                node.mean = last.mean;
+                node.var = last.var + walk.last_gap * tau2;
+                node.long_mean = node.mean;
+                node.long_var = node.var;
+            }
+        }
+        if let Some(moved) = &self.moved {
+            node.mean = moved.mean(node.mean);
+            node.var = moved.var(node.var);
+            node.long_mean = moved.mean(node.long_mean);
+            node.long_var = moved.var(node.long_var);
+            node.tau *= moved.stretch;
+        }
+        node.prior_mean = node.mean;
+        node.prior_var = node.var;
+    }
+
+    /// Methods §1: the level, the long-run mean and the weight, updated by the readings.
+    fn update(&self, node: &mut Node) {
+        let Some(at) = self.readings.at(node.sigma * node.sigma) else { return };
+        node.ln_weight += at.ln_factor;
+        if node.prior_var == f64::INFINITY {
+            node.mean = at.mean;
+            node.var = at.var;
+            return;
+        }
+        let total = node.prior_var + at.var;
+        let error = at.mean - node.prior_mean;
+        node.ln_weight -= 0.5 * (fm::ln(total) + error * error / total);
+        node.mean = node.prior_mean + node.prior_var / total * error;
+        node.var = node.prior_var * (at.var / total);
+        if self.is_walk() {
+            node.long_mean = node.mean;
+            node.long_var = node.var;
+        } else {
+            // The readings speak of the long-run mean with variance τ² + s².
+            let long_total = node.long_var + (node.tau * node.tau + at.var);
+            node.long_mean += node.long_var / long_total * (at.mean - node.long_mean);
+            node.long_var *= (node.tau * node.tau + at.var) / long_total;
+        }
+    }
+
+    pub fn is_walk(&self) -> bool {
+        matches!(self.level, Level::Walk(_))
+    }
+}
+
+/// σ, taking a coordinate where it is unknown.
+fn sigma_at(sd: Sd, place: &Place, next: &mut usize, ln_weight: &mut f64) -> f64 {
+    match sd {
+        Sd::Fixed(sigma) => sigma,
+        Sd::Undefined => f64::NAN,
+        Sd::Unknown(axis) => {
+            let (sigma, ln_density) = axis.at(place[*next]);
+            *next += 1;
+            *ln_weight += ln_density;
+            sigma
+        }
+    }
+}

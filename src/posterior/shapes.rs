@@ -1,0 +1,77 @@
+//! The shapes a law can have: a mixture of normals, and a spread kept on panels of its logarithm.
+
+use super::grid::failed;
+use super::law::Continuous;
+use super::legendre::Panels;
+use crate::math::fm;
+use crate::math::mixture::NormalMixture;
+use crate::quantity::{Absent, Figure};
+
+#[derive(Debug)]
+pub(super) struct Mixture(pub NormalMixture);
+
+impl Continuous for Mixture {
+    fn cdf(&self, t: f64) -> f64 {
+        self.0.cdf(t)
+    }
+
+    fn sf(&self, t: f64) -> f64 {
+        self.0.sf(t)
+    }
+
+    fn density(&self, t: f64) -> f64 {
+        self.0.pdf(t)
+    }
+
+    fn quantile(&self, p: f64) -> Figure {
+        self.0.quantile(p).map_err(failed)
+    }
+
+    fn upper_quantile(&self, q: f64) -> Figure {
+        self.0.upper_quantile(q).map_err(failed)
+    }
+
+    fn shortest(&self, probability: f64, exponential: bool) -> Result<(f64, f64), Absent> {
+        let found = if exponential { self.0.shortest_exp(probability) } else { self.0.shortest(probability) };
+        found.map_err(failed)
+    }
+}
+
+/// A spread s = scale · e^x, the density of x on panels.
+#[derive(Debug)]
+pub(super) struct Spread {
+    pub panels: Panels,
+    pub scale: f64,
+}
+
+impl Spread {
+    fn x(&self, t: f64) -> f64 {
+        fm::ln(t / self.scale)
+    }
+}
+
+impl Continuous for Spread {
+    fn cdf(&self, t: f64) -> f64 {
+        if t > 0.0 { self.panels.cdf(self.x(t)) } else { 0.0 }
+    }
+
+    fn sf(&self, t: f64) -> f64 {
+        if t > 0.0 { self.panels.sf(self.x(t)) } else { 1.0 }
+    }
+
+    fn density(&self, t: f64) -> f64 {
+        if t > 0.0 { self.panels.density(self.x(t)) / t } else { 0.0 }
+    }
+
+    fn quantile(&self, p: f64) -> Figure {
+        Ok(self.scale * fm::exp(self.panels.quantile(p)?))
+    }
+
+    fn upper_quantile(&self, q: f64) -> Figure {
+        Ok(self.scale * fm::exp(self.panels.upper_quantile(q)?))
+    }
+
+    fn lowest(&self) -> f64 {
+        0.0
+    }
+}

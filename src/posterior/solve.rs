@@ -1,0 +1,238 @@
+//! Model and readings in, pieces out.
+
+use super::build::{BiasOf, Built, Part, build};
+
+use super::law::Law;
+use super::marginal::{self, Weighted};
+use super::moments::{Bounds, moment};
+use super::plane::{BetweenSd, Coordinate, Node, Plane, Sd};
+use super::shapes::Spread;
+use super::units::Units;
+use super::weighing::{Weighed, weigh};
+use super::{Basis, PeriodsPart, Piece, Posterior};
+use crate::data::evidence::Evidence;
+use crate::math::fm;
+use crate::prior::{LevelPrior, Model};
+use crate::quantity::Absent;
+use std::sync::Arc;
+
+/// Pieces lighter than this share of the whole are left out.
+const NEGLIGIBLE: f64 = 1e-31;
+
+/// What a posterior keeps beside its pieces.
+#[derive(Debug)]
+pub(super) struct Inner {
+    pub parts: Vec<(Part, Weighed, f64)>,
+    pub units: Units,
+    pub bounds: Bounds,
+    pub bias_sd: f64,
+    pub has_next: bool,
+    pub has_long_run: bool,
+    /// Why readings cannot be foretold.
+    pub no_sd: Option<Absent>,
+    /// B of every piece.
+    pub prior_shares: Vec<f64>,
+    /// With a bias: the true levels of every piece.
+    pub true_levels: Vec<TrueLevel>,
+}
+
+/// (mean, variance) of the true levels and of the true long-run mean.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct TrueLevel {
+    pub this: (f64, f64),
+    pub next: (f64, f64),
+    pub long_run: (f64, f64),
+}
+
+/// Updates the model by the readings.
+///
+/// `Basis::PriorOnly` leaves the readings out, `Basis::ReadingsOnly` puts a flat prior in the place
+/// of the level's prior (the within sd stays as the model has it).
+pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posterior, Absent> {
+    let built = build(model, readings, basis)?;
+    let weighed = weigh_parts(model, readings, &built, basis)?;
+    let units = built.units;
+    let mut pieces = Vec::new();
+    let mut prior_shares = Vec::new();
+    let mut true_levels = Vec::new();
+    let mut error: f64 = 0.0;
+    for ((part, weighed), share) in built.parts.iter().zip(&weighed.0).zip(&weighed.1) {
+        error = error.max(weighed.error);
+        let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
+        let sum: f64 = weighed.nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
+        for node in &weighed.nodes {
+            let weight = share * fm::exp(node.ln_weight - top) / sum;
+            if weight < NEGLIGIBLE {
+                continue;
+            }
+            pieces.push(piece(node, weight, &units));
+            prior_shares.push(prior_share(node, &part.plane));
+            if built.bias_sd > 0.0 {
+                true_levels.push(true_level(node, part, built.bias_sd, &units));
+            }
+        }
+    }
+    if pieces.is_empty() {
+        return Err(Absent::failed("the posterior has no piece of any weight"));
+    }
+    let bounds = built.parts.iter().map(|p| p.bounds).reduce(Bounds::both);
+    let bounds = bounds.ok_or_else(|| Absent::failed("a posterior without parts"))?;
+    let models_periods =
+        built.parts.iter().all(|p| p.periods) && !matches!(model.level, LevelPrior::Peers(_));
+    let no_sd = no_sd(&built);
+    let inner = Inner {
+        has_next: models_periods,
+        has_long_run: models_periods && !built.parts.iter().any(|p| p.plane.is_walk()),
+        no_sd,
+        bounds,
+        units,
+        bias_sd: units.sd_out(built.bias_sd),
+        prior_shares,
+        true_levels,
+        parts: built
+            .parts
+            .into_iter()
+            .zip(weighed.0)
+            .zip(weighed.1)
+            .map(|((part, weighed), share)| (part, weighed, share))
+            .collect(),
+    };
+    Ok(Posterior {
+        model: model.clone(),
+        readings: readings.clone(),
+        basis,
+        pieces,
+        quadrature_error: error,
+        inner: Arc::new(inner),
+    })
+}
+
+/// Every part's nodes, and the parts' shares: weight before the readings times marginal likelihood.
+fn weigh_parts(
+    model: &Model,
+    readings: &Evidence,
+    built: &Built,
+    basis: Basis,
+) -> Result<(Vec<Weighed>, Vec<f64>), Absent> {
+    let mut all = Vec::with_capacity(built.parts.len());
+    for part in &built.parts {
+        all.push(weigh(&part.plane)?);
+    }
+    if built.parts.len() == 1 {
+        return Ok((all, vec![1.0]));
+    }
+    let mut ln_shares = Vec::with_capacity(all.len());
+    let before = if basis == Basis::Both { Some(build(model, readings, Basis::PriorOnly)?) } else { None };
+    for (i, (part, weighed)) in built.parts.iter().zip(&all).enumerate() {
+        let mut ln_share = fm::ln(part.weight);
+        if let Some(before) = &before {
+            let plane = &before.parts[i].plane;
+            let prior = weigh(plane)?;
+            ln_share +=
+                weighed.ln_integral + part.plane.ln_constant() - prior.ln_integral - plane.ln_constant();
+        }
+        ln_shares.push(ln_share);
+    }
+    let whole = fm::ln_sum_exp(&ln_shares);
+    Ok((all, ln_shares.iter().map(|s| fm::exp(s - whole)).collect()))
+}
+
+fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
+    let periods = (!node.long_mean.is_nan()).then(|| PeriodsPart {
+        long_run_mean: units.value_out(node.long_mean),
+        long_run_var: units.square_out(node.long_var),
+        between_sd: units.sd_out(node.tau),
+        history_sd: units.sd_out(node.history_sigma),
+    });
+    Piece {
+        weight,
+        level_mean: units.value_out(node.mean),
+        level_var: units.square_out(node.var),
+        reading_sd: units.sd_out(node.sigma),
+        periods,
+    }
+}
+
+/// B = s²/(v0 + s²), the prior's weight in the level's mean.
+fn prior_share(node: &Node, plane: &Plane) -> f64 {
+    if node.prior_var == f64::INFINITY {
+        return 0.0;
+    }
+    plane.readings.at(node.sigma * node.sigma).map_or(1.0, |at| at.var / (node.prior_var + at.var))
+}
+
+/// Methods §3, bias: the level as measured is φ = θ + b; what is known of θ.
+fn true_level(node: &Node, part: &Part, bias_sd: f64, units: &Units) -> TrueLevel {
+    let u2 = bias_sd * bias_sd;
+    let tau2 = node.tau * node.tau;
+    let pulled = |m0: f64, v0: f64| {
+        let k = v0 / (v0 + u2);
+        (m0 + k * (node.mean - m0), k * u2 + k * k * node.var)
+    };
+    let (this, long_run) = match part.bias {
+        BiasOf::Measured => ((node.mean, node.var + u2), (node.long_mean, node.long_var + u2)),
+        BiasOf::TrueLevel { mean, var } => (pulled(mean, var), (f64::NAN, f64::NAN)),
+        BiasOf::TrueLevelPerReading { mean, readings } => {
+            (pulled(mean, node.sigma * node.sigma / readings), (f64::NAN, f64::NAN))
+        }
+        BiasOf::TrueLongRun { mean, var } => {
+            let k = var / (var + u2);
+            let moved = node.long_mean - mean;
+            let long = (mean + k * moved, k * u2 + k * k * node.long_var);
+            let b = part.plane.readings.at(node.sigma * node.sigma).map_or(0.0, |at| tau2 / (tau2 + at.var));
+            let rest = 1.0 - k;
+            let var =
+                node.var + rest * rest * node.long_var - 2.0 * rest * (1.0 - b) * node.long_var + k * u2;
+            ((node.mean - rest * moved, var), long)
+        }
+    };
+    let out = |(m, v): (f64, f64)| (units.value_out(m), units.square_out(v));
+    TrueLevel { this: out(this), next: out((long_run.0, long_run.1 + tau2)), long_run: out(long_run) }
+}
+
+fn no_sd(built: &Built) -> Option<Absent> {
+    let undefined = built.parts.iter().any(|p| matches!(p.plane.sd, Sd::Undefined));
+    undefined.then(|| {
+        Absent::because("nothing is known of the within sd here: it comes from this period's readings alone")
+    })
+}
+
+impl Inner {
+    fn weighted(&self) -> Vec<Weighted<'_>> {
+        self.parts.iter().map(|(part, weighed, share)| Weighted { part, weighed, share: *share }).collect()
+    }
+
+    pub fn within_sd(&self) -> Result<Law, Absent> {
+        if let Some(reason) = &self.no_sd {
+            return Err(reason.clone());
+        }
+        if self.parts.iter().any(|p| matches!(p.0.plane.sd, Sd::Fixed(_))) {
+            return Err(Absent::because("the within sd is taken as known"));
+        }
+        let panels = marginal::panels(&self.weighted(), Coordinate::Sd)?;
+        self.spread(panels, self.bounds.sd, "the within sd")
+    }
+
+    pub fn between_sd(&self) -> Result<Law, Absent> {
+        if self.parts.iter().all(|p| matches!(p.0.plane.between, BetweenSd::Fixed(_))) {
+            return Err(Absent::because("the between sd is taken as known, or is no part of the prior"));
+        }
+        if self.parts.iter().any(|p| matches!(p.0.plane.between, BetweenSd::Fixed(_))) {
+            return Err(Absent::because("not every part of the prior has an unknown between sd"));
+        }
+        let panels = marginal::panels(&self.weighted(), Coordinate::Between)?;
+        self.spread(panels, self.bounds.between, "the between sd")
+    }
+
+    fn spread(&self, panels: super::legendre::Panels, bound: f64, what: &str) -> Result<Law, Absent> {
+        let scale = self.units.scale;
+        let first = panels.expect(&fm::exp);
+        let second = panels.expect(&|x| {
+            let s = fm::exp(x) - first;
+            s * s
+        });
+        let mean = moment(1.0, bound, what, || scale * first);
+        let sd = moment(2.0, bound, what, || scale * second.sqrt());
+        Ok(Law::new(Arc::new(Spread { panels, scale }), mean, sd))
+    }
+}
