@@ -242,7 +242,7 @@ mod tests {
     #[test]
     fn the_streamed_bytes_are_the_hashed_bytes() {
         for length in [0, 1, BLOCK_BYTES - 1, BLOCK_BYTES, BLOCK_BYTES + 1, 9 * BLOCK_BYTES + 17] {
-            let bytes: Vec<u8> = (0..length).map(|i| (i * 7919 >> 3) as u8).collect();
+            let bytes: Vec<u8> = (0..length).map(|i| ((i * 7919) >> 3) as u8).collect();
             let path = scratch(&format!("stream-{length}"), &bytes);
             let mut seen = Vec::new();
             let hashed = stream(&path, "x", "reading", |block| seen.extend_from_slice(block)).unwrap();

@@ -1,7 +1,25 @@
 //! Stage 3: from sources to readings and sums per series and period. One file a format, one screen
 //! for all of them: whatever cannot be read as meant is a fault with its row.
 
+mod columns;
+mod dates;
+mod decode;
+mod delimited;
 pub mod evidence;
+mod fault_list;
+mod finish;
+mod gather;
+mod index;
+mod number;
+mod order;
+mod read;
+mod record;
+mod rows_csv;
+mod screen;
+mod summaries;
+
+pub use read::read;
+pub use rows_csv::rows_csv;
 
 use crate::diagnostics::Caution;
 use crate::quantity::Period;
@@ -140,3 +158,6 @@ pub enum Fate {
     /// After the interim review's last day.
     Later,
 }
+
+#[cfg(test)]
+mod tests;
