@@ -10,3 +10,14 @@ pub mod roots;
 pub mod normal;
 pub mod quadrature;
 pub mod mixture;
+pub mod gamma;
+pub mod chi_square;
+pub mod inverse_gamma;
+pub mod beta;
+pub mod student;
+pub mod f_law;
+pub mod noncentral_t;
+pub mod owens_t;
+
+mod gamma_temme;
+mod special;

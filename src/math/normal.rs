@@ -143,6 +143,24 @@ pub fn ln_sf(z: f64) -> f64 {
     ln_cdf(-z)
 }
 
+/// exp(z²/2) · (1 − Φ(z)) for z ≥ 0: the upper tail without its exponential.
+#[inline]
+pub fn scaled_sf(z: f64) -> f64 {
+    if z > CENTRE_LIMIT { scaled_tail(z) } else { (0.5 - centre(z)) * fm::exp(0.5 * z * z) }
+}
+
+/// Φ(z) − ½, without loss near 0.
+#[inline]
+pub fn central(z: f64) -> f64 {
+    if z.abs() <= CENTRE_LIMIT {
+        centre(z)
+    } else if z > 0.0 {
+        0.5 - far_tail(z)
+    } else {
+        far_tail(-z) - 0.5
+    }
+}
+
 /// Φ(z) and φ(z) together, for the price of one.
 #[inline]
 pub fn cdf_and_pdf(z: f64) -> (f64, f64) {
