@@ -100,7 +100,7 @@ fn tails(a: f64, x: f64) -> Result<Tails> {
         let (upper, ln_scale, factor) = gamma_temme::tail(a, x);
         return Ok(if upper { Tails::Upper { ln_scale, factor } } else { Tails::Lower { ln_scale, factor } });
     }
-    if x <= a + 1.0 && (x < 1.5 || x <= a) || x < 1.5 {
+    if x < 1.5 || x <= a {
         let ln_scale = ln_front(a, x);
         let factor = lower_series(a, x)?;
         if a < 1.0 {

@@ -18,6 +18,8 @@ pub mod student;
 pub mod f_law;
 pub mod noncentral_t;
 pub mod owens_t;
+pub mod pvalues;
+pub mod promises;
 
 mod gamma_temme;
 mod special;

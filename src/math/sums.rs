@@ -465,7 +465,10 @@ mod tests {
             .map(|_| {
                 state = state.wrapping_mul(6_364_136_223_846_793_005).wrapping_add(1_442_695_040_888_963_407);
                 let exponent = (state >> 33) % 600;
-                let size = (1.0 + (state >> 12) as f64 / 2f64.powi(52)) * 2f64.powi(exponent as i32 - 300);
+                let size = fm::scale_by_power_of_two(
+                    1.0 + (state >> 12) as f64 / 4503599627370496.0,
+                    exponent as i32 - 300,
+                );
                 if state >> 63 == 1 { -size } else { size }
             })
             .collect();
