@@ -10,10 +10,13 @@ mod questions;
 mod rows;
 mod series;
 mod sources;
+mod toml_text;
+mod written;
 
 pub use about::BUILT_IN_TEMPLATES;
 pub use load::{ReadBytes, load};
 pub use series::{OverrideCell, STANDING_ALTERNATIVES};
+pub use written::{Filled, plan_toml};
 
 use crate::quantity::{Period, Scale, Sd};
 pub use crate::spec::reader::Threshold;
