@@ -1,4 +1,5 @@
 //! All integration tests, in one binary: one link, one run.
 
+mod faults;
 mod tidiness;
 mod reference;

@@ -1,7 +1,7 @@
 //! Faults as text: code and message, the place with its line and the marked text, what was expected,
 //! one repair. Plain characters; colour only where it is asked for.
 
-use crate::diagnostics::{Cause, Fault, Faults, Place};
+use crate::diagnostics::{Fault, Faults, Place};
 use annotate_snippets::{AnnotationKind, Group, Level, Origin, Renderer, Snippet};
 use std::ops::Range;
 
@@ -23,19 +23,10 @@ impl Default for Look {
 /// All faults, an empty line between them, and a last line that counts them.
 pub fn render(faults: &Faults, look: Look) -> String {
     let mut text: String = faults.0.iter().map(|fault| one(fault, look) + "\n\n").collect();
-    let unreadable = faults.0.iter().filter(|fault| fault.cause == Cause::Unreadable).count();
-    let wrong = faults.0.len() - unreadable;
-    let mut counts = Vec::new();
-    if wrong > 0 {
-        counts.push(format!("{wrong} {}", if wrong == 1 { "fault" } else { "faults" }));
-    }
-    if unreadable > 0 {
-        let files = if unreadable == 1 { "file" } else { "files" };
-        counts.push(format!("{unreadable} {files} that cannot be read or written"));
-    }
-    if !counts.is_empty() {
-        text.push_str(&counts.join(", "));
-        text.push_str(" found; nothing was written.\n");
+    if !faults.is_empty() {
+        let count = faults.0.len();
+        let noun = if count == 1 { "fault" } else { "faults" };
+        text.push_str(&format!("{count} {noun} found; nothing was written.\n"));
     }
     text
 }
@@ -60,13 +51,18 @@ fn one(fault: &Fault, look: Look) -> String {
 fn with_place<'a>(group: Group<'a>, place: &'a Place, look: Look) -> Group<'a> {
     let line = usize::try_from(place.line).unwrap_or(usize::MAX);
     let column = usize::try_from(place.column).unwrap_or(usize::MAX);
-    let group = group.element(Origin::path(place.file.as_str()).line(line).char_column(column));
     if place.excerpt.trim().is_empty() {
-        return group;
+        return group.element(Origin::path(place.file.as_str()).line(line).char_column(column));
     }
     let (excerpt, mark) = window(&place.excerpt, clamp(&place.excerpt, &place.mark), look.width.max(40));
-    let snippet = Snippet::source(excerpt).line_start(line);
-    group.element(snippet.annotation(AnnotationKind::Primary.span(mark)))
+    // A part of a line has other columns than the line: then the place is said beforehand.
+    let is_whole = excerpt.len() == place.excerpt.len();
+    let snippet = Snippet::source(excerpt).line_start(line).annotation(AnnotationKind::Primary.span(mark));
+    if is_whole {
+        group.element(snippet.path(place.file.as_str()))
+    } else {
+        group.element(Origin::path(place.file.as_str()).line(line).char_column(column)).element(snippet)
+    }
 }
 
 /// The mark inside the excerpt, in order and on character boundaries: the snippet renderer panics on

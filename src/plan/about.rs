@@ -78,7 +78,8 @@ fn review_id(reader: &mut Reader<'_>, stem: String) -> Option<String> {
         true => format!("\"{id}\" cannot name a review"),
         false => format!("the spec's file name \"{id}\" cannot name the review"),
     };
-    let repair: String = id.chars().map(|c| if is_id_char(c) { c } else { '-' }).collect();
+    let parts: Vec<&str> = id.split(|c| !is_id_char(c)).filter(|part| !part.is_empty()).collect();
+    let repair = parts.join("-");
     let mut fault = Fault::wrong("bad-id", message)
         .expected("letters a to z, digits, `.`, `_` and `-`, at most 100 of them");
     if is_folder_name(&repair) {

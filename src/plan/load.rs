@@ -17,10 +17,10 @@ pub type ReadBytes<'a> = dyn Fn(&Path) -> Result<Vec<u8>, Fault> + 'a;
 /// All faults that can be found without the data are returned together.
 pub fn load(spec_path: &Path, shown_name: &str, read: &ReadBytes<'_>) -> Outcome<Plan> {
     let bytes = read(spec_path)?;
-    let spec = spec::read(&bytes, shown_name)?;
+    let mut faults = Faults::default();
+    let Some(spec) = spec::read_on(&bytes, shown_name, &mut faults) else { return Err(faults) };
     let mut files = vec![SpecFile { name: shown_name.to_string(), path: spec_path.to_path_buf(), bytes }];
     let folder = spec_path.parent().map(Path::to_path_buf).unwrap_or_default();
-    let mut faults = Faults::default();
     let mut ground = make::Ground {
         folder,
         spec_text: spec.text.clone(),
@@ -75,13 +75,7 @@ fn base_of(
             return None;
         }
     };
-    let base = match spec::read(&bytes, &name) {
-        Ok(base) => base,
-        Err(more) => {
-            faults.extend(more);
-            return None;
-        }
-    };
+    let base = spec::read_on(&bytes, &name, faults)?;
     if let Some(entry) = base.root.entries.iter().find(|entry| entry.key == "base") {
         faults.push(
             Fault::wrong("base-of-a-base", format!("{name} is a base and names a base itself"))

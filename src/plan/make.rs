@@ -120,7 +120,8 @@ pub fn plan(root: &Table, mut ground: Ground, files: Vec<SpecFile>) -> Outcome<P
     let questions = questions::all(root.tables("question"), &limits, &mut ground);
     let report = about::report(section("report"), &mut ground);
 
-    let faults = ground.faults;
+    let mut faults = ground.faults;
+    in_order_of_text(&mut faults, &files);
     let within = section("within").cloned();
     let (Some(review), Some(quantity), Some(within), Some(prior), Some(report)) =
         (review, quantity, within, prior, report)
@@ -148,6 +149,21 @@ pub fn plan(root: &Table, mut ground: Ground, files: Vec<SpecFile>) -> Outcome<P
     })
 }
 
+/// The spec's faults before the base's, each from the top down. Of several at one place the first
+/// found is kept: the others follow from it.
+fn in_order_of_text(faults: &mut Faults, files: &[SpecFile]) {
+    let rank = |fault: &Fault| {
+        let place = fault.place.as_ref();
+        let file = place.and_then(|place| files.iter().position(|file| file.name == place.file));
+        (file.unwrap_or(files.len()), place.map_or((0, 0), |place| (place.line, place.column)))
+    };
+    faults.0.sort_by_key(rank);
+    let unread = |code: &str| matches!(code, "not-decimal" | "not-a-day" | "too-large");
+    faults
+        .0
+        .dedup_by(|later, first| unread(first.code) && first.place.is_some() && later.place == first.place);
+}
+
 /// Known sections, the language's version, and sections that must be tables.
 fn check_top(root: &Table, ground: &mut Ground) {
     let mut reader = ground.reader(root, language::TOP);
@@ -168,12 +184,13 @@ fn check_top(root: &Table, ground: &mut Ground) {
             _ => {}
         }
     }
+    let mut meant = Vec::new();
     for entry in root.entries.iter().filter(|entry| !language::TOP.iter().any(|key| key.name == entry.key)) {
+        meant.extend(nearest(&entry.key, language::TOP.iter().map(|key| key.name)));
         reader.faults.push(stray(entry));
     }
-    let missing: Vec<&Key> =
-        language::TOP.iter().filter(|key| key.required && root.get(key.name).is_none()).collect();
-    for key in missing {
+    let missing = |key: &&Key| key.required && root.get(key.name).is_none() && !meant.contains(&key.name);
+    for key in language::TOP.iter().filter(missing) {
         let example = match key.name {
             "prior" => "add [prior]; from = \"flat\" lets the readings speak alone",
             "within" => "add [within]; from = \"readings\" takes it from this period's readings",
@@ -278,10 +295,14 @@ pub fn named_tables<'a>(root: &'a Table, key: &str, ground: &mut Ground) -> Vec<
     let refusal = |value: &Value| {
         Fault::wrong(
             "wrong-type",
-            format!("[{key}] holds tables by their name, and this is {}", value.in_words()),
+            format!("`{key}` holds tables by their name, and this is {}", value.in_words()),
         )
         .at(value.span.place())
-        .expected(format!("a table such as [{key}.{}]", if key == "limit" { "guideline" } else { "\"A-1\"" }))
+        .expected(if key == "limit" {
+            "a table such as [limit.guideline], with value = 50 in it"
+        } else {
+            "a table such as [series.\"A-1\"]"
+        })
     };
     match &value.kind {
         Kind::Table(table) => {

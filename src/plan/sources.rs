@@ -128,9 +128,7 @@ pub fn summaries(table: &Table, frame: &Frame, ground: &mut Ground) -> Option<So
 fn place_of_data(table: &Table, inline: &'static str, ground: &mut Ground) -> Option<bool> {
     let has = |key: &str| table.get(key).is_some();
     if has("query") || has("database_env") {
-        // Refused as not served yet by the common keys.
-        let mut reader = ground.reader(table, &[]);
-        common(&mut reader);
+        // Not served yet: refused with the other keys of the table.
         return None;
     }
     match (has("file"), has(inline)) {
@@ -165,19 +163,6 @@ fn place_of_data(table: &Table, inline: &'static str, ground: &mut Ground) -> Op
     }
 }
 
-/// Notes the keys of a database, which are not served yet, once.
-fn common(reader: &mut Reader<'_>) {
-    for entry in &reader.table.entries {
-        if matches!(entry.key.as_str(), "query" | "database_env") {
-            reader.faults.push(
-                not_served("reading from a database", &entry.key_span)
-                    .repair("export the rows to a CSV file and name that with `file`"),
-            );
-            return;
-        }
-    }
-}
-
 /// What readings and summaries have in common.
 fn source(
     table: &Table,
@@ -208,11 +193,6 @@ fn source(
         _ => None,
     };
     let format = text_format(&mut reader, first_file);
-    for key in ["sheet"] {
-        if let Some(entry) = table.entries.iter().find(|entry| entry.key == key) {
-            reader.faults.push(not_served(&format!("`{key}` of {}", table.name), &entry.key_span));
-        }
-    }
     Some(Source {
         what: what?,
         from: from?,
@@ -332,9 +312,11 @@ fn files(table: &Table, ground: &mut Ground) -> Option<Vec<FileRef>> {
         return None;
     }
     if !pins.is_empty() && pins.len() != items.len() {
-        let fault =
-            Fault::wrong("unequal-lengths", format!("{} files, but {} hashes", items.len(), pins.len()))
-                .expected("one hash for each file, in the same order");
+        let fault = Fault::wrong(
+            "unequal-lengths",
+            format!("{}, but {}", many(items.len(), "file"), many(pins.len(), "hash")),
+        )
+        .expected("one hash for each file, in the same order");
         ground.reader(table, &[]).fault_at("sha256", fault);
         return None;
     }
@@ -368,6 +350,17 @@ fn files(table: &Table, ground: &mut Ground) -> Option<Vec<FileRef>> {
         files.push(file);
     }
     (files.len() == items.len()).then_some(files)
+}
+
+/// `1 file`, `2 files`, `2 hashes`, `2 uncertainties`.
+fn many(count: usize, noun: &str) -> String {
+    let plural = match noun.strip_suffix('y') {
+        _ if count == 1 => return format!("1 {noun}"),
+        Some(stem) => format!("{stem}ies"),
+        None if noun.ends_with('h') => format!("{noun}es"),
+        None => format!("{noun}s"),
+    };
+    format!("{count} {plural}")
 }
 
 /// A pinned hash in small letters; `value` is where it stands.
@@ -516,7 +509,7 @@ fn values(reader: &mut Reader<'_>) -> Option<Whence> {
     let uncertainties = reader.number_list("uncertainties");
     if let Some(list) = &uncertainties {
         if list.len() != items.len() {
-            let message = format!("{} values, but {} uncertainties", items.len(), list.len());
+            let message = format!("{}, but {}", many(items.len(), "value"), many(list.len(), "uncertainty"));
             let fault =
                 Fault::wrong("unequal-lengths", message).expected("one for each value, in the same order");
             reader.fault_at("uncertainties", fault);

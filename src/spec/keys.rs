@@ -69,7 +69,7 @@ impl Takes {
     pub fn in_words(&self) -> String {
         match self {
             Takes::Text | Takes::Markdown => "a text in quotes".into(),
-            Takes::Number => "a number".into(),
+            Takes::Number => "a finite number".into(),
             Takes::Positive => "a number above 0".into(),
             Takes::NotNegative => "a number, 0 or above".into(),
             Takes::PositiveOrInfinite => "a number above 0, or inf".into(),
@@ -103,7 +103,7 @@ pub fn one_of(choices: &[&str]) -> String {
 }
 
 /// The known name that was probably meant: at most two slips away, or a third of the name's
-/// length where that is more; one slip for names of up to three letters.
+/// length where that is more; one slip for names of up to four letters.
 pub fn nearest<'a>(written: &str, known: impl IntoIterator<Item = &'a str>) -> Option<&'a str> {
     let plain = |name: &str| name.to_lowercase().replace(['-', ' '], "_");
     let target = plain(written);
@@ -112,7 +112,7 @@ pub fn nearest<'a>(written: &str, known: impl IntoIterator<Item = &'a str>) -> O
     if length > 64 {
         return None;
     }
-    let allowed = if length <= 3 { 1 } else { 2.max(length / 3) };
+    let allowed = if length <= 4 { 1 } else { 2.max(length / 3) };
     known
         .into_iter()
         .map(|name| (strsim::damerau_levenshtein(&target, &plain(name)), name))

@@ -22,8 +22,24 @@ pub struct Spec {
 ///
 /// All faults of the TOML are found in one run; which keys there may be is asked by the plan.
 pub fn read(bytes: &[u8], file: &str) -> Outcome<Spec> {
-    let text = Arc::new(SpecText { file: file.to_string(), text: text::decode(bytes, file)? });
     let mut faults = Faults::default();
-    let root = text::parse(&text, &mut faults);
-    faults.or(Spec { text, root })
+    match read_on(bytes, file, &mut faults) {
+        Some(spec) => faults.or(spec),
+        None => Err(faults),
+    }
+}
+
+/// As [`read`], but a spec with single values that cannot be used is returned all the same, with these
+/// noted, so that what is wrong elsewhere can be told in the same run.
+pub fn read_on(bytes: &[u8], file: &str, faults: &mut Faults) -> Option<Spec> {
+    let text = match text::decode(bytes, file) {
+        Ok(text) => text,
+        Err(fault) => {
+            faults.push(fault);
+            return None;
+        }
+    };
+    let text = Arc::new(SpecText { file: file.to_string(), text });
+    let root = text::parse(&text, faults)?;
+    Some(Spec { text, root })
 }

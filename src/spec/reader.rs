@@ -285,6 +285,7 @@ impl<'a> Reader<'a> {
     /// here, and whether they are required is asked there.
     pub fn finish_beside(self, elsewhere: &[&'static [Key]]) {
         let known = || self.keys.iter().chain(elsewhere.iter().copied().flatten());
+        let mut meant = Vec::new();
         for entry in &self.table.entries {
             match known().find(|key| key.name == entry.key) {
                 Some(key) if !key.served => self
@@ -293,11 +294,15 @@ impl<'a> Reader<'a> {
                 Some(_) => {}
                 None => {
                     let names: Vec<&str> = known().filter(|key| key.served).map(|key| key.name).collect();
+                    meant.extend(nearest(&entry.key, names.iter().copied()));
                     self.faults.push(unknown_key(self.table, entry, &names));
                 }
             }
         }
-        for key in self.keys.iter().filter(|key| key.required && self.table.get(key.name).is_none()) {
+        // A key that is there with a slip is not missing as well.
+        let missing =
+            |key: &&Key| key.required && self.table.get(key.name).is_none() && !meant.contains(&key.name);
+        for key in self.keys.iter().filter(missing) {
             self.faults.push(missing_key(self.table, key));
         }
     }

@@ -24,16 +24,17 @@ pub fn decode(bytes: &[u8], file: &str) -> Result<String, Fault> {
     source::text(bytes, file).map(str::to_string)
 }
 
-/// The tables of a TOML text, entries in the order of the text. Faults are noted; where there are
-/// any, the tables returned hold what could be understood.
-pub fn parse(source: &Arc<SpecText>, faults: &mut Faults) -> Table {
+/// The tables of a TOML text, entries in the order of the text; `None` where it is not TOML. Values
+/// that no key of a spec can take are noted too, and the rest goes on.
+pub fn parse(source: &Arc<SpecText>, faults: &mut Faults) -> Option<Table> {
     let (root, errors) = DeTable::parse_recoverable(&source.text);
     if !errors.is_empty() {
         note_syntax(source, errors, faults);
-        return Table { name: "the spec".into(), span: span(source, 0..0), entries: Vec::new() };
+        return None;
     }
-    let mut builder = Builder { source, faults, depth: 0 };
-    builder.table(root.get_ref(), "the spec".to_string(), &Path::default(), 0..0)
+    let mut builder = Builder { source, faults, depth: 0, too_deep: false };
+    let table = builder.table(root.get_ref(), "the spec".to_string(), &Path::default(), 0..0);
+    (!builder.too_deep).then_some(table)
 }
 
 fn note_syntax(source: &Arc<SpecText>, errors: Vec<toml::de::Error>, faults: &mut Faults) {
@@ -72,14 +73,37 @@ fn syntax_fault(source: &Arc<SpecText>, bytes: &Range<usize>, message: &str) -> 
             .repair("remove one of the two, or bring both together");
     }
     let (what, expected) = match message.split_once(", expected ") {
-        Some((what, expected)) => (what, Some(expected)),
-        None => (message, None),
+        Some((what, expected)) => (what, expected),
+        None => (message, "nothing"),
     };
-    let mut fault = Fault::wrong("syntax", format!("this is not TOML: {what}"));
-    if let Some(expected) = expected {
-        fault = fault.expected(expected.replace('`', ""));
+    let not_toml = |what: &str| Fault::wrong("syntax", format!("this is not TOML: {what}"));
+    match (what, expected) {
+        ("invalid basic string", "`\"`") => {
+            not_toml("a text begins with \" and does not end on its line").repair("add the closing \"")
+        }
+        ("invalid literal string", "`'`") => {
+            not_toml("a text begins with ' and does not end on its line").repair("add the closing '")
+        }
+        (what, "newline, `#`") if is_decimal_comma(&source.text, bytes.start) => {
+            not_toml(what).expected("a decimal point").repair("write the number with a point")
+        }
+        (what, "newline, `#`") => {
+            not_toml(what).expected("the end of the line, or a comment that begins with #")
+        }
+        ("string values must be quoted", _) => {
+            not_toml("this is no number, date or true or false").expected("a text in quotes")
+        }
+        ("unclosed table", _) => not_toml("a table's head does not end").repair("add the closing ]"),
+        (what, "nothing") => not_toml(what),
+        (what, expected) => not_toml(what).expected(expected.replace('`', "")),
     }
-    fault
+}
+
+/// Whether a comma with digits on both sides stands here.
+fn is_decimal_comma(text: &str, at: usize) -> bool {
+    let bytes = text.as_bytes();
+    let digit = |at: Option<usize>| at.and_then(|at| bytes.get(at)).is_some_and(u8::is_ascii_digit);
+    bytes.get(at) == Some(&b',') && digit(at.checked_sub(1)) && digit(at.checked_add(1))
 }
 
 fn span(source: &Arc<SpecText>, bytes: Range<usize>) -> Span {
@@ -111,6 +135,7 @@ struct Builder<'a> {
     source: &'a Arc<SpecText>,
     faults: &'a mut Faults,
     depth: usize,
+    too_deep: bool,
 }
 
 /// Deeper than any spec goes; the parser's own bound lets dotted keys and brackets multiply.
@@ -137,6 +162,7 @@ impl Builder<'_> {
     fn value(&mut self, value: &Spanned<DeValue<'_>>, path: &Path) -> Value {
         let bytes = value.span();
         if self.depth >= DEPTH {
+            self.too_deep = true;
             self.faults.push(
                 Fault::wrong("syntax", "tables and lists are nested too deeply here")
                     .at(span(self.source, bytes.clone()).place())
@@ -186,7 +212,7 @@ impl Builder<'_> {
             // A number in another base is a slip in a spec (0b1 for 0.1): say what it would be.
             let whole = i64::from_str_radix(digits, radix).ok();
             self.faults.push(
-                Fault::wrong("wrong-type", format!("`{written}` is a number in base {radix}"))
+                Fault::wrong("not-decimal", format!("`{written}` is a number in base {radix}"))
                     .at(span(self.source, bytes).place())
                     .expected("a decimal number")
                     .repair(whole.map_or("write it in decimal".into(), |whole| format!("write {whole}"))),
@@ -197,7 +223,7 @@ impl Builder<'_> {
         let value: f64 = written.parse().unwrap_or(f64::NAN);
         if value.is_infinite() && !written.ends_with("inf") {
             self.faults.push(
-                Fault::wrong("out-of-range", format!("{} is too large a number", shortened(&written)))
+                Fault::wrong("too-large", format!("{} is too large a number", shortened(&written)))
                     .at(span(self.source, bytes).place())
                     .expected("a number below 1.7e308"),
             );
@@ -211,7 +237,7 @@ impl Builder<'_> {
         let place = span(self.source, bytes).place();
         let Some((year, month, day)) = day else {
             self.faults.push(
-                Fault::wrong("wrong-type", "a time of day is never wanted in a spec")
+                Fault::wrong("not-a-day", "a time of day is never wanted in a spec")
                     .at(place)
                     .expected("a date alone, such as 2026-01-31")
                     .repair("take the time away, or put the whole in quotes where a text is meant"),
@@ -226,7 +252,7 @@ impl Builder<'_> {
             Some(civil) => Kind::Date(civil),
             None => {
                 let message = format!("{written} is not a day of the calendar");
-                self.faults.push(Fault::wrong("wrong-type", message).at(place));
+                self.faults.push(Fault::wrong("not-a-day", message).at(place));
                 Kind::Text(written)
             }
         }
@@ -253,7 +279,7 @@ fn name_in_list(table: &DeTable<'_>, path: &Path, at: usize, length: usize) -> S
 mod tests {
     use super::*;
 
-    fn parsed(text: &str) -> (Table, Faults) {
+    fn parsed(text: &str) -> (Option<Table>, Faults) {
         let source = Arc::new(SpecText { file: "s.toml".into(), text: text.into() });
         let mut faults = Faults::default();
         let table = parse(&source, &mut faults);
@@ -264,6 +290,7 @@ mod tests {
     fn entries_keep_the_order_of_the_text_and_numbers_their_digits() {
         let (root, faults) = parsed("z = 12.50\na = 1_000\n[m.k]\nd = 2026-01-31\n");
         assert!(faults.is_empty(), "{faults:?}");
+        let root = root.unwrap();
         let keys: Vec<&str> = root.entries.iter().map(|entry| entry.key.as_str()).collect();
         assert_eq!(keys, ["z", "a", "m"]);
         assert_eq!(
@@ -279,7 +306,7 @@ mod tests {
     #[test]
     fn the_place_of_a_value_counts_characters_and_marks_bytes() {
         let (root, _) = parsed("# µ\r\nunit = \"µg/L\" # µ\r\n");
-        let place = root.get("unit").map(|value| value.span.place());
+        let place = root.unwrap().get("unit").map(|value| value.span.place());
         let expected = Place {
             file: "s.toml".into(),
             line: 2,
