@@ -107,7 +107,7 @@ mod tests {
     use super::*;
 
     fn place(excerpt: &str, mark: Range<usize>) -> Place {
-        Place { file: "s.toml".into(), line: 7, column: 8, excerpt: excerpt.into(), mark }
+        Place { file: "s.toml".into(), line: 7, column: 1, excerpt: excerpt.into(), mark }
     }
 
     #[test]
@@ -118,7 +118,7 @@ mod tests {
             .repair("write `title`");
         let text = render(&Faults(vec![fault]), Look::default());
         for part in
-            ["unknown-key", "`titel` is not", "s.toml:7:8", "7 | titel", "^^^^^", "expected", "repair: write"]
+            ["unknown-key", "`titel` is not", "s.toml:7:1", "7 | titel", "^^^^^", "expected", "repair: write"]
         {
             assert!(text.contains(part), "{part} is not in\n{text}");
         }

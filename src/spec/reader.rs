@@ -483,19 +483,20 @@ mod tests {
             reader.choice("status");
         });
         let codes: Vec<&str> = found.iter().map(|fault| fault.0.as_str()).collect();
-        let expected = [
-            "wrong-type",
-            "out-of-range",
-            "out-of-range",
-            "wrong-value",
-            "unknown-key",
-            "not-served-yet",
-            "missing-key",
-        ];
+        let expected =
+            ["wrong-type", "out-of-range", "out-of-range", "wrong-value", "unknown-key", "not-served-yet"];
         assert_eq!(codes, expected);
         assert!(found[0].2.contains("without quotes"));
         assert!(found[3].2.contains("final"));
         assert!(found[4].2.contains("title"));
+    }
+
+    #[test]
+    fn a_missing_key_is_noted_unless_it_is_there_with_a_slip() {
+        let found = faults_of("titel = \"a\"\n", |_| ());
+        let codes: Vec<&str> = found.iter().map(|fault| fault.0.as_str()).collect();
+        assert_eq!(codes, ["unknown-key", "missing-key"]);
+        assert!(found[1].1.contains("`date`"), "{found:?}");
     }
 
     #[test]
