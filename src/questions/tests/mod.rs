@@ -52,7 +52,7 @@ pub fn plan(scale: &str, questions: &str) -> Result<Plan, Faults> {
         "#
     );
     let path = std::path::Path::new("pond.toml");
-    crate::plan::load::load(path, "pond.toml", &|_| Ok(text.clone().into_bytes()))
+    crate::plan::load(path, "pond.toml", &|_| Ok(text.clone().into_bytes()))
 }
 
 /// All faults of reading these questions.

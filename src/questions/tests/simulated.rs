@@ -244,7 +244,7 @@ fn shares_percentiles_and_spread() {
 #[test]
 fn on_the_log_scale() {
     let (linear, draws) = unknown_sd();
-    let log = Posterior { model: Model { scale: Scale::Log, ..linear.model.clone() }, ..linear.clone() };
+    let log = both(&Model { scale: Scale::Log, ..linear.model.clone() }, &linear.readings);
     let figures = put("log", "ask = \"level interval\"").figures(&log);
     interval_agrees(&figures, &draws, |draw| fm::exp(draw.level), 0.025, 0.975, "geometric mean");
     agrees(0.5, mean_of(&draws, |draw| is(fm::exp(draw.level) <= value(&figures, "estimate"))), "median");
