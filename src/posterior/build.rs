@@ -11,7 +11,7 @@ use super::units::Units;
 use super::walk::Walk;
 use crate::data::evidence::{Evidence, Seen};
 use crate::prior::{Adjust, Between, LevelPrior, Model, Pattern, Periods, Within};
-use crate::quantity::Absent;
+use crate::quantity::{Absent, Period};
 
 /// One plane of a posterior, with what cannot be seen in it.
 #[derive(Debug, Clone, PartialEq)]
@@ -22,6 +22,10 @@ pub(super) struct Part {
     /// Levels of other periods follow the same model.
     pub periods: bool,
     pub bias: BiasOf,
+    /// The earlier periods (or peers) behind the prior, in order, with the steps before each and, last, up
+    /// to this period (random walk).
+    pub history: Vec<(Period, Told)>,
+    pub gaps: Vec<f64>,
 }
 
 /// What the prior speaks of when readings share a bias (methods §3).
@@ -47,7 +51,16 @@ pub(super) struct Built {
 
 /// The planes of a model with its readings, under one basis.
 pub(super) fn build(model: &Model, readings: &Evidence, basis: Basis) -> Result<Built, Absent> {
-    let units = units(model, readings);
+    build_in(units(model, readings), model, readings, basis)
+}
+
+/// The same in units given.
+pub(super) fn build_in(
+    units: Units,
+    model: &Model,
+    readings: &Evidence,
+    basis: Basis,
+) -> Result<Built, Absent> {
     let used = if basis == Basis::PriorOnly { &Evidence::Nothing } else { readings };
     let bias_sd = units.sd_in(model.bias_sd);
     let builder = Builder { model, units, used, basis, bias_sd };
@@ -272,7 +285,13 @@ impl Builder<'_> {
             );
         let plane = Plane { history_sd, sd, between, level, moved: move_later, readings: this };
         let bounds = moments::bounds(&plane, &tails);
-        Ok(Part { weight, plane, bounds, periods: periods_modelled, bias })
+        let named = periods.map_or(&[][..], |p| &p.periods);
+        let history = named.iter().map(|(name, _)| name.clone()).zip(history).collect();
+        let gaps = match periods.map(|p| &p.pattern) {
+            Some(Pattern::RandomWalk { gaps, last_gap }) => gaps.iter().chain([last_gap]).copied().collect(),
+            _ => Vec::new(),
+        };
+        Ok(Part { weight, plane, bounds, periods: periods_modelled, bias, history, gaps })
     }
 
     fn positive(&self, sd: f64, what: &str) -> Result<f64, Absent> {
@@ -410,7 +429,7 @@ fn enough_periods(periods: &Periods, with_readings: usize) -> Result<(), Absent>
 }
 
 /// A shift and a scale that suit both the prior and the readings, the same for every basis.
-fn units(model: &Model, readings: &Evidence) -> Units {
+pub(super) fn units(model: &Model, readings: &Evidence) -> Units {
     let mut places = Vec::new();
     let mut sizes = Vec::new();
     match model.within {

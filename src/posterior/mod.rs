@@ -5,13 +5,16 @@ mod about_mean;
 mod axis;
 mod between;
 mod build;
+mod change;
+mod closed;
 mod grid;
+pub mod joint;
 pub mod law;
 mod legendre;
 mod marginal;
 mod moments;
 mod plane;
-mod refined;
+mod predictive;
 mod shapes;
 mod solve;
 mod told;
@@ -117,50 +120,23 @@ impl Posterior {
         if uses_sd && let Some(reason) = &self.inner.no_sd {
             return Err(reason.clone());
         }
+        if let Some(conjugate) = &self.inner.conjugate
+            && let Some((shift, share)) = proportional(conjugate.sd, shift_and_variance)
+        {
+            let bound = if uses_sd { self.bound(when).min(self.inner.bounds.sd) } else { self.bound(when) };
+            let what = if uses_sd { "a reading" } else { self.name(when) };
+            return Ok(conjugate.affine(factor, shift, share, bound, what));
+        }
+        let parts = self.pieces.iter().map(|piece| {
+            let (mean, var) = piece.level(when);
+            let (shift, added) = shift_and_variance(piece.reading_sd);
+            (piece.weight, factor * mean + shift, factor * factor * var + added)
+        });
         let mut bound = self.bound(when);
         if uses_sd {
             bound = bound.min(self.inner.bounds.sd);
         }
-        let law = |pieces: &[Piece]| {
-            let parts = pieces.iter().map(|piece| {
-                let (mean, var) = piece.level(when);
-                let (shift, added) = shift_and_variance(piece.reading_sd);
-                (piece.weight, factor * mean + shift, factor * factor * var + added)
-            });
-            mixture(parts.collect(), bound, if uses_sd { "a reading" } else { self.name(when) })
-        };
-        let as_held = law(&self.pieces)?;
-        let moves_with_sd = shift_and_variance(1.0).0 != shift_and_variance(2.0).0;
-        if moves_with_sd && self.has_unknown_sd() { self.settled(as_held, &law) } else { Ok(as_held) }
-    }
-
-    /// A law whose centre moves with σ, on finer and finer grids until two agree to 2e−11 in the
-    /// middle and in both tails.
-    fn settled(&self, first: Law, law: &dyn Fn(&[Piece]) -> Result<Law, Absent>) -> Result<Law, Absent> {
-        let (low, high) = first.central(1.0 - 2e-6)?;
-        let (near_low, near_high) = first.central(0.9)?;
-        let measure = |law: &Law| {
-            [
-                law.cdf(low),
-                law.cdf(near_low),
-                law.cdf(first.median().unwrap_or(low)),
-                law.sf(near_high),
-                law.sf(high),
-            ]
-        };
-        let mut before = measure(&first);
-        let mut factor = 1.0;
-        for _ in 0..10 {
-            factor *= std::f64::consts::FRAC_1_SQRT_2;
-            let finer = law(&self.finer(factor, 0.29)?)?;
-            let now = measure(&finer);
-            let worst = before.iter().zip(now).map(|(a, b)| ((a - b) / b).abs()).fold(0.0, f64::max);
-            if worst <= 2e-11 {
-                return Ok(finer);
-            }
-            before = now;
-        }
-        Err(Absent::failed("a law that moves with the within sd did not reach its promised accuracy"))
+        mixture(parts.collect(), bound, if uses_sd { "a reading" } else { self.name(when) })
     }
 
     /// The mean of the next `mean_of` readings; `uncertainty` is each one's own, where σ is none.
@@ -292,6 +268,18 @@ impl Piece {
             (When::LongRun, Some(p)) => (p.long_run_mean, p.long_run_var),
         }
     }
+}
+
+/// (shift, share) where shift does not depend on σ and the variance is share · σ²: then Student's t is exact.
+fn proportional(size: f64, shift_and_variance: &dyn Fn(f64) -> (f64, f64)) -> Option<(f64, f64)> {
+    let (shift, variance) = shift_and_variance(size);
+    let share = variance / (size * size);
+    let holds = [0.25, 0.7, 1.9, 16.0].into_iter().all(|k| {
+        let sigma = k * size;
+        let (s, v) = shift_and_variance(sigma);
+        s == shift && (v - share * (sigma * sigma)).abs() <= 1e-14 * v
+    });
+    holds.then_some((shift, share))
 }
 
 /// A law from (weight, mean, variance), with the moments below `bound`.

@@ -135,3 +135,41 @@ fn a_mixture_prior_and_data_in_conflict() {
     near(level.mean().unwrap(), 55.84951571345135, 1e-13);
     near(level.quantile(0.025).unwrap(), 53.13665179531665, 1e-12);
 }
+
+/// The pieces and the closed form are two roads to the same law.
+#[test]
+fn pieces_agree_with_the_closed_form() {
+    let readings = Evidence::Sums { n: 4, mean: 33.5, ss: Some(3.0 * 3.1 * 3.1) };
+    for (within, level) in [
+        (Within::Worth { sd: 4.0, df: 8.0 }, LevelPrior::Worth { mean: 30.0, readings: 2.0 }),
+        (Within::Readings, LevelPrior::Flat),
+        (Within::Worth { sd: 4.0, df: 0.5 }, LevelPrior::Flat),
+        (Within::Readings, LevelPrior::Worth { mean: 33.0, readings: 40.0 }),
+    ] {
+        let posterior = solve(&model(within, level), &readings, Basis::Both).unwrap();
+        for share in [0.0, 1.0] {
+            let closed = posterior.affine(When::This, 1.0, &|s| (0.0, share * s * s)).unwrap();
+            let parts = posterior.pieces.iter();
+            let parts =
+                parts.map(|p| (p.weight, p.level_mean, p.level_var + share * p.reading_sd * p.reading_sd));
+            let pieces = mixture(parts.collect(), 9.0, "").unwrap();
+            for t in [-200.0, 0.0, 25.0, 32.0, 35.0, 44.0, 90.0] {
+                if closed.cdf(t) > 1e-12 {
+                    near(pieces.cdf(t), closed.cdf(t), 1e-10);
+                }
+                if closed.sf(t) > 1e-12 {
+                    near(pieces.sf(t), closed.sf(t), 1e-10);
+                }
+            }
+            for p in [1e-6, 0.025, 0.3, 0.975] {
+                near(pieces.quantile(p).unwrap(), closed.quantile(p).unwrap(), 1e-10);
+            }
+        }
+        let closed = posterior.within_sd().unwrap();
+        let panels = marginal::panels(&posterior.inner.weighted(), plane::Coordinate::Sd).unwrap();
+        let scale = posterior.inner.units.scale;
+        for p in [0.001, 0.025, 0.5, 0.9, 0.999] {
+            near(scale * fm::exp(panels.quantile(p).unwrap()), closed.quantile(p).unwrap(), 1e-10);
+        }
+    }
+}

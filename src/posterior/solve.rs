@@ -2,6 +2,7 @@
 
 use super::build::{BiasOf, Built, Part, build};
 
+use super::closed::Conjugate;
 use super::law::Law;
 use super::marginal::{self, Weighted};
 use super::moments::{Bounds, moment};
@@ -26,6 +27,8 @@ pub(super) struct Inner {
     pub units: Units,
     pub bounds: Bounds,
     pub bias_sd: f64,
+    /// The closed form, where there is one.
+    pub conjugate: Option<Conjugate>,
     pub has_next: bool,
     pub has_long_run: bool,
     /// Why readings cannot be foretold.
@@ -80,7 +83,12 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
     let models_periods =
         built.parts.iter().all(|p| p.periods) && !matches!(model.level, LevelPrior::Peers(_));
     let no_sd = no_sd(&built);
+    let conjugate = match &built.parts[..] {
+        [part] => Conjugate::of(part, &units),
+        _ => None,
+    };
     let inner = Inner {
+        conjugate,
         has_next: models_periods,
         has_long_run: models_periods && !built.parts.iter().any(|p| p.plane.is_walk()),
         no_sd,
@@ -137,7 +145,7 @@ fn weigh_parts(
     Ok((all, ln_shares.iter().map(|s| fm::exp(s - whole)).collect()))
 }
 
-pub(super) fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
+fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
     let periods = (!node.long_mean.is_nan()).then(|| PeriodsPart {
         long_run_mean: units.value_out(node.long_mean),
         long_run_var: units.square_out(node.long_var),
@@ -198,7 +206,7 @@ fn no_sd(built: &Built) -> Option<Absent> {
 }
 
 impl Inner {
-    fn weighted(&self) -> Vec<Weighted<'_>> {
+    pub fn weighted(&self) -> Vec<Weighted<'_>> {
         self.parts.iter().map(|(part, weighed, share)| Weighted { part, weighed, share: *share }).collect()
     }
 
@@ -208,6 +216,9 @@ impl Inner {
         }
         if self.parts.iter().any(|p| matches!(p.0.plane.sd, Sd::Fixed(_))) {
             return Err(Absent::because("the within sd is taken as known"));
+        }
+        if let Some(conjugate) = &self.conjugate {
+            return Ok(conjugate.within_sd(self.bounds.sd));
         }
         let panels = marginal::panels(&self.weighted(), Coordinate::Sd)?;
         self.spread(panels, self.bounds.sd, "the within sd")

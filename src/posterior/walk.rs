@@ -62,4 +62,50 @@ impl Walk {
         let (mean, var) = state.unwrap_or((0.0, f64::INFINITY));
         Filtered { ln_weight, mean, var }
     }
+
+    /// θ_last − θ_first and its variance given (σ, τ), from the smoothed path.
+    ///
+    /// `from` counts the periods with readings; `last` is the period under review, which may have none.
+    /// `None` where there are no readings at all. West & Harrison 1997: gains g_j = C_j/R_{j+1}.
+    pub fn change(&self, sigma2: f64, step2: f64, from: usize, last: &Told) -> Option<(f64, f64)> {
+        let mut states: Vec<(f64, f64)> = Vec::with_capacity(self.steps.len() + 1);
+        let mut aheads: Vec<f64> = Vec::with_capacity(self.steps.len() + 1);
+        let ends = [(self.last_gap, last.clone())];
+        for (gap, period) in self.steps.iter().chain(&ends) {
+            let at = period.at(sigma2);
+            let Some((mean, var)) = states.last().copied() else {
+                let at = at?;
+                states.push((at.mean, at.var));
+                aheads.push(f64::INFINITY);
+                continue;
+            };
+            let ahead = var + gap * step2;
+            aheads.push(ahead);
+            states.push(match at {
+                None => (mean, ahead),
+                Some(at) => {
+                    let total = ahead + at.var;
+                    (mean + ahead / total * (at.mean - mean), ahead * (at.var / total))
+                }
+            });
+        }
+        let (last_mean, last_var) = *states.last()?;
+        let (mut mean, mut var, mut gain) = (last_mean, last_var, 1.0);
+        for j in (from..states.len() - 1).rev() {
+            let (m, c) = states[j];
+            let g = c / aheads[j + 1];
+            mean = m + g * (mean - m);
+            var = c + g * g * (var - aheads[j + 1]);
+            gain *= g;
+        }
+        Some((last_mean - mean, last_var + var - 2.0 * last_var * gain))
+    }
+
+    /// Where the j-th of all periods, readings or not, stands among those with readings.
+    pub fn position(periods: &[Told], j: usize) -> Option<usize> {
+        if periods.get(j).is_none_or(|p| *p == Told::Nothing) {
+            return None;
+        }
+        Some(periods[..j].iter().filter(|p| **p != Told::Nothing).count())
+    }
 }
