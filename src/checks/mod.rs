@@ -1,4 +1,52 @@
-//! Stage 7: checks of the assumptions.
+//! Checks of the assumptions: one file a check, each a pure function over plain numbers.
+//!
+//! A check never excludes a reading, never changes an answer and never stops a review. It gives
+//! a statistic, the law the statistic would follow if the assumption held, a p-value, and in plain
+//! words what was found and what follows from it. A check that cannot be made says why.
+//!
+//! p < 0.01 is a flag, 0.01 to 0.05 a remark. A two-sided p is min(1, 2 min(lower, upper)). The
+//! two levels are common practice, no source.
+//!
+//! The head comment of each file is the user's page of that check; [`ALL`] carries it.
+
+pub mod anderson_darling;
+pub mod bartlett;
+pub mod brown_forsythe;
+pub mod coverage;
+pub mod duplicates;
+pub mod homogeneity;
+pub mod last_digits;
+pub mod many_series;
+pub mod normality;
+pub mod outliers;
+pub mod page;
+pub mod predictive_extremes;
+pub mod predictive_skew;
+pub mod predictive_spread;
+pub mod printed;
+pub mod prior_conflict;
+pub mod prior_predictive;
+pub mod rounding;
+pub mod runs;
+pub mod season;
+pub mod serial_correlation;
+pub mod shapiro_wilk;
+pub mod tails;
+pub mod timed;
+pub mod trend;
+pub mod unit_jump;
+pub mod von_neumann;
+pub mod within_sd;
+pub mod within_sd_worth;
+pub mod words;
+
+#[cfg(test)]
+mod tests;
+
+/// p below which a check raises a flag (common practice, no source).
+pub const FLAG_BELOW: f64 = 0.01;
+/// p below which a check makes a remark (common practice, no source).
+pub const REMARK_BELOW: f64 = 0.05;
 
 /// How much a check has against the assumption it looked at.
 #[derive(Clone, Copy, Debug, PartialEq, Eq, PartialOrd, Ord)]
@@ -9,6 +57,28 @@ pub enum Concern {
     Remark,
     /// p below 0.01, or a fact that puts the answers in doubt.
     Flag,
+}
+
+impl Concern {
+    /// The concern that belongs to a p-value.
+    pub fn of_p(p: f64) -> Concern {
+        if p < FLAG_BELOW {
+            Concern::Flag
+        } else if p < REMARK_BELOW {
+            Concern::Remark
+        } else {
+            Concern::None
+        }
+    }
+
+    /// The word printed for it.
+    pub fn word(self) -> &'static str {
+        match self {
+            Concern::None => "none",
+            Concern::Remark => "remark",
+            Concern::Flag => "flag",
+        }
+    }
 }
 
 /// What one check of an assumption found.
@@ -35,3 +105,142 @@ pub struct Check {
     /// Why the check was not made; none when it was.
     pub why: Option<String>,
 }
+
+/// What a check says when it found nothing.
+const NOTHING_FOLLOWS: &str = "No action follows from this check.";
+
+impl Check {
+    /// A check that was made, with its statistic; the rest is added by the methods below.
+    pub(crate) fn of(id: &'static str, statistic_name: &'static str, statistic: f64) -> Check {
+        Check {
+            id,
+            statistic: Some(statistic),
+            statistic_name,
+            reference: String::new(),
+            p: None,
+            concern: Concern::None,
+            meaning: String::new(),
+            consequence: NOTHING_FOLLOWS.to_owned(),
+            extra: Vec::new(),
+            why: None,
+        }
+    }
+
+    /// A check that was not made, with the reason. It carries no concern.
+    pub fn not_made(id: &'static str, statistic_name: &'static str, why: impl Into<String>) -> Check {
+        let why = why.into();
+        Check {
+            id,
+            statistic: None,
+            statistic_name,
+            reference: String::new(),
+            p: None,
+            concern: Concern::None,
+            meaning: format!("Not made: {why}."),
+            consequence: "The assumption stands unchecked.".to_owned(),
+            extra: Vec::new(),
+            why: Some(why),
+        }
+    }
+
+    /// Sets the law of the statistic.
+    pub(crate) fn reference(mut self, law: impl Into<String>) -> Check {
+        self.reference = law.into();
+        self
+    }
+
+    /// Sets the p-value and the concern that belongs to it.
+    pub(crate) fn p(mut self, p: f64) -> Check {
+        self.p = Some(p);
+        self.concern = Concern::of_p(p);
+        self
+    }
+
+    /// Sets the concern of a check that is not a test.
+    pub(crate) fn concern(mut self, concern: Concern) -> Check {
+        self.concern = concern;
+        self
+    }
+
+    /// Sets what was found.
+    pub(crate) fn meaning(mut self, meaning: impl Into<String>) -> Check {
+        self.meaning = meaning.into();
+        self
+    }
+
+    /// Sets what follows if there is a concern; with none, nothing follows and this is not used.
+    pub(crate) fn if_concerned(mut self, consequence: impl Into<String>) -> Check {
+        if self.concern != Concern::None {
+            self.consequence = consequence.into();
+        }
+        self
+    }
+
+    /// Adds a named figure.
+    pub(crate) fn extra(mut self, name: &'static str, value: f64) -> Check {
+        self.extra.push((name, value));
+        self
+    }
+
+    /// The named figure, if the check has it.
+    pub fn figure(&self, name: &str) -> Option<f64> {
+        self.extra.iter().find(|(known, _)| *known == name).map(|(_, value)| *value)
+    }
+}
+
+/// One kind of check: its name, its page and where the method was published.
+#[derive(Clone, Copy, Debug)]
+pub struct CheckKind {
+    /// The name by which a spec and a report know the check.
+    pub id: &'static str,
+    /// The head comment of the check's file, each line still led by its comment mark;
+    /// [`CheckKind::text`] gives it plain.
+    pub page: &'static str,
+    /// Where the method was published.
+    pub source: &'static str,
+}
+
+impl CheckKind {
+    /// The user's page of this check as plain text.
+    pub fn text(&self) -> String {
+        page::plain(self.page)
+    }
+}
+
+/// The kind of check with this name.
+pub fn kind(id: &str) -> Option<&'static CheckKind> {
+    ALL.iter().find(|kind| kind.id == id)
+}
+
+macro_rules! kind {
+    ($module:ident, $file:literal) => {
+        CheckKind { id: $module::ID, page: page::head(include_str!($file)), source: $module::SOURCE }
+    };
+}
+
+/// Every check, in the order of a report.
+pub const ALL: &[CheckKind] = &[
+    kind!(within_sd, "within_sd.rs"),
+    kind!(within_sd_worth, "within_sd_worth.rs"),
+    kind!(prior_predictive, "prior_predictive.rs"),
+    kind!(prior_conflict, "prior_conflict.rs"),
+    kind!(normality, "normality.rs"),
+    kind!(outliers, "outliers.rs"),
+    kind!(trend, "trend.rs"),
+    kind!(von_neumann, "von_neumann.rs"),
+    kind!(serial_correlation, "serial_correlation.rs"),
+    kind!(runs, "runs.rs"),
+    kind!(brown_forsythe, "brown_forsythe.rs"),
+    kind!(bartlett, "bartlett.rs"),
+    kind!(homogeneity, "homogeneity.rs"),
+    kind!(predictive_spread, "predictive_spread.rs"),
+    kind!(predictive_extremes, "predictive_extremes.rs"),
+    kind!(predictive_skew, "predictive_skew.rs"),
+    kind!(rounding, "rounding.rs"),
+    kind!(last_digits, "last_digits.rs"),
+    kind!(duplicates, "duplicates.rs"),
+    kind!(unit_jump, "unit_jump.rs"),
+    kind!(coverage, "coverage.rs"),
+    kind!(season, "season.rs"),
+    kind!(many_series, "many_series.rs"),
+];
