@@ -31,7 +31,7 @@ pub fn of_sorted(sorted: &[f64]) -> Option<(f64, f64)> {
 }
 
 /// P(A*^2 >= a) by the published fit, which is a curve in four parts.
-pub(crate) fn p_value(a: f64) -> f64 {
+pub fn p_value(a: f64) -> f64 {
     if a >= 0.6 {
         // The published parabola turns upwards at 153.5, far beyond the values it was fitted to.
         let a = a.min(153.0);
