@@ -3,3 +3,5 @@
 mod faults;
 mod tidiness;
 mod reference;
+#[path = "published/checks.rs"]
+mod published_checks;

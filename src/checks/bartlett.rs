@@ -42,8 +42,7 @@ pub fn check(periods: &[(usize, f64)]) -> Check {
     // As a sum of ln(s_p^2 / s_j^2), so that nearly equal sds lose no digits.
     let raw: f64 = used.iter().map(|(df, variance)| df * fm::ln(pooled / variance)).sum();
     let groups = used.len() as f64;
-    let factor =
-        1.0 + (used.iter().map(|(df, _)| 1.0 / df).sum::<f64>() - 1.0 / df) / (3.0 * (groups - 1.0));
+    let factor = 1.0 + (used.iter().map(|(df, _)| 1.0 / df).sum::<f64>() - 1.0 / df) / (3.0 * (groups - 1.0));
     let statistic = (raw / factor).max(0.0);
     let Some(tail) = tails::chi_square(statistic, groups - 1.0) else {
         return Check::not_made(ID, STATISTIC, "the statistic is not a number");

@@ -35,10 +35,18 @@ pub fn check(periods: &[&[f64]]) -> Check {
     }
     let left_out = periods.len() - distances.len();
     if distances.len() < 2 {
-        return Check::not_made(ID, STATISTIC, format!("fewer than two periods have {FEWEST} readings or more"));
+        return Check::not_made(
+            ID,
+            STATISTIC,
+            format!("fewer than two periods have {FEWEST} readings or more"),
+        );
     }
     let (Some(between), Some(within)) = spread(&distances) else {
-        return Check::not_made(ID, STATISTIC, "the readings of the periods are not numbers of a usable size");
+        return Check::not_made(
+            ID,
+            STATISTIC,
+            "the readings of the periods are not numbers of a usable size",
+        );
     };
     let total: usize = distances.iter().map(Vec::len).sum();
     let (df_between, df_within) = ((distances.len() - 1) as f64, (total - distances.len()) as f64);
@@ -51,10 +59,16 @@ pub fn check(periods: &[&[f64]]) -> Check {
     };
     let p = tail.upper;
     let verdict = if p < REMARK_BELOW { "differs from period to period" } else { "is alike in all periods" };
-    let mut told =
-        format!("The spread of readings {verdict} ({}, {}).", words::count(distances.len(), "period"), words::p_is(p));
+    let mut told = format!(
+        "The spread of readings {verdict} ({}, {}).",
+        words::count(distances.len(), "period"),
+        words::p_is(p)
+    );
     if left_out > 0 {
-        told.push_str(&format!(" {} with fewer than {FEWEST} readings left out.", words::count(left_out, "period")));
+        told.push_str(&format!(
+            " {} with fewer than {FEWEST} readings left out.",
+            words::count(left_out, "period")
+        ));
     }
     Check::of(ID, STATISTIC, statistic)
         .reference(format!("F, {} and {} df", distances.len() - 1, total - distances.len()))

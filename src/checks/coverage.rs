@@ -83,7 +83,8 @@ pub fn check(made: &Made) -> Check {
         } else {
             told.push_str(&format!(" No reading in {}.", empty.join(", ")));
             if dated >= made.months.len() {
-                let found = if empty.len() * 2 >= made.months.len() { Concern::Flag } else { Concern::Remark };
+                let found =
+                    if empty.len() * 2 >= made.months.len() { Concern::Flag } else { Concern::Remark };
                 concern = concern.max(found);
             }
         }

@@ -46,11 +46,15 @@ pub fn check(periods: &[PeriodMean], pooled_df: Option<f64>, levels_may_differ: 
     if periods.iter().any(|period| !(period.uncertainty > 0.0 && period.uncertainty.is_finite())) {
         return Check::not_made(ID, name, "a period's mean has no uncertainty above 0");
     }
-    let weights: Vec<f64> = periods.iter().map(|period| 1.0 / (period.uncertainty * period.uncertainty)).collect();
+    let weights: Vec<f64> =
+        periods.iter().map(|period| 1.0 / (period.uncertainty * period.uncertainty)).collect();
     let weight: f64 = weights.iter().sum();
     let centre = periods.iter().zip(&weights).map(|(period, w)| w * period.mean).sum::<f64>() / weight;
-    let q: f64 =
-        periods.iter().zip(&weights).map(|(period, w)| w * (period.mean - centre) * (period.mean - centre)).sum();
+    let q: f64 = periods
+        .iter()
+        .zip(&weights)
+        .map(|(period, w)| w * (period.mean - centre) * (period.mean - centre))
+        .sum();
     let df = (periods.len() - 1) as f64;
     let (statistic, tail, law) = match pooled_df {
         None => (q, tails::chi_square(q, df), format!("chi-square, {} df", periods.len() - 1)),

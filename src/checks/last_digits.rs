@@ -50,7 +50,9 @@ pub fn check(texts: &[&str], within_sd: f64) -> Check {
     }
     let place: Option<f64> = format!("1e{}", -i64::from(decimals)).parse().ok();
     if !place.is_some_and(|place| within_sd >= LEAST_SD * place) {
-        let why = format!("the within sd is not above {LEAST_SD} units of the last place, so digits need not be equally frequent");
+        let why = format!(
+            "the within sd is not above {LEAST_SD} units of the last place, so digits need not be equally frequent"
+        );
         return Check::not_made(ID, CHI_SQUARE, why);
     }
     let Some(counts) = counts(texts) else {
@@ -60,11 +62,17 @@ pub fn check(texts: &[&str], within_sd: f64) -> Check {
     let size = n as f64;
     let made = if n >= FEWEST_FOR_CHI_SQUARE {
         let expected = size / 10.0;
-        let chi = counts.iter().map(|&seen| (seen as f64 - expected) * (seen as f64 - expected)).sum::<f64>() / expected;
-        tails::chi_square(chi, 9.0).map(|tail| Check::of(ID, CHI_SQUARE, chi).reference("chi-square, 9 df").p(tail.upper))
+        let chi = counts.iter().map(|&seen| (seen as f64 - expected) * (seen as f64 - expected)).sum::<f64>()
+            / expected;
+        tails::chi_square(chi, 9.0)
+            .map(|tail| Check::of(ID, CHI_SQUARE, chi).reference("chi-square, 9 df").p(tail.upper))
     } else {
         let upper = binomial_upper(n, favourites, 0.2);
-        Some(Check::of(ID, NOUGHTS_AND_FIVES, favourites as f64).reference(format!("binomial, n = {n}, 1/5")).p(upper))
+        Some(
+            Check::of(ID, NOUGHTS_AND_FIVES, favourites as f64)
+                .reference(format!("binomial, n = {n}, 1/5"))
+                .p(upper),
+        )
     };
     let Some(check) = made else {
         return Check::not_made(ID, CHI_SQUARE, "the statistic is not a number");

@@ -51,8 +51,7 @@ pub fn check(readings: &[f64]) -> Check {
     } else {
         "not far from the normal shape"
     };
-    let mut told =
-        format!("The {} lie {verdict} ({}).", words::count(n, "reading"), words::p_is(p));
+    let mut told = format!("The {} lie {verdict} ({}).", words::count(n, "reading"), words::p_is(p));
     if n < 20 {
         told.push_str(" With so few readings only gross departures show.");
     }

@@ -106,7 +106,10 @@ pub fn check(readings: &[f64]) -> Outliers {
     let most = (n / 10).clamp(1, 10);
     let steps = steps(readings, most);
     let Some(first) = steps.first() else {
-        return Outliers { check: Check::not_made(ID, STATISTIC, "the readings are equal"), named: Vec::new() };
+        return Outliers {
+            check: Check::not_made(ID, STATISTIC, "the readings are equal"),
+            named: Vec::new(),
+        };
     };
     let flagged = number(&steps, FLAG_BELOW);
     let named: Vec<Step> = steps.iter().copied().take(number(&steps, REMARK_BELOW)).collect();

@@ -106,7 +106,8 @@ pub fn check(n: usize, smallest_seen: f64, largest_seen: f64, pieces: &[Piece]) 
     if n < 2 {
         return Check::not_made(ID, STATISTIC, "fewer than two readings have no extremes");
     }
-    let (Some(high), Some(low)) = (largest(pieces, n, largest_seen), smallest(pieces, n, smallest_seen)) else {
+    let (Some(high), Some(low)) = (largest(pieces, n, largest_seen), smallest(pieces, n, smallest_seen))
+    else {
         return Check::not_made(ID, STATISTIC, "there is no posterior of level and within sd");
     };
     let (p_high, p_low) = (high.two_sided(), low.two_sided());

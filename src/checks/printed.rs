@@ -62,18 +62,14 @@ pub fn in_last_places(texts: &[&str]) -> Option<(Vec<i128>, i32)> {
 }
 
 /// The common step: one unit of the last decimal place, or a coarser usual step (2, 5, 10, 20, 25,
-/// 50, 100 units) if all readings are multiples of it and chance would make so many readings
-/// multiples of it less than once in a thousand times.
+/// 50, 100 units) if all readings, at least five, are multiples of it and chance would make so many
+/// readings multiples of it less than once in a thousand times.
 pub fn common_step(texts: &[&str]) -> Option<Step> {
     let (whole, decimals) = in_last_places(texts)?;
     let mut last_places = 1;
-    for coarse in [2_i128, 5, 10, 20, 25, 50, 100] {
-        let by_chance = whole.iter().try_fold(1.0_f64, |chance, _| {
-            let chance = chance / coarse as f64;
-            // Enough readings: stop, the chance only falls.
-            if chance < 1e-3 { Err(chance) } else { Ok(chance) }
-        });
-        if by_chance.is_err() && whole.iter().all(|value| value % coarse == 0) {
+    for (coarse, fewest) in [(2_i128, 10), (5, 5), (10, 5), (20, 5), (25, 5), (50, 5), (100, 5)] {
+        // 2^-10 and 5^-5 are the first powers below 1/1000.
+        if whole.len() >= fewest && whole.iter().all(|value| value % coarse == 0) {
             last_places = coarse;
         }
     }

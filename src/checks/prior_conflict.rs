@@ -60,7 +60,9 @@ pub fn tails_of(pieces: &[NormalPiece], value: f64) -> Option<Tails> {
 pub fn check(observed_mean: f64, n: usize, predictive: &[NormalPiece]) -> Check {
     match tails_of(predictive, observed_mean) {
         Some(tail) => from_tails(observed_mean, n, tail, expected(predictive)),
-        None => Check::not_made(ID, STATISTIC, "the prior gives no distribution for the mean of the readings"),
+        None => {
+            Check::not_made(ID, STATISTIC, "the prior gives no distribution for the mean of the readings")
+        }
     }
 }
 
@@ -84,7 +86,8 @@ pub fn from_tails(observed_mean: f64, n: usize, tail: Tails, expected: Option<f6
     if let Some(z) = tails::normal_deviate(tail) {
         check = check.extra("z", z);
     }
-    let mut told = format!("The mean of the {} is {}", words::count(n, "reading"), words::number(observed_mean));
+    let mut told =
+        format!("The mean of the {} is {}", words::count(n, "reading"), words::number(observed_mean));
     if let Some(expected) = expected {
         check = check.extra("expected mean", expected);
         told.push_str(&format!("; the prior expected about {}", words::number(expected)));
@@ -102,7 +105,8 @@ pub fn from_tails(observed_mean: f64, n: usize, tail: Tails, expected: Option<f6
 
 fn expected(pieces: &[NormalPiece]) -> Option<f64> {
     let weight: f64 = pieces.iter().map(|piece| piece.weight).sum();
-    let sum: f64 = pieces.iter().filter(|piece| piece.weight > 0.0).map(|piece| piece.weight * piece.mean).sum();
+    let sum: f64 =
+        pieces.iter().filter(|piece| piece.weight > 0.0).map(|piece| piece.weight * piece.mean).sum();
     let mean = sum / weight;
     mean.is_finite().then_some(mean)
 }

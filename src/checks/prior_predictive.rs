@@ -33,7 +33,7 @@ pub fn check(readings: &[f64], interval: (f64, f64)) -> Check {
     if readings.is_empty() {
         return Check::not_made(ID, STATISTIC, "the period has no single readings");
     }
-    if !(low < high) {
+    if low.partial_cmp(&high) != Some(std::cmp::Ordering::Less) {
         return Check::not_made(ID, STATISTIC, "the prior gives no interval for a reading");
     }
     let below = readings.iter().filter(|&&value| value < low).count();

@@ -8,8 +8,8 @@
 //! Law: none; above 1/2 a remark, above 1 a flag (common practice, no source). Rounding adds about
 //! h^2/12 to the variance of a reading.
 //! Assumes: readings in the file as they were noted; a file that dropped trailing zeros can make the
-//! step look coarser. A step of 2, 5, 10, 20, 25, 50 or 100 last places is believed when all readings
-//! keep to it and chance would do so less than once in a thousand times.
+//! step look coarser. A step of 2, 5, 10, 20, 25, 50 or 100 last places is believed when all readings,
+//! at least five, keep to it and chance would do so less than once in a thousand times.
 //! Source: Sheppard 1898 for h^2/12.
 //!
 //! Worked: readings 12.5, 13.0, 11.5, 12.0, 14.5, 13.5 and within sd 0.8: the last place is 0.1, all

@@ -43,7 +43,8 @@ pub struct Runs {
 /// one on each.
 pub fn count(values: &[f64]) -> Option<Runs> {
     let median = tails::median(&mut values.to_vec())?;
-    let sides: Vec<bool> = values.iter().filter(|&&value| value != median).map(|&value| value > median).collect();
+    let sides: Vec<bool> =
+        values.iter().filter(|&&value| value != median).map(|&value| value > median).collect();
     let above = sides.iter().filter(|&&side| side).count();
     let below = sides.len() - above;
     if above == 0 || below == 0 || sides.len() < 3 {

@@ -32,7 +32,8 @@ pub fn check(period: [usize; 4], history: [usize; 4]) -> Check {
         return Check::not_made(ID, STATISTIC, "the period or its history has no dated readings");
     }
     let all = (ours + theirs) as f64;
-    let (mut statistic, mut quarters, mut cells, mut large, mut least) = (0.0, 0_usize, 0_usize, 0_usize, f64::INFINITY);
+    let (mut statistic, mut quarters, mut cells, mut large, mut least) =
+        (0.0, 0_usize, 0_usize, 0_usize, f64::INFINITY);
     for (here, there) in period.into_iter().zip(history) {
         if here + there == 0 {
             continue;

@@ -23,7 +23,6 @@ impl Tails {
     }
 }
 
-
 fn pair(lower: f64, upper: f64) -> Option<Tails> {
     (lower >= 0.0 && upper >= 0.0).then_some(Tails { lower, upper })
 }
@@ -46,7 +45,11 @@ pub fn normal_upper_quantile(upper: f64) -> Option<f64> {
 
 /// The normal deviate with the same tails, solved on the smaller one. None where that tail is 0.
 pub fn normal_deviate(tail: Tails) -> Option<f64> {
-    if tail.upper < tail.lower { normal::upper_quantile(tail.upper).ok() } else { normal::quantile(tail.lower).ok() }
+    if tail.upper < tail.lower {
+        normal::upper_quantile(tail.upper).ok()
+    } else {
+        normal::quantile(tail.lower).ok()
+    }
 }
 
 /// Both tails of chi-square with `df` degrees of freedom at x, not below 0.

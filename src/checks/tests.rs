@@ -16,7 +16,14 @@ fn every_kind_has_a_page_a_worked_number_a_source_and_its_own_name() {
         for word in ["Statistic: ", "Worked: ", "Source: "] {
             assert!(text.contains(word), "{}: no {word}", kind.id);
         }
-        assert!(text.contains("Law: ") || text.contains("no law") || text.contains("not a test") || text.contains("no test"), "{}", kind.id);
+        assert!(
+            text.contains("Law: ")
+                || text.contains("no law")
+                || text.contains("not a test")
+                || text.contains("no test"),
+            "{}",
+            kind.id
+        );
         assert!(!text.contains("//!") && !text.contains("use crate"), "{}", kind.id);
         assert!(!kind.source.is_empty());
         assert_eq!(ALL.iter().filter(|other| other.id == kind.id).count(), 1, "{}", kind.id);
@@ -26,7 +33,8 @@ fn every_kind_has_a_page_a_worked_number_a_source_and_its_own_name() {
 
 #[test]
 fn every_file_of_a_check_is_in_the_registry() {
-    let helpers = ["mod", "tests", "page", "words", "timed", "tails", "printed", "shapiro_wilk", "anderson_darling"];
+    let helpers =
+        ["mod", "tests", "page", "words", "timed", "tails", "printed", "shapiro_wilk", "anderson_darling"];
     let folder = concat!(env!("CARGO_MANIFEST_DIR"), "/src/checks");
     let mut files: Vec<String> = std::fs::read_dir(folder)
         .expect("the folder of the checks")
@@ -187,7 +195,13 @@ fn rounding_levels() {
 #[test]
 fn duplicates_are_named_with_their_places() {
     let row = |id, value, place| duplicates::Row { series: "B3", date: "2025-04-02", id, value, place };
-    let rows = [row("117", 41.2, "a:2"), row("118", 41.2, "a:3"), row("117", 41.2, "a:9"), row("", 7.0, "a:4"), row("", 7.0, "a:5")];
+    let rows = [
+        row("117", 41.2, "a:2"),
+        row("118", 41.2, "a:3"),
+        row("117", 41.2, "a:9"),
+        row("", 7.0, "a:4"),
+        row("", 7.0, "a:5"),
+    ];
     let found = duplicates::check(&rows);
     assert_eq!(found.repeats, [("a:2".to_owned(), "a:9".to_owned())]);
     assert_eq!(found.alike, [("a:4".to_owned(), "a:5".to_owned())]);
@@ -219,7 +233,8 @@ fn coverage_by_plan_month_and_gap() {
         .map(|(month, &readings)| coverage::Month { name: format!("2025-{:02}", month + 1), readings })
         .collect();
     let days = [70, 100, 130, 160, 190, 220, 250, 280, 310, 340];
-    let made = coverage::Made { planned: Some(12), used: 10, months: &months, period: Some((0, 364)), days: &days };
+    let made =
+        coverage::Made { planned: Some(12), used: 10, months: &months, period: Some((0, 364)), days: &days };
     let check = coverage::check(&made);
     assert_eq!(check.concern, Concern::Remark);
     assert!(check.meaning.contains("No reading in 2025-01, 2025-02."), "{}", check.meaning);
@@ -255,7 +270,8 @@ fn two_groups_in_cochrans_q_are_the_square_of_z() {
 #[test]
 fn one_sd_node_makes_the_predictive_spread_the_check_of_a_known_sd() {
     let known = within_sd::check(9, 14.2, 1.1);
-    let fitted = predictive_spread::check(9, 14.2, &[predictive_spread::SdNode { weight: 3.0, sd: 1.1 }], false);
+    let fitted =
+        predictive_spread::check(9, 14.2, &[predictive_spread::SdNode { weight: 3.0, sd: 1.1 }], false);
     let (a, b) = (known.p.expect("made"), fitted.p.expect("made"));
     assert!((a - b).abs() <= 1e-15 * a, "{a} {b}");
     assert!(predictive_spread::check(9, 14.2, &[], true).why.is_some());
@@ -280,7 +296,8 @@ fn a_mixture_conflict_uses_every_piece() {
     let narrow = NormalPiece { weight: 0.8, mean: 50.0, sd: 1.5 };
     let vague = NormalPiece { weight: 0.2, mean: 50.0, sd: 10.0 };
     let both = prior_conflict::tails_of(&[narrow, vague], 56.0).expect("made");
-    let by_hand = 0.8 * tails::normal(4.0).expect("a number").upper + 0.2 * tails::normal(0.6).expect("a number").upper;
+    let by_hand =
+        0.8 * tails::normal(4.0).expect("a number").upper + 0.2 * tails::normal(0.6).expect("a number").upper;
     assert!((both.upper - by_hand).abs() < 1e-15);
     assert!(prior_conflict::tails_of(&[NormalPiece { weight: -1.0, ..narrow }], 56.0).is_none());
     assert!(prior_conflict::tails_of(&[NormalPiece { sd: 0.0, ..narrow }], 56.0).is_none());
@@ -292,7 +309,13 @@ fn falling_pairs_are_counted_as_pair_by_pair() {
     let mut s = 0.0;
     for (place, early) in values.iter().enumerate() {
         for late in &values[place + 1..] {
-            s += if late > early { 1.0 } else if late < early { -1.0 } else { 0.0 };
+            s += if late > early {
+                1.0
+            } else if late < early {
+                -1.0
+            } else {
+                0.0
+            };
         }
     }
     assert_eq!(trend::mann_kendall(&values).map(|found| found.s), Some(s));
@@ -321,7 +344,8 @@ fn the_anderson_darling_p_falls_and_stays_small() {
 fn last_digits_need_spread_and_show_favourites() {
     // 30 readings with step 1 and sd far above 6 steps; 14 end in 0 or 5.
     let digits = [0, 5, 0, 5, 0, 5, 0, 5, 0, 5, 0, 5, 0, 5, 1, 2, 3, 4, 6, 7, 8, 9, 1, 2, 3, 4, 6, 7, 8, 9];
-    let texts: Vec<String> = digits.iter().enumerate().map(|(i, digit)| format!("{}", 100 + 10 * (i % 7) + digit)).collect();
+    let texts: Vec<String> =
+        digits.iter().enumerate().map(|(i, digit)| format!("{}", 100 + 10 * (i % 7) + digit)).collect();
     let texts: Vec<&str> = texts.iter().map(String::as_str).collect();
     let check = last_digits::check(&texts, 20.0);
     assert_eq!(check.statistic, Some(14.0));

@@ -154,7 +154,11 @@ pub fn check(readings: &[Timed], time_unit: &str) -> Check {
         format!("No trend in time shows ({} times, {}).", n, words::p_is(found.p))
     };
     let mut check = Check::of(ID, STATISTIC, found.s)
-        .reference(if found.exact { format!("exact, n = {n}") } else { format!("normal approximation, n = {n}") })
+        .reference(if found.exact {
+            format!("exact, n = {n}")
+        } else {
+            format!("normal approximation, n = {n}")
+        })
         .p(found.p)
         .extra("times", size)
         .extra("Kendall tau", tau);

@@ -6,7 +6,8 @@
 //!
 //! Statistic: the ratio of the period's mean to the mean expected from history.
 //! Rule, no law: the mean lies more than 3 sds of its prior predictive distribution from what was
-//! expected, and divided by one of the factors (below) it lies within 2. Then a flag.
+//! expected, and divided by one of the factors (below) it lies within 2, and the
+//! ratio is within a quarter of the factor. Then a flag.
 //! Factors, and their inverses: 10, 100 and 1000 (decimal units, a shifted point); 4.4268 (nitrate as
 //! ion and as nitrogen, 62.0049 / 14.0067), 3.2845 (nitrite as ion and as nitrogen, 46.0055 /
 //! 14.0067), 1.2878 (ammonium as ion and as nitrogen, 18.0385 / 14.0067), 9.80665 (kilogram-force and
@@ -68,7 +69,7 @@ pub fn check(period_mean: f64, expected_mean: f64, expected_sd: f64) -> Check {
             for times in [factor.times, 1.0 / factor.times] {
                 let left = (period_mean / times - expected_mean).abs() / expected_sd;
                 // A factor must explain the ratio itself, not merely shrink a far value below a wide sd.
-                let explains = (ratio / times - 1.0).abs() < 0.5;
+                let explains = (ratio / times - 1.0).abs() < 0.25;
                 if left < NEAR && explains && nearest.is_none_or(|(best, _, _)| left < best) {
                     nearest = Some((left, times, factor.what));
                 }
@@ -82,7 +83,8 @@ pub fn check(period_mean: f64, expected_mean: f64, expected_sd: f64) -> Check {
         .extra("expected sd", expected_sd);
     let told = match nearest {
         Some((left, times, what)) => {
-            check = check.concern(Concern::Flag).extra("possible factor", times).extra("sds off after it", left);
+            check =
+                check.concern(Concern::Flag).extra("possible factor", times).extra("sds off after it", left);
             format!(
                 "The mean {} lies {} sds from the expected {}; divided by {} it would lie {} sds from it. Possible cause: \
                  {what}.",

@@ -39,9 +39,5 @@ pub fn count(n: usize, singular: &str) -> String {
 }
 
 fn trimmed(fixed: String) -> String {
-    if fixed.contains('.') {
-        fixed.trim_end_matches('0').trim_end_matches('.').to_owned()
-    } else {
-        fixed
-    }
+    if fixed.contains('.') { fixed.trim_end_matches('0').trim_end_matches('.').to_owned() } else { fixed }
 }
