@@ -145,7 +145,7 @@ fn weigh_parts(
     Ok((all, ln_shares.iter().map(|s| fm::exp(s - whole)).collect()))
 }
 
-fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
+pub(super) fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
     let periods = (!node.long_mean.is_nan()).then(|| PeriodsPart {
         long_run_mean: units.value_out(node.long_mean),
         long_run_var: units.square_out(node.long_var),

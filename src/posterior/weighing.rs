@@ -11,7 +11,7 @@ use crate::quantity::Absent;
 const AGREED: f64 = 2e-11;
 /// And the second rule to this.
 const CONFIRMED: f64 = 1e-9;
-const FLOOR: f64 = 72.0;
+pub(super) const FLOOR: f64 = 72.0;
 
 /// The nodes of a plane, with ln of the whole weight.
 #[derive(Debug, Clone)]

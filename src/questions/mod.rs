@@ -176,3 +176,6 @@ fn unknown_kind(asked: &QuestionPlan) -> Fault {
         None => fault.repair("choose the kind that fits; `reassay explain questions` tells them apart"),
     }
 }
+
+#[cfg(test)]
+mod tests;

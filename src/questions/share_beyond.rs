@@ -25,7 +25,7 @@ use super::{Linear, Question, QuestionKind, Subject, steps};
 use crate::diagnostics::{Caution, Fault, Faults};
 use crate::math::{normal, roots};
 use crate::plan::{Plan, QuestionPlan};
-use crate::posterior::{Posterior, When};
+use crate::posterior::{Piece, Posterior, When};
 use crate::quantity::{Absent, Beyond, Figure};
 use crate::spec::keys::{Key, Takes};
 use crate::spec::language;
@@ -125,26 +125,32 @@ fn apart(
     inside: f64,
 ) -> Result<(f64, f64), Absent> {
     let (middle, half) = (0.5 * (lower + upper), 0.5 * (upper - lower));
+    let tail = normal::upper_quantile(0.5 * outside).map_err(|error| Absent::failed(error.to_string()))?;
+    // The σ with which the share outside is `outside` in the middle already: a kink of the distance.
+    let kink = half / tail;
     let failed = RefCell::new(None);
-    let distance = |sigma: f64| match distance(half, sigma, outside, inside) {
-        Ok(distance) => distance,
-        Err(error) => {
-            failed.borrow_mut().get_or_insert(Absent::failed(error.to_string()));
-            0.0
+    let split = |piece: &Piece| -> (f64, f64) {
+        let d = match distance(half, piece.reading_sd, outside, inside) {
+            Ok(distance) => distance,
+            Err(error) => {
+                failed.borrow_mut().get_or_insert(Absent::failed(error.to_string()));
+                return (0.0, 0.0);
+            }
+        };
+        if d == 0.0 {
+            return (1.0, 0.0);
         }
+        beyond::normal_split(
+            Beyond::Outside(middle - d, middle + d),
+            piece.level_mean,
+            piece.level_var.sqrt(),
+        )
     };
-    let above = posterior.affine(When::This, 1.0, &|sigma| (-distance(sigma), 0.0))?;
-    let below = posterior.affine(When::This, 1.0, &|sigma| (distance(sigma), 0.0))?;
-    let far = above.sf(middle) + below.cdf(middle);
-    // θ − d ≤ c less θ + d ≤ c: from the tail that is smaller.
-    let near = if above.cdf(middle) <= below.sf(middle) {
-        above.cdf(middle) - below.cdf(middle)
-    } else {
-        below.sf(middle) - above.sf(middle)
-    };
+    let far = posterior.expect_with_kink(kink, &|piece| split(piece).0)?;
+    let near = posterior.expect_with_kink(kink, &|piece| split(piece).1)?;
     match failed.into_inner() {
         Some(absent) => Err(absent),
-        None => Ok((far, near.max(0.0))),
+        None => Ok((far, near)),
     }
 }
 
