@@ -25,7 +25,11 @@ pub struct NormalMixture {
     width: f64,
 }
 
-/// Lower tail, upper tail and density at one place.
+/// Closeness of a quantile, in widths: as good as the numbers allow, and enough to compare lengths in a scan.
+const EXACT: f64 = 1e-14;
+const ROUGH: f64 = 1e-5;
+
+/// One tail and the density at one place.
 struct Shape {
     tail: f64,
     density: f64,
@@ -154,13 +158,21 @@ impl NormalMixture {
     pub fn quantile(&self, p: f64) -> Result<f64> {
         inside_unit("mixture quantile", "p", p)?;
         // 1 − p is exact for p from ½ up.
-        if p <= 0.5 { self.solve_tail(p, true, None) } else { self.solve_tail(1.0 - p, false, None) }
+        if p <= 0.5 {
+            self.solve_tail(p, true, None, EXACT)
+        } else {
+            self.solve_tail(1.0 - p, false, None, EXACT)
+        }
     }
 
     /// The t with chance q above it, q strictly between 0 and 1.
     pub fn upper_quantile(&self, q: f64) -> Result<f64> {
         inside_unit("mixture upper quantile", "q", q)?;
-        if q <= 0.5 { self.solve_tail(q, false, None) } else { self.solve_tail(1.0 - q, true, None) }
+        if q <= 0.5 {
+            self.solve_tail(q, false, None, EXACT)
+        } else {
+            self.solve_tail(1.0 - q, true, None, EXACT)
+        }
     }
 
     /// The shortest single interval that holds `prob`, 0 < prob < 1.
@@ -212,7 +224,7 @@ impl NormalMixture {
     }
 
     /// The t whose lower (or upper) tail is `wanted`.
-    fn solve_tail(&self, wanted: f64, lower: bool, start: Option<f64>) -> Result<f64> {
+    fn solve_tail(&self, wanted: f64, lower: bool, start: Option<f64>, closeness: f64) -> Result<f64> {
         let z = normal::quantile(wanted)?;
         let side = if lower { z } else { -z };
         // The quantile of a mixture lies between the least and the greatest quantile of its parts.
@@ -228,7 +240,7 @@ impl NormalMixture {
         let margin = 1e-12 * (hi - lo);
         let ln_wanted = fm::ln(wanted);
         let guess = start.unwrap_or(self.mean + self.width * side);
-        let tolerance = Tolerance { relative: 1e-15, absolute: 1e-14 * self.width, cap: 500 };
+        let tolerance = Tolerance { relative: 1e-15, absolute: closeness * self.width, cap: 500 };
         newton_increasing(
             |t| {
                 let shape = self.shape(t, lower);
@@ -251,40 +263,42 @@ impl NormalMixture {
     fn shortest_by(&self, prob: f64, exp_scale: bool) -> Result<(f64, f64)> {
         inside_unit("shortest interval", "prob", prob)?;
         let outside = 1.0 - prob;
-        let ends = |share: f64, guess: Option<(f64, f64)>| -> Result<(f64, f64)> {
-            let (below, above) = (outside * share, outside * (1.0 - share));
-            let lo = if below <= 0.5 {
-                self.solve_tail(below, true, guess.map(|g| g.0))?
-            } else {
-                self.quantile(below)?
-            };
-            let hi = if above <= 0.5 {
-                self.solve_tail(above, false, guess.map(|g| g.1))?
-            } else {
-                self.upper_quantile(above)?
-            };
-            Ok((lo, hi))
-        };
         // The length (or its logarithm) that is to be least.
         let length =
             |(lo, hi): (f64, f64)| if exp_scale { hi + fm::ln(-fm::exp_m1(lo - hi)) } else { hi - lo };
-        let mut shares = vec![1e-12, 1e-9, 1e-7, 1e-6, 1e-5, 1e-4, 1e-3, 3e-3, 0.01, 0.03];
-        shares.extend((1..24).map(|i| f64::from(i) / 24.0));
-        shares.extend([0.97, 0.99, 0.997, 0.999, 0.9999, 1.0 - 1e-6]);
-        let mut scanned: Vec<(f64, (f64, f64))> = Vec::with_capacity(shares.len());
-        for share in shares {
-            let found = ends(share, scanned.last().map(|s| s.1))?;
-            scanned.push((share, found));
+        let mut scanned: Vec<(f64, (f64, f64))> = Vec::with_capacity(48);
+        let inner = (1..24).map(|i| f64::from(i) / 24.0);
+        for share in [0.003, 0.01, 0.02].into_iter().chain(inner).chain([0.98, 0.99, 0.997]) {
+            let ends = self.ends(outside, share, scanned.last().map(|s| s.1), ROUGH)?;
+            scanned.push((share, ends));
+        }
+        // A least length at an edge of the scan: look closer to that edge.
+        if length(scanned[0].1) < length(scanned[1].1) {
+            for share in [1e-3, 1e-4, 1e-5, 1e-6, 1e-7, 1e-9, 1e-12] {
+                let ends = self.ends(outside, share, Some(scanned[0].1), ROUGH)?;
+                scanned.insert(0, (share, ends));
+            }
+        }
+        let last = scanned.len() - 1;
+        if length(scanned[last].1) < length(scanned[last - 1].1) {
+            for rest in [1e-3, 1e-4, 1e-5, 1e-6, 1e-7, 1e-9, 1e-12] {
+                let ends = self.ends(outside, 1.0 - rest, scanned.last().map(|s| s.1), ROUGH)?;
+                scanned.push((1.0 - rest, ends));
+            }
         }
         let mut best: Option<(f64, (f64, f64))> = None;
-        for (i, (_, found)) in scanned.iter().enumerate() {
+        for (i, (share, found)) in scanned.iter().enumerate() {
             let here = length(*found);
             let left = if i > 0 { length(scanned[i - 1].1) } else { f64::INFINITY };
             let right = scanned.get(i + 1).map_or(f64::INFINITY, |s| length(s.1));
             if here <= left && here <= right {
                 let from = scanned[i.saturating_sub(1)];
                 let to = scanned[(i + 1).min(scanned.len() - 1)];
-                let refined = self.refine_shortest(outside, exp_scale, from, to, *found)?;
+                let refined = match self.refine_shortest(outside, exp_scale, from.1, to.1, *found)? {
+                    Some(refined) => refined,
+                    // Point masses or an edge: the scanned division stands.
+                    None => self.ends(outside, *share, Some(*found), EXACT)?,
+                };
                 let size = length(refined);
                 if best.is_none_or(|(least, _)| size < least) {
                     best = Some((size, refined));
@@ -294,21 +308,47 @@ impl NormalMixture {
         best.map(|b| b.1).ok_or_else(|| MathError::new("shortest interval: not found"))
     }
 
+    /// The ends that leave `share` of the outside mass below and the rest above.
+    fn ends(
+        &self,
+        outside: f64,
+        share: f64,
+        guess: Option<(f64, f64)>,
+        closeness: f64,
+    ) -> Result<(f64, f64)> {
+        let (below, above) = (outside * share, outside * (1.0 - share));
+        let lo = if below <= 0.5 {
+            self.solve_tail(below, true, guess.map(|g| g.0), closeness)?
+        } else {
+            self.quantile(below)?
+        };
+        let hi = if above <= 0.5 {
+            self.solve_tail(above, false, guess.map(|g| g.1), closeness)?
+        } else {
+            self.upper_quantile(above)?
+        };
+        Ok((lo, hi))
+    }
+
     /// The ends with equal (transformed) densities between two scanned divisions of the tails.
     fn refine_shortest(
         &self,
         outside: f64,
         exp_scale: bool,
-        (_, from): (f64, (f64, f64)),
-        (_, to): (f64, (f64, f64)),
+        from: (f64, f64),
+        to: (f64, f64),
         scanned: (f64, f64),
-    ) -> Result<(f64, f64)> {
+    ) -> Result<Option<(f64, f64)>> {
         let upper_end = |lo: f64, guess: f64| -> Result<f64> {
             let above = outside - self.cdf(lo);
             if above <= 0.0 {
                 return Err(MathError::new("shortest interval: no upper end"));
             }
-            if above <= 0.5 { self.solve_tail(above, false, Some(guess)) } else { self.upper_quantile(above) }
+            if above <= 0.5 {
+                self.solve_tail(above, false, Some(guess), EXACT)
+            } else {
+                self.upper_quantile(above)
+            }
         };
         let slant = |t: f64| self.ln_pdf(t) - if exp_scale { t } else { 0.0 };
         let mut failure = None;
@@ -333,10 +373,9 @@ impl NormalMixture {
                 return Err(e);
             }
             let lo = found?;
-            return Ok((lo, upper_end(lo, scanned.1)?));
+            return Ok(Some((lo, upper_end(lo, scanned.1)?)));
         }
-        // Point masses or an edge: the scanned division stands.
-        Ok(scanned)
+        Ok(None)
     }
 }
 
@@ -420,6 +459,28 @@ mod tests {
             assert!((m.sf(u) - p).abs() <= 1e-11 * p, "{p}: {u}");
         }
         assert!(m.ln_cdf(-1e6) < -1e10 && m.ln_sf(1e6) < -1e10 && m.ln_pdf(1e6).is_finite());
+    }
+
+    #[test]
+    fn nodes_of_the_sd_give_student() {
+        // x | σ ~ N(0, σ²), p(σ²) scaled inverse chi-square with ν: x ~ t_ν. The nodes against the closed form.
+        use crate::math::quadrature::{LineOptions, line};
+        use crate::math::student;
+        for df in [2.0, 5.0, 9.0, 40.0] {
+            // In u = ln σ: σ^{−ν} exp(−ν/2σ²).
+            let ln_f = |u: f64| -df * u - 0.5 * df * fm::exp(-2.0 * u);
+            let far = student::upper_quantile(1e-12, df).unwrap();
+            let tail = |u: f64| normal::sf(far * fm::exp(-u));
+            let opts = LineOptions { functionals: vec![&tail], ..LineOptions::default() };
+            let nodes = line(ln_f, 0.0, 0.5, &opts).unwrap().nodes;
+            let m =
+                NormalMixture::new(nodes.iter().map(|n| (n.weight(), 0.0, fm::exp(n.x))).collect()).unwrap();
+            for p in [1e-12, 1e-9, 1e-6, 1e-3, 0.025, 0.3] {
+                let t = student::upper_quantile(p, df).unwrap();
+                assert!((m.sf(t) / p - 1.0).abs() < 1e-9, "{df} {p}: {}", m.sf(t) / p - 1.0);
+                assert!((m.upper_quantile(p).unwrap() / t - 1.0).abs() < 1e-10, "{df} {p}");
+            }
+        }
     }
 
     #[test]

@@ -11,7 +11,7 @@ pub mod maps;
 pub mod plane;
 
 pub use expect::expect_normal;
-pub use kronrod::gk21;
+pub use kronrod::{confirm_line, gk21};
 pub use line::{Line, LineOptions, Node, Tails, line};
 pub use plane::{Plane, PlaneNode, PlaneOptions, plane};
 

@@ -11,6 +11,12 @@ def pieces(lo, hi, parts):
     return [lo + (hi - lo) * mpf(i) / parts for i in range(parts + 1)]
 
 
+def scaled_quad(ln_f, points):
+    """The integral of exp(ln_f), relative to its highest value on the points: quad stops on an absolute error."""
+    top = max(ln_f(point) for point in points)
+    return quad(lambda z: exp(ln_f(z) - top), points) * exp(top)
+
+
 def write(name, header, rows):
     with open(name, "w") as out:
         out.write(header + "\n")
@@ -24,14 +30,14 @@ def gamma_tails(a, x):
     root = sqrt(a)
     ln_constant = a * log(a) - a - loggamma(a) - log(root) + log(1)
 
-    def density(z):
+    def ln_density(z):
         mu = z / root
-        return exp(ln_constant + (a - 1) * log1p(mu) - a * mu)
+        return ln_constant + (a - 1) * log1p(mu) - a * mu
 
     z = (x - a) / root
     # exp(-z^2/2) falls below 1e-400 at 43; the gamma's upper tail is a little heavier.
-    lower = quad(density, pieces(max(-root * mpf("0.999999"), min(z, 0) - 45), z, 60))
-    upper = quad(density, pieces(z, max(z, 0) + 60, 60))
+    lower = scaled_quad(ln_density, pieces(max(-root * mpf("0.999999"), min(z, 0) - 45), z, 60))
+    upper = scaled_quad(ln_density, pieces(z, max(z, 0) + 60, 60))
     return lower, upper
 
 
@@ -52,16 +58,16 @@ def f_tails(f, d1, d2):
     a, b = d1 / 2, d2 / 2
     ln_beta = loggamma(a) + loggamma(b) - loggamma(a + b)
 
-    def density(w):
+    def ln_density(w):
         ratio = exp(w) * d1 / d2
         # x^a (1-x)^b / B with x = ratio/(1+ratio)
-        return exp(a * log(ratio) - (a + b) * log1p(ratio) - ln_beta)
+        return a * log(ratio) - (a + b) * log1p(ratio) - ln_beta
 
     w = log(f)
     sd = sqrt(2 / d1 + 2 / d2)
     down = min(w, 0) - 60 * sd - 120 / a
     up = max(w, 0) + 60 * sd + 120 / b
-    return quad(density, pieces(down, w, 80)), quad(density, pieces(w, up, 80))
+    return scaled_quad(ln_density, pieces(down, w, 80)), scaled_quad(ln_density, pieces(w, up, 80))
 
 
 rows_c, rows_s = [], []
@@ -84,11 +90,12 @@ def noncentral_tail(t, df, delta):
     root = sqrt(2 * df)
     ln_constant = log(2) + a * log(a) - loggamma(a) - log(root)
 
-    def integrand(v):
+    def ln_integrand(v):
         u = v / root
-        return exp(ln_constant + df * u - a * exp(2 * u)) * erfc((t * exp(u) - delta) / sqrt(mpf(2))) / 2
+        chance = erfc((t * exp(u) - delta) / sqrt(mpf(2))) / 2
+        return ln_constant + df * u - a * exp(2 * u) + log(chance)
 
-    return quad(integrand, pieces(mpf(-45), mpf(45), 90))
+    return scaled_quad(ln_integrand, pieces(mpf(-45), mpf(45), 90))
 
 
 rows_s, rows_c = [], []

@@ -3,7 +3,9 @@
 //! Source: Piessens et al. 1983, *QUADPACK* (nodes and weights of QK21); bisection of the worst interval first.
 
 use super::Integral;
+use super::line::Line;
 use crate::math::error::{MathError, Result};
+use crate::math::fm;
 
 const NODES: [f64; 11] = [
     0.995_657_163_025_808_1,
@@ -111,10 +113,58 @@ pub fn gk21(mut f: impl FnMut(f64) -> f64, a: f64, b: f64, tol: f64) -> Result<I
     }
 }
 
+/// Integrates exp(ln_f) again by `gk21`, over the range of the line's nodes split around its highest point, and hands
+/// back the relative difference.
+///
+/// `ln_f` must be the one that the line was made from. A difference above `tolerance`, or a rule that does not converge,
+/// is an error: two independent rules that disagree mean that one of them missed something.
+pub fn confirm_line(mut ln_f: impl FnMut(f64) -> f64, line: &Line, tolerance: f64) -> Result<f64> {
+    let (Some(first), Some(last)) = (line.nodes.first(), line.nodes.last()) else {
+        return Err(MathError::new("integral: no nodes to confirm"));
+    };
+    let top = line.mode;
+    let mut ends = vec![first.x];
+    for place in [
+        top.x - 6.0 * top.left,
+        top.x - 1.5 * top.left,
+        top.x,
+        top.x + 1.5 * top.right,
+        top.x + 6.0 * top.right,
+    ] {
+        if place > ends[ends.len() - 1] && place < last.x {
+            ends.push(place);
+        }
+    }
+    ends.push(last.x);
+    let mut total = 0.0;
+    for pair in ends.windows(2) {
+        total += gk21(|x| fm::exp(ln_f(x) - top.ln_height), pair[0], pair[1], 0.1 * tolerance)?.value;
+    }
+    let difference = fm::exp_m1(fm::ln(total) + top.ln_height - line.ln_integral).abs();
+    if difference <= tolerance {
+        Ok(difference)
+    } else {
+        Err(MathError::new(format!(
+            "integral: trapezoid and Gauss–Kronrod differ by {difference:e} of the value"
+        )))
+    }
+}
+
 #[cfg(test)]
 mod tests {
     use super::*;
-    use crate::math::fm;
+    use crate::math::quadrature::{LineOptions, line};
+
+    #[test]
+    fn both_rules_agree_and_a_missed_peak_is_noticed() {
+        let skew = |u: f64| 3.0 * u - fm::exp(u);
+        let found = line(skew, 0.0, 1.0, &LineOptions::default()).unwrap();
+        // ∫ exp(3u − eᵘ) du = Γ(3) = 2.
+        assert!((found.ln_integral - fm::LN_2).abs() < 1e-13);
+        assert!(confirm_line(skew, &found, 1e-10).unwrap() < 1e-11);
+        let with_bump = |u: f64| fm::ln_add_exp(skew(u), -3.0 - 50.0 * (u + 2.0) * (u + 2.0));
+        assert!(confirm_line(with_bump, &found, 1e-10).is_err());
+    }
 
     #[test]
     fn textbook_integrals() {

@@ -158,12 +158,12 @@ pub fn line(
 }
 
 /// The largest power of two not above x > 0.
-pub(super) fn power_of_two_below(x: f64) -> f64 {
+fn power_of_two_below(x: f64) -> f64 {
     f64::from_bits(x.max(f64::MIN_POSITIVE).to_bits() & (0x7ff << 52))
 }
 
 /// The local maxima of `ln_f` that a scan around `start` finds, each refined.
-pub(super) fn highest_points(
+fn highest_points(
     ln_f: &mut impl FnMut(f64) -> f64,
     start: f64,
     scale: f64,

@@ -1,6 +1,5 @@
 //! The trapezoid rule on the plane for an integrand given by its logarithm.
 
-use super::line::power_of_two_below;
 use crate::math::error::{MathError, Result};
 use crate::math::fm;
 use crate::math::roots;
@@ -276,13 +275,7 @@ impl Lattice {
         let usable = bend_x > 0.0 && bend_y > 0.0 && shared < 1.0;
         let (slope, stretch) =
             if usable { (-twist / bend_y, 1.0 / (1.0 - shared).max(1e-4).sqrt()) } else { (0.0, 1.0) };
-        Ok(Self {
-            x0: x,
-            y0: y,
-            slope,
-            step_x: power_of_two_below(0.8 * width_x * stretch),
-            step_y: power_of_two_below(0.8 * width_y),
-        })
+        Ok(Self { x0: x, y0: y, slope, step_x: 0.75 * width_x * stretch, step_y: 0.75 * width_y })
     }
 
     fn place(&self, i: i64, j: i64) -> (f64, f64) {
