@@ -72,4 +72,6 @@ pub const PROMISES: &[Promise] = &[
     promise("nct_cdf", "noncentral_t::cdf", f64::INFINITY, 2e-13, Measure::Relative),
     promise("nct_sf", "noncentral_t::sf", f64::INFINITY, 2e-13, Measure::Relative),
     promise("owens_t", "owens_t::owens_t", f64::INFINITY, 5e-15, Measure::Relative),
+    promise("f_cdf", "f_law::cdf", f64::INFINITY, 5e-13, Measure::Relative),
+    promise("f_sf", "f_law::sf", f64::INFINITY, 5e-13, Measure::Relative),
 ];
