@@ -28,40 +28,51 @@ pub struct Written {
     pub left_over: Option<PathBuf>,
 }
 
-/// Writes a review into `out`, which is made where it does not exist. `run_json` gives the bytes of
-/// run.json for the folder's final place.
+/// A review written beside its place, or found in it already.
+#[derive(Debug)]
+pub struct Ready {
+    folder: PathBuf,
+    /// `None` where the very same review is there already.
+    staging: Option<Staging>,
+    replaces: bool,
+}
+
+/// Writes a review beside its place in `out`, which is made where it does not exist. `run_json` gives
+/// the bytes of run.json for the folder's final place. Dropped before [`Ready::place`], it leaves nothing.
 ///
 /// # Errors
 /// `final-review`: a final review of other bytes is there. `folder-not-a-review`, `folder-holds-more`:
 /// what is there would be lost. `input-changed`: an input is no longer what was read.
 /// `unwritable-folder`: the system refused.
-pub fn write(made: &Made, out: &Path, run_json: &dyn Fn(&Path) -> Vec<u8>) -> Outcome<Written> {
+pub fn ready(made: &Made, out: &Path, run_json: &dyn Fn(&Path) -> Vec<u8>) -> Outcome<Ready> {
     let new_out = !out.exists();
-    let written = write_into(made, out, run_json);
-    if written.is_err() && new_out {
-        // Only ever an empty folder that this call made; a failure here changes nothing.
-        let _ = fs::remove_dir(out);
-    }
-    written
-}
-
-fn write_into(made: &Made, out: &Path, run_json: &dyn Fn(&Path) -> Vec<u8>) -> Outcome<Written> {
     fs::create_dir_all(out).map_err(|error| unwritable(out, &error))?;
     let folder = out.join(&made.id);
     let replaces = match occupant(made, &folder)? {
-        Occupant::Same => return Ok(Written { folder, already_there: true, left_over: None }),
+        Occupant::Same => return Ok(Ready { folder, staging: None, replaces: false }),
         Occupant::None => false,
         Occupant::Replaceable => true,
     };
     clear_left_overs(out, &made.id);
-    let staging = Staging::new(out, &made.id)?;
+    let mut staging = Staging::new(out, &made.id)?;
+    staging.new_out = new_out.then(|| out.to_path_buf());
     for (path, content) in &made.files {
         put(&staging.path, path, content)?;
     }
     put(&staging.path, SUMS, &Content::Bytes(made.sums().into_bytes()))?;
     put(&staging.path, RUN_JSON, &Content::Bytes(run_json(&folder)))?;
-    let left_over = staging.move_to(&folder, replaces)?;
-    Ok(Written { folder, already_there: false, left_over })
+    Ok(Ready { folder, staging: Some(staging), replaces })
+}
+
+impl Ready {
+    /// Moves the review into its place.
+    pub fn place(self) -> Outcome<Written> {
+        let left_over = match self.staging {
+            None => return Ok(Written { folder: self.folder, already_there: true, left_over: None }),
+            Some(staging) => staging.move_to(&self.folder, self.replaces)?,
+        };
+        Ok(Written { folder: self.folder, already_there: false, left_over })
+    }
 }
 
 /// What stands at the folder's place.
@@ -166,17 +177,20 @@ fn foreign_file(folder: &Path, files: &[(String, What)]) -> Option<String> {
 }
 
 /// A folder under construction; gone with everything in it unless it was moved to its place.
+#[derive(Debug)]
 struct Staging {
     path: PathBuf,
     lock: Option<File>,
     moved: bool,
+    /// The folder of the reviews, where it was made for this one.
+    new_out: Option<PathBuf>,
 }
 
 impl Staging {
     fn new(out: &Path, id: &str) -> Result<Staging, Fault> {
         let path = beside(out, id, "part");
         fs::create_dir(&path).map_err(|error| unwritable(&path, &error))?;
-        let mut staging = Staging { path, lock: None, moved: false };
+        let mut staging = Staging { path, lock: None, moved: false, new_out: None };
         let lock = staging.path.join(LOCK);
         let file = File::create_new(&lock).map_err(|error| unwritable(&lock, &error))?;
         // A file system without locks: the folder is written all the same.
@@ -219,6 +233,10 @@ impl Drop for Staging {
             self.lock = None;
             // Nothing more can be done where even removing fails.
             let _ = fs::remove_dir_all(&self.path);
+            if let Some(out) = &self.new_out {
+                // Refused unless it is empty.
+                let _ = fs::remove_dir(out);
+            }
         }
     }
 }

@@ -116,7 +116,7 @@ fn made_in(scratch: &Scratch, status: &str, inputs: &str) -> (PathBuf, Made) {
 
 fn write(scratch: &Scratch, spec: &Path, made: &Made) -> Outcome<Written> {
     let note = |folder: &Path| run_json(folder, spec, "2026-01-20T10:00:00Z");
-    folder::write(made, &scratch.0.join("reviews"), &note)
+    folder::ready(made, &scratch.0.join("reviews"), &note)?.place()
 }
 
 /// A review written in a fresh place.
@@ -388,7 +388,7 @@ fn a_write_that_fails_leaves_what_was_there() {
     nothing_else_in_reviews(&scratch);
     // In a place that did not exist, the place is gone again too.
     let elsewhere = scratch.0.join("elsewhere");
-    assert!(folder::write(&made, &elsewhere, &|_| Vec::new()).is_err());
+    assert!(folder::ready(&made, &elsewhere, &|_| Vec::new()).is_err());
     assert!(!elsewhere.exists());
 }
 
@@ -403,7 +403,7 @@ fn a_system_that_refuses_in_the_middle_is_told_and_leaves_nothing() {
     assert_eq!((fault.code, fault.cause), ("unwritable-folder", Cause::Unreadable));
     assert!(!scratch.0.join("reviews").exists());
     // No folder can be made below a file.
-    let fault = folder::write(&made, &spec.join("reviews"), &|_| Vec::new()).unwrap_err().0.remove(0);
+    let fault = folder::ready(&made, &spec.join("reviews"), &|_| Vec::new()).unwrap_err().0.remove(0);
     assert_eq!((fault.code, fault.cause), ("unwritable-folder", Cause::Unreadable));
 }
 
