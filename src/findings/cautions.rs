@@ -5,24 +5,18 @@
 use super::{Answer, Findings, SeriesFindings};
 use crate::checks::Concern;
 use crate::diagnostics::Caution;
-use crate::plan::{AppliesTo, Condition, Plan, QuestionPlan, Threshold};
-use crate::spec::table::Kind;
+use crate::plan::Plan;
+use crate::questions::rule;
 use jiff::civil::Date;
 
-/// A chance this near to its threshold is printed with more digits and pointed out.
-const NEAR_THRESHOLD: f64 = 0.0005;
 /// Shares of rows that call for a word (common practice, no source).
 const MANY_EXCLUDED: f64 = 0.10;
 const MANY_MARKED: f64 = 0.50;
 const MOST_MARKED: f64 = 0.80;
-/// A prior that alone comes this near to a claim's threshold decides it (share of the way).
-const NEARLY_MET: f64 = 0.9;
-
 /// All cautions of the findings, in a fixed order: the plan's, then series by series.
 pub fn of(findings: &Findings) -> Vec<Caution> {
     let plan = &findings.plan;
     let mut all = of_rules(findings);
-    all.extend(of_limits(plan));
     all.extend(of_events(findings));
     if plan.quantity.bias.is_none() && plan.series.values().all(|own| own.bias.is_none()) {
         all.push(Caution::new(
@@ -62,50 +56,6 @@ fn of_rules(findings: &Findings) -> Vec<Caution> {
 fn first_reading(findings: &Findings) -> Option<Date> {
     let period = &findings.plan.review.period;
     findings.data.series.iter().filter_map(|series| series.period(period)?.facts.first_date).min()
-}
-
-/// A limit for one thing held against another.
-fn of_limits(plan: &Plan) -> Vec<Caution> {
-    let mut cautions = Vec::new();
-    for question in &plan.questions {
-        let Some(asked) = asked_about(question) else { continue };
-        for key in ["above", "below", "between", "outside"] {
-            let Some(Kind::Text(name)) = question.table.get(key).map(|value| &value.kind) else { continue };
-            let Some(limit) = plan.limit(name).filter(|limit| limit.applies_to != asked) else { continue };
-            cautions.push(
-                Caution::new(
-                    "limit-for-something-else",
-                    format!(
-                        "The limit \"{name}\" applies to {}, but the question asks about {}.",
-                        in_words(limit.applies_to),
-                        in_words(asked)
-                    ),
-                )
-                .of_question(&question.id),
-            );
-        }
-    }
-    cautions
-}
-
-/// What a kind of question holds against a limit.
-fn asked_about(question: &QuestionPlan) -> Option<AppliesTo> {
-    match question.ask.as_str() {
-        "level chance" | "period mean" | "difference" => Some(AppliesTo::Level),
-        "reading chance" | "count beyond" | "readings beyond" | "share beyond" => {
-            Some(AppliesTo::EachReading)
-        }
-        "percentile" => Some(AppliesTo::Percentile),
-        _ => None,
-    }
-}
-
-fn in_words(applies_to: AppliesTo) -> &'static str {
-    match applies_to {
-        AppliesTo::EachReading => "each reading",
-        AppliesTo::Level => "the level",
-        AppliesTo::Percentile => "a percentile of the readings",
-    }
 }
 
 /// A change of method or instrument since the earlier periods that make the prior.
@@ -234,49 +184,11 @@ fn of_checks(series: &SeriesFindings) -> Vec<Caution> {
 }
 
 fn of_answer(findings: &Findings, answer: &Answer) -> Vec<Caution> {
-    let Some(question) = findings.plan.questions.iter().find(|question| question.id == answer.id) else {
-        return Vec::new();
-    };
-    let Some(rule) = &question.rule else { return Vec::new() };
-    let mut cautions = Vec::new();
-    let chance = answer.figures.value("chance");
-    let prior_chance = answer.prior_only.value("chance");
-    for verdict in &rule.verdicts {
-        for (condition, threshold) in &verdict.conditions {
-            let Threshold::Number(threshold) = threshold else { continue };
-            let at_least = match condition {
-                Condition::ChanceAtLeast => true,
-                Condition::ChanceAtMost => false,
-                _ => continue,
-            };
-            if let Some(chance) = chance
-                && (chance - threshold).abs() < NEAR_THRESHOLD
-            {
-                cautions.push(Caution::new(
-                    "near-threshold",
-                    format!("The chance {chance:.6} lies within 0.0005 of the threshold {threshold}; unrounded figures were compared."),
-                ));
-            }
-            if let Some(prior) = prior_chance {
-                let nearly = if at_least {
-                    prior >= NEARLY_MET * threshold
-                } else {
-                    1.0 - prior >= NEARLY_MET * (1.0 - threshold)
-                        && *threshold > 0.0
-                        && prior <= threshold / NEARLY_MET
-                };
-                let given = answer.verdict.as_ref().and_then(|given| given.say.as_deref());
-                if nearly && given == Some(verdict.say.as_str()) {
-                    cautions.push(Caution::new(
-                        "prior-nearly-decides",
-                        format!(
-                            "The prior alone puts the chance at {prior:.3} against the threshold {threshold}: the verdict \"{}\" nearly holds before any reading of this period.",
-                            verdict.say
-                        ),
-                    ));
-                }
-            }
-        }
-    }
-    cautions.into_iter().map(|caution| caution.of_question(&answer.id)).collect()
+    let question = findings.plan.questions.iter().find(|question| question.id == answer.id);
+    let Some(rule) = question.and_then(|question| question.rule.as_ref()) else { return Vec::new() };
+    [rule::near_caution(rule, &answer.figures), rule::prior_alone_caution(rule, &answer.prior_only)]
+        .into_iter()
+        .flatten()
+        .map(|caution| caution.of_question(&answer.id))
+        .collect()
 }
