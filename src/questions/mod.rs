@@ -5,24 +5,30 @@ pub mod figures;
 pub mod rule;
 
 pub mod acceptance;
+pub mod apart;
 pub mod beyond;
 pub mod binomial;
 pub mod moved;
+pub mod preposterior;
 pub mod risks;
 pub mod steps;
 pub mod terms;
 pub mod tipping;
 
+pub mod change;
 pub mod characteristic_value;
 pub mod classes;
 pub mod count_beyond;
+pub mod difference;
 pub mod level_chance;
 pub mod level_interval;
 pub mod percentile;
 pub mod period_mean;
+pub mod ranking;
 pub mod reading_chance;
 pub mod reading_interval;
 pub mod readings_beyond;
+pub mod readings_needed;
 pub mod sd_interval;
 pub mod share_beyond;
 
@@ -61,6 +67,10 @@ pub const ALL: &[QuestionKind] = &[
     period_mean::KIND,
     classes::KIND,
     sd_interval::KIND,
+    change::KIND,
+    difference::KIND,
+    ranking::KIND,
+    readings_needed::KIND,
 ];
 
 /// A question, read and ready to be asked of any series.
@@ -87,6 +97,11 @@ pub trait Question: Debug + Send + Sync {
 
     /// Every key of the kind with the value used, defaults filled in, as TOML values.
     fn settings(&self) -> Vec<(&'static str, String)>;
+
+    /// Whether the answer belongs into the sensitivity section: a plan for the next period does not.
+    fn in_sensitivity(&self) -> bool {
+        true
+    }
 
     /// The names of the figures that a rule can compare: among `chance`, `count`, `estimate`, `lower`, `upper`.
     fn gives(&self) -> Vec<&'static str>;

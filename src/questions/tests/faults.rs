@@ -53,6 +53,22 @@ fn each_wrong_way_has_its_code() {
         ("ask = \"sd interval\"", "missing-key"),
         ("ask = \"sd interval\"\nsd = \"betwen\"", "wrong-value"),
         ("ask = \"readings beyond\"", "missing-key"),
+        ("ask = \"change\"\nagainst = 2025", "no-such-quantity"),
+        ("ask = \"change\"\nabove = 1\nbelow = 0", "either-or"),
+        ("ask = \"change\"\nband = [1, -1]", "wrong-type"),
+        ("ask = \"change\"\nband = -1", "wrong-type"),
+        ("ask = \"change\"\nagainst = [2024]", "wrong-type"),
+        ("ask = \"difference\"", "missing-key"),
+        ("ask = \"difference\"\nseries = [\"A\", \"A\"]", "wrong-number"),
+        ("ask = \"ranking\"\nfirst = \"higest\"", "wrong-value"),
+        ("ask = \"readings needed\"", "missing-key"),
+        ("ask = \"readings needed\"\nhalf_width = 0.5\nrule_of = \"q\"", "either-or"),
+        ("ask = \"readings needed\"\nhalf_width = 0.5\nassurance = 0.8", "key-out-of-place"),
+        ("ask = \"readings needed\"\nhalf_width = 0.5\ntry = [0]", "wrong-type"),
+        (
+            "ask = \"readings needed\"\nrule_of = \"other\"\nverdict = \"a\"\nassurance = 0.8",
+            "unknown-question-id",
+        ),
     ];
     for (keys, code) in table {
         assert_eq!(codes("linear", keys), [*code], "{keys}");
@@ -63,6 +79,9 @@ fn each_wrong_way_has_its_code() {
 fn the_log_scale_has_faults_of_its_own() {
     assert_eq!(codes("log", "ask = \"level chance\"\nabove = 0"), ["out-of-range"]);
     assert_eq!(codes("log", "ask = \"level chance\"\noutside = [-1, 5]"), ["out-of-range"]);
+    assert_eq!(codes("log", "ask = \"change\"\nabove = 0"), ["out-of-range"]);
+    assert_eq!(codes("log", "ask = \"change\"\nband = 0.9"), ["wrong-type"]);
+    assert_eq!(codes("log", "ask = \"readings needed\"\nhalf_width = 0.5"), ["out-of-range"]);
     assert_eq!(codes("log", "ask = \"classes\"\nbounds = [0, 5]"), ["out-of-range"]);
     let keys = "ask = \"level interval\"\nmean = \"arithmetic\"\nof_period = \"long run\"";
     assert_eq!(codes("log", keys), ["no-such-quantity"]);
@@ -156,6 +175,10 @@ fn settings_read_again_give_the_same_question() {
         "ask = \"period mean\"\nreadings = 6\nabove = 43",
         "ask = \"classes\"\nbounds = [42, 44]",
         "ask = \"readings beyond\"\nabove = 45",
+        "ask = \"change\"\nagainst = 2019\nband = 1.5",
+        "ask = \"difference\"\nseries = [\"A\", \"B\"]\nbelow = 1",
+        "ask = \"ranking\"\nfirst = \"lowest\"",
+        "ask = \"readings needed\"\nhalf_width = 0.5\ntry = [4, 12]",
     ] {
         let first = put("linear", keys);
         let ask = keys.lines().next().unwrap_or_default();

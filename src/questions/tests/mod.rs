@@ -1,6 +1,9 @@
 //! Questions asked of posteriors that are made by hand: no data files, no sources of priors.
 
+#![allow(clippy::excessive_precision, reason = "figures stand as their sources have them")]
+
 mod acceptance;
+mod apart;
 mod faults;
 mod published;
 mod simulated;
