@@ -18,7 +18,7 @@ use crate::quantity::Absent;
 use std::sync::Arc;
 
 /// Pieces lighter than this share of the whole are left out.
-const NEGLIGIBLE: f64 = 1e-31;
+pub(super) const NEGLIGIBLE: f64 = 1e-31;
 
 /// What a posterior keeps beside its pieces.
 #[derive(Debug)]

@@ -90,15 +90,18 @@ impl Walk {
             });
         }
         let (last_mean, last_var) = *states.last()?;
-        let (mut mean, mut var, mut gain) = (last_mean, last_var, 1.0);
+        // θ_j given θ_{j+1}: N(m_j + g_j (θ_{j+1} − m_j), C_j (1 − g_j)), so θ_from = pull · θ_last + … + rest.
+        // 1 − g_j is formed directly: for small steps differences of variances would cancel.
+        let (mut mean, mut rest, mut loose) = (last_mean, 0.0, 0.0);
         for j in (from..states.len() - 1).rev() {
             let (m, c) = states[j];
-            let g = c / aheads[j + 1];
+            let gap = self.steps.get(j + 1).map_or(self.last_gap, |step| step.0);
+            let (g, free) = (c / aheads[j + 1], gap * step2 / aheads[j + 1]);
             mean = m + g * (mean - m);
-            var = c + g * g * (var - aheads[j + 1]);
-            gain *= g;
+            rest = c * free + g * g * rest;
+            loose = free + g * loose;
         }
-        Some((last_mean - mean, last_var + var - 2.0 * last_var * gain))
+        Some((last_mean - mean, loose * loose * last_var + rest))
     }
 
     /// Where the j-th of all periods, readings or not, stands among those with readings.

@@ -1,5 +1,6 @@
 //! Every promise of `reassay::math::promises` against the high-precision tables of this folder (see its README).
 
+mod posterior;
 mod strd;
 
 use std::fs;
