@@ -89,20 +89,33 @@ pub struct Posterior {
 impl Posterior {
     /// The true level (a stated bias taken out) of a period, or the long-run mean.
     pub fn level(&self, when: When) -> Result<Law, Absent> {
+        self.level_shifted(when, &|_| 0.0)
+    }
+
+    /// The law of the true level + shift(σ): on the log scale σ²/2 gives the arithmetic mean's logarithm.
+    pub fn level_shifted(&self, when: When, shift: &dyn Fn(f64) -> f64) -> Result<Law, Absent> {
         if self.inner.bias_sd == 0.0 {
-            return self.affine(when, 1.0, &|_| (0.0, 0.0));
+            return self.affine(when, 1.0, &|sigma| (shift(sigma), 0.0));
         }
         self.models(when)?;
-        let parts = self.pieces.iter().zip(&self.inner.true_levels).map(|(piece, level)| {
-            let (mean, var) = match when {
-                When::This => level.this,
-                When::LongRun => level.long_run,
-                When::Next => level.next,
-            };
-            (piece.weight, mean, var)
-        });
+        let moves_with_sd = shift(1.0) != shift(2.0);
+        if moves_with_sd && let Some(reason) = &self.inner.no_sd {
+            return Err(reason.clone());
+        }
         let bound = self.bound(when);
-        mixture(parts.collect(), bound, self.name(when))
+        let law = |pieces: &[Piece], levels: &[solve::TrueLevel]| {
+            let parts = pieces.iter().zip(levels).map(|(piece, level)| {
+                let (mean, var) = match when {
+                    When::This => level.this,
+                    When::LongRun => level.long_run,
+                    When::Next => level.next,
+                };
+                (piece.weight, mean + if moves_with_sd { shift(piece.reading_sd) } else { shift(1.0) }, var)
+            });
+            mixture(parts.collect(), bound, self.name(when))
+        };
+        let as_held = law(&self.pieces, &self.inner.true_levels)?;
+        if moves_with_sd && self.has_unknown_sd() { self.settled(as_held, &law) } else { Ok(as_held) }
     }
 
     /// The law of `factor`·θ + shift(σ) + N(0, variance(σ)), θ the level as measured in that period:
@@ -142,36 +155,11 @@ impl Posterior {
         };
         let as_held = law(&self.pieces)?;
         let moves_with_sd = shift_and_variance(1.0).0 != shift_and_variance(2.0).0;
-        if moves_with_sd && self.has_unknown_sd() { self.settled(as_held, &law) } else { Ok(as_held) }
-    }
-
-    /// A law whose centre moves with σ, on finer and finer grids until two agree to 2e−11 in the
-    /// middle and in both tails.
-    fn settled(&self, first: Law, law: &dyn Fn(&[Piece]) -> Result<Law, Absent>) -> Result<Law, Absent> {
-        let (low, high) = first.central(1.0 - 2e-6)?;
-        let (near_low, near_high) = first.central(0.9)?;
-        let measure = |law: &Law| {
-            [
-                law.cdf(low),
-                law.cdf(near_low),
-                law.cdf(first.median().unwrap_or(low)),
-                law.sf(near_high),
-                law.sf(high),
-            ]
-        };
-        let mut before = measure(&first);
-        let mut factor = 1.0;
-        for _ in 0..10 {
-            factor *= std::f64::consts::FRAC_1_SQRT_2;
-            let finer = law(&self.finer(factor, 0.29)?)?;
-            let now = measure(&finer);
-            let worst = before.iter().zip(now).map(|(a, b)| ((a - b) / b).abs()).fold(0.0, f64::max);
-            if worst <= 2e-11 {
-                return Ok(finer);
-            }
-            before = now;
+        if moves_with_sd && self.has_unknown_sd() {
+            self.settled(as_held, &|pieces, _| law(pieces))
+        } else {
+            Ok(as_held)
         }
-        Err(Absent::failed("a law that moves with the within sd did not reach its promised accuracy"))
     }
 
     /// The mean of the next `mean_of` readings; `uncertainty` is each one's own, where σ is none.

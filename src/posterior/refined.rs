@@ -2,7 +2,9 @@
 //! law turns over within a fraction of σ's own width, and a share between two limits has a kink in σ.
 
 use super::grid::{self, MOST, Place};
+use super::law::Law;
 use super::plane::{Coordinate, Node, Plane, Sd};
+use super::solve::TrueLevel;
 use super::weighing::FLOOR;
 use super::{Piece, Posterior, solve};
 use crate::math::fm;
@@ -12,25 +14,58 @@ use crate::quantity::{Absent, Figure};
 const AGREED: f64 = 2e-11;
 const ROUNDS: u32 = 10;
 
+/// Makes a law from pieces and their true levels.
+type LawOf<'a> = dyn Fn(&[Piece], &[TrueLevel]) -> Result<Law, Absent> + 'a;
+
 impl Posterior {
     /// Whether σ is unknown in some part, so that sums over it depend on the grid.
     pub(super) fn has_unknown_sd(&self) -> bool {
         self.inner.parts.iter().any(|(part, _, _)| matches!(part.plane.sd, Sd::Unknown(_)))
     }
 
-    /// The pieces again, on grids whose steps are shorter by `factor` and begin elsewhere.
-    pub(super) fn finer(&self, factor: f64, offset: f64) -> Result<Vec<Piece>, Absent> {
-        let mut pieces = Vec::new();
+    /// A law whose centre moves with σ, on finer and finer grids until two agree to 2e−11 in the
+    /// middle and in both tails; `law` makes it from pieces and, with a bias, their true levels.
+    pub(super) fn settled(&self, first: Law, law: &LawOf<'_>) -> Result<Law, Absent> {
+        let (low, high) = first.central(1.0 - 2e-6)?;
+        let (near_low, near_high) = first.central(0.9)?;
+        let middle = first.median()?;
+        let measure =
+            |law: &Law| [law.cdf(low), law.cdf(near_low), law.cdf(middle), law.sf(near_high), law.sf(high)];
+        let mut before = measure(&first);
+        let mut factor = 1.0;
+        for _ in 0..ROUNDS {
+            factor *= std::f64::consts::FRAC_1_SQRT_2;
+            let (pieces, levels) = self.finer(factor, 0.29)?;
+            let finer = law(&pieces, &levels)?;
+            let now = measure(&finer);
+            let worst = before.iter().zip(now).map(|(a, b)| ((a - b) / b).abs()).fold(0.0, f64::max);
+            if worst <= AGREED {
+                return Ok(finer);
+            }
+            before = now;
+        }
+        Err(Absent::failed("a law that moves with the within sd did not reach its promised accuracy"))
+    }
+
+    /// The pieces (and with a bias their true levels) again, on grids whose steps are shorter by `factor`
+    /// and begin elsewhere.
+    fn finer(&self, factor: f64, offset: f64) -> Result<(Vec<Piece>, Vec<TrueLevel>), Absent> {
+        let (mut pieces, mut levels) = (Vec::new(), Vec::new());
+        let units = &self.inner.units;
+        let bias_sd = units.sd_in(self.inner.bias_sd);
         for (part, weighed, share) in &self.inner.parts {
             let f = |place: &Place| part.plane.node(place);
             let nodes = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, FLOOR)?;
             let (sum, top) = whole(&nodes);
             for node in &nodes {
                 let weight = share * fm::exp(node.ln_weight - top) / sum;
-                pieces.push(solve::piece(node, weight, &self.inner.units));
+                pieces.push(solve::piece(node, weight, units));
+                if bias_sd > 0.0 {
+                    levels.push(solve::true_level(node, part, bias_sd, units));
+                }
             }
         }
-        Ok(pieces)
+        Ok((pieces, levels))
     }
 
     /// E g(piece) over the plane, for a g that is smooth in σ but for a kink (of the kind of a square

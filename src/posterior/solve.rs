@@ -170,7 +170,7 @@ fn prior_share(node: &Node, plane: &Plane) -> f64 {
 }
 
 /// Methods §3, bias: the level as measured is φ = θ + b; what is known of θ.
-fn true_level(node: &Node, part: &Part, bias_sd: f64, units: &Units) -> TrueLevel {
+pub(super) fn true_level(node: &Node, part: &Part, bias_sd: f64, units: &Units) -> TrueLevel {
     let u2 = bias_sd * bias_sd;
     let tau2 = node.tau * node.tau;
     let pulled = |m0: f64, v0: f64| {

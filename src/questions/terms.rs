@@ -148,7 +148,7 @@ pub fn read_mean(reader: &mut Reader<'_>, scale: Scale, when: When) -> Mean {
 pub fn level_law(posterior: &Posterior, when: When, mean: Mean) -> Result<Law, Absent> {
     match mean {
         Mean::Level => posterior.level(when),
-        Mean::Arithmetic => posterior.affine(when, 1.0, &|sigma| (0.5 * sigma * sigma, 0.0)),
+        Mean::Arithmetic => posterior.level_shifted(when, &|sigma| 0.5 * sigma * sigma),
     }
 }
 

@@ -90,7 +90,8 @@ fn change_with_a_history_by_simulation() {
         whole += weight;
         rows.push((weight, levels[3] - levels[2], levels[3] - levels[0], levels[3] - mu));
     }
-    let share = |of: &dyn Fn(&(f64, f64, f64, f64)) -> bool| {
+    type Row = (f64, f64, f64, f64);
+    let share = |of: &dyn Fn(&Row) -> bool| {
         let p = rows.iter().filter(|row| of(row)).map(|row| row.0).sum::<f64>() / whole;
         let square: f64 =
             rows.iter().map(|row| row.0 * row.0 * if of(row) { (1.0 - p) * (1.0 - p) } else { p * p }).sum();

@@ -200,7 +200,8 @@ fn readings_to_come() {
 fn shares_percentiles_and_spread() {
     let (posterior, draws) = unknown_sd();
     let p = |z: f64| 0.5 * fm::erfc(-z / std::f64::consts::SQRT_2);
-    let shares: [(&str, fn(f64, f64, &dyn Fn(f64) -> f64) -> f64); 4] = [
+    type ShareOf = fn(f64, f64, &dyn Fn(f64) -> f64) -> f64;
+    let shares: [(&str, ShareOf); 4] = [
         ("above = 45", |level, sigma, p| p((level - 45.0) / sigma)),
         ("below = 42", |level, sigma, p| p((42.0 - level) / sigma)),
         ("outside = [41, 45]", |level, sigma, p| p((41.0 - level) / sigma) + p((level - 45.0) / sigma)),
@@ -255,4 +256,38 @@ fn on_the_log_scale() {
     let keys = format!("ask = \"level chance\"\nabove = {limit:?}\nmean = \"arithmetic\"");
     let simulated = mean_of(&draws, |draw| is(arithmetic(draw) > limit));
     agrees(value(&put("log", &keys).figures(&log), "chance"), simulated, "arithmetic mean");
+}
+
+/// With a bias common to all readings the arithmetic mean is that of the true level: the bias is drawn too.
+#[test]
+fn an_arithmetic_mean_under_a_bias() {
+    let model = Model {
+        scale: Scale::Log,
+        bias_sd: 0.9,
+        ..model(Within::Worth { sd: 1.5, df: 8.0 }, LevelPrior::Stated { mean: 40.0, sd: 2.0 })
+    };
+    let mut pcg = Pcg::new(6);
+    let draws = (0..DRAWS).map(|_| {
+        let sigma = (8.0 * 1.5 * 1.5 / pcg.chi_square(8)).sqrt();
+        let level = 40.0 + 2.0 * pcg.normal();
+        let measured = level + 0.9 * pcg.normal();
+        Draw {
+            weight: ln_likelihood(measured, sigma),
+            level,
+            sigma,
+            long_run: measured,
+            next_level: f64::NAN,
+        }
+    });
+    let draws = weighted(draws.collect());
+    let posterior = both(&model, &sums(N, MEAN, SD));
+    let figures = put("log", "ask = \"level interval\"").figures(&posterior);
+    interval_agrees(&figures, &draws, |draw| fm::exp(draw.level), 0.025, 0.975, "true level");
+    let figures = put("log", "ask = \"level interval\"\nmean = \"arithmetic\"").figures(&posterior);
+    let arithmetic = |draw: &Draw| fm::exp(draw.level + 0.5 * draw.sigma * draw.sigma);
+    interval_agrees(&figures, &draws, arithmetic, 0.025, 0.975, "arithmetic mean");
+    // Readings are meant as measured: the bias is in them.
+    let figures = put("log", "ask = \"reading interval\"").figures(&posterior);
+    let reading = |draw: &Draw, pcg: &mut Pcg| fm::exp(draw.long_run + draw.sigma * pcg.normal());
+    interval_agrees(&figures, &draws, |draw| reading(draw, &mut pcg), 0.025, 0.975, "reading");
 }
