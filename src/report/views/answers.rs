@@ -1,0 +1,209 @@
+//! The answers: per question its words, symbols, figures on three bases, rule and verdict.
+
+use super::numbers::{NOTHING, Numbers, VerdictView, reasons, rule_words, verdict};
+use super::table::{Column, TableView, plain};
+use crate::findings::{AcrossFindings, Answer, SeriesFindings};
+use crate::plan::{Plan, QuestionPlan, Rule};
+use crate::questions::figures::{Figures, Item};
+use crate::report::text;
+use crate::working::Step;
+use minijinja::Value;
+use serde::Serialize;
+
+/// One answer of one series.
+#[derive(Debug, Serialize)]
+pub struct AnswerView {
+    pub id: String,
+    /// The reader's words, or the quantity's.
+    pub question: String,
+    pub words: String,
+    pub symbols: String,
+    pub both: String,
+    pub prior_only: String,
+    pub readings_only: String,
+    /// Why figures are missing.
+    pub why: Vec<String>,
+    pub rule: Option<String>,
+    pub agreed: Option<String>,
+    pub verdict: Option<VerdictView>,
+    /// Acceptance limits, guard band, risks.
+    pub rule_figures: Vec<String>,
+    pub not_decided: bool,
+    pub working: Option<TableView>,
+}
+
+pub fn asked<'p>(plan: &'p Plan, id: &str) -> Option<&'p QuestionPlan> {
+    plan.questions.iter().find(|question| question.id == id)
+}
+
+pub fn rule_of<'p>(plan: &'p Plan, id: &str) -> Option<&'p Rule> {
+    asked(plan, id)?.rule.as_ref()
+}
+
+/// The question in the reader's words; without such, what is asked about, with a capital letter.
+pub fn question_words(say: Option<&str>, words: &str) -> String {
+    match say {
+        Some(say) => say.to_string(),
+        None => capital(words),
+    }
+}
+
+pub fn capital(words: &str) -> String {
+    let mut letters = words.chars();
+    letters.next().map_or_else(String::new, |first| first.to_uppercase().chain(letters).collect())
+}
+
+pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> AnswerView {
+    let plan = numbers.plan;
+    let rule = rule_of(plan, &answer.id);
+    let held_back = |figures: &Figures| if figures.is_empty() { NOTHING.to_string() } else { numbers.line(figures, None) };
+    let given = answer.verdict.as_ref().map(|given| verdict(given, rule));
+    let last = rule.and_then(|rule| rule.verdicts.last()).map(|last| last.say.as_str());
+    let open = |given: &VerdictView| last == Some(given.words.as_str()) && rule.is_some_and(|rule| rule.verdicts.len() > 2);
+    AnswerView {
+        id: answer.id.clone(),
+        question: question_words(answer.say.as_deref(), &answer.words),
+        words: capital(&answer.words),
+        symbols: answer.symbols.clone(),
+        both: numbers.long_line(&answer.figures, rule),
+        prior_only: held_back(&answer.prior_only),
+        readings_only: held_back(&answer.readings_only),
+        why: if one_sided(&answer.figures) { Vec::new() } else { reasons(&answer.figures) },
+        rule: rule.map(|rule| rule_words(rule, plan, Some(&series.name))),
+        agreed: rule.map(agreed),
+        not_decided: given.as_ref().is_some_and(open),
+        verdict: given,
+        rule_figures: rule_figures(&answer.rule_figures, numbers),
+        working: working(&answer.working),
+    }
+}
+
+fn exists(item: &Item) -> bool {
+    !matches!(item, Item::Number(Err(_), _) | Item::Whole(None))
+}
+
+/// A bound on one side lacks the other end by its nature.
+fn one_sided(figures: &Figures) -> bool {
+    let missing: Vec<&str> =
+        figures.0.iter().filter(|(_, item)| !exists(item)).map(|(name, _)| *name).collect();
+    matches!(missing.as_slice(), ["lower"] | ["upper"])
+}
+
+pub fn agreed(rule: &Rule) -> String {
+    match (rule.agreed, &rule.agreed_by) {
+        (Some(on), Some(by)) => format!("agreed on {on} ({by})"),
+        (Some(on), None) => format!("agreed on {on}"),
+        (None, Some(by)) => format!("agreed by {by}, without a date"),
+        (None, None) => "without a date of agreement".to_string(),
+    }
+}
+
+fn rule_figures(figures: &Figures, numbers: &Numbers<'_>) -> Vec<String> {
+    let mut lines = Vec::new();
+    for (name, item) in &figures.0 {
+        let name = capital(&name.replace('_', " "));
+        match item {
+            Item::Number(Ok(number), meaning) => {
+                lines.push(format!("{name}: {}", numbers.number(*number, *meaning, None)));
+            }
+            Item::Number(Err(absent), _) => lines.push(format!("{name}: none ({})", absent.reason)),
+            Item::Whole(Some(count)) => lines.push(format!("{name}: {}", text::count(*count))),
+            Item::Numbers(all, meaning) if !all.is_empty() => {
+                let all: Vec<String> =
+                    all.iter().map(|number| numbers.number(*number, *meaning, None)).collect();
+                lines.push(format!("{name}: {}", all.join(", ")));
+            }
+            Item::Text(said) => lines.push(format!("{name}: {said}")),
+            Item::Texts(all) if !all.is_empty() => lines.push(format!("{name}: {}", all.join("; "))),
+            _ => {}
+        }
+    }
+    lines
+}
+
+/// The steps of a derivation; values with six digits, enough to follow with a pocket calculator.
+fn working(steps: &[Step]) -> Option<TableView> {
+    let mut table = TableView::new(
+        "How the figure comes about",
+        &[
+            ("step", Column::Head),
+            ("formula", Column::Text),
+            ("values put in", Column::Text),
+            ("result", Column::Number),
+        ],
+    );
+    for step in steps {
+        let put_in: Vec<String> = step
+            .put_in
+            .iter()
+            .map(|(symbol, value)| format!("{symbol} = {}", text::significant(*value, 7)))
+            .collect();
+        table.row(vec![
+            plain(&step.label),
+            plain(&step.formula),
+            plain(put_in.join(", ")),
+            plain(text::significant(step.result, 7)),
+        ]);
+    }
+    table.some()
+}
+
+/// All answers of one series beside each other.
+pub fn table(views: &[AnswerView]) -> TableView {
+    let ruled = views.iter().any(|view| view.verdict.is_some());
+    let mut columns = vec![
+        ("question", Column::Head),
+        ("prior only", Column::Text),
+        ("readings only", Column::Text),
+        ("both", Column::Text),
+    ];
+    if ruled {
+        columns.push(("verdict", Column::Text));
+    }
+    let mut table = TableView::new("Answers, each on three bases", &columns);
+    for view in views {
+        let mut cells = vec![
+            plain(&view.question),
+            plain(&view.prior_only),
+            plain(&view.readings_only),
+            plain(&view.both),
+        ];
+        if ruled {
+            cells.push(view.verdict.as_ref().map_or_else(|| plain(NOTHING), |given| given.shown.clone()));
+        }
+        table.row(cells);
+    }
+    table
+}
+
+/// A question that compares series.
+#[derive(Debug, Serialize)]
+pub struct AcrossView {
+    pub id: String,
+    pub question: String,
+    pub words: String,
+    pub table: TableView,
+    pub verdict: Option<Value>,
+    pub why: Option<String>,
+}
+
+pub fn across(found: &AcrossFindings, plan: &Plan) -> AcrossView {
+    let rule = rule_of(plan, &found.id);
+    let mut table = TableView::new(capital(&found.words), &[("series", Column::Head), ("answer", Column::Text)]);
+    for (name, figures) in &found.series {
+        let numbers = Numbers::of_series(plan, name, None);
+        let mut said = numbers.long_line(figures, rule);
+        if said == NOTHING {
+            said = reasons(figures).join("; ");
+        }
+        table.row(vec![plain(if name.is_empty() { "all" } else { name.as_str() }), plain(said)]);
+    }
+    AcrossView {
+        id: found.id.clone(),
+        question: question_words(found.say.as_deref(), &found.words),
+        words: capital(&found.words),
+        table,
+        verdict: found.verdict.as_ref().map(|given| verdict(given, rule).shown),
+        why: found.verdict.as_ref().and_then(|given| given.why.clone()),
+    }
+}
