@@ -7,7 +7,8 @@
 use super::escape;
 use super::views::ReportView;
 use crate::diagnostics::{Fault, Faults, Outcome, Place};
-use minijinja::{Environment, Error, ErrorKind, UndefinedBehavior};
+use minijinja::syntax::SyntaxConfig;
+use minijinja::{Environment, Error, ErrorKind, UndefinedBehavior, Value};
 
 /// The template of the whole report.
 const REVIEW: &str = "review.md";
@@ -51,8 +52,9 @@ pub fn render(view: &ReportView, series: usize, own: Option<(&str, &[u8])>) -> O
     let mut environment = Environment::new();
     escape::escape_in_templates(&mut environment);
     environment.set_undefined_behavior(UndefinedBehavior::Strict);
-    environment.set_trim_blocks(true);
-    environment.set_lstrip_blocks(true);
+    // A line that holds a block tag alone leaves no line behind.
+    let syntax = SyntaxConfig::builder().trim_blocks(true).lstrip_blocks(true).build();
+    environment.set_syntax(syntax.map_err(|error| fault(&error, own_text))?);
     environment.set_fuel(Some(FUEL + FUEL_FOR_EACH_SERIES * series as u64));
     // It would print the program's inner form.
     environment.remove_global("debug");
@@ -65,7 +67,7 @@ pub fn render(view: &ReportView, series: usize, own: Option<(&str, &[u8])>) -> O
         added.map_err(|error| fault(&error, own_text))?;
     }
     let template = environment.get_template(REVIEW).map_err(|error| fault(&error, own_text))?;
-    let markdown = template.render(view).map_err(|error| fault(&error, own_text))?;
+    let markdown = template.render(Value::from_serialize(view)).map_err(|error| fault(&error, own_text))?;
     Ok(tidied(&markdown))
 }
 

@@ -56,10 +56,14 @@ pub fn capital(words: &str) -> String {
 pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> AnswerView {
     let plan = numbers.plan;
     let rule = rule_of(plan, &answer.id);
-    let held_back = |figures: &Figures| if figures.is_empty() { NOTHING.to_string() } else { numbers.line(figures, None) };
+    let held_back = |figures: &Figures| {
+        if figures.is_empty() { NOTHING.to_string() } else { numbers.line(figures, None) }
+    };
     let given = answer.verdict.as_ref().map(|given| verdict(given, rule));
     let last = rule.and_then(|rule| rule.verdicts.last()).map(|last| last.say.as_str());
-    let open = |given: &VerdictView| last == Some(given.words.as_str()) && rule.is_some_and(|rule| rule.verdicts.len() > 2);
+    let open = |given: &VerdictView| {
+        last == Some(given.words.as_str()) && rule.is_some_and(|rule| rule.verdicts.len() > 2)
+    };
     AnswerView {
         id: answer.id.clone(),
         question: question_words(answer.say.as_deref(), &answer.words),
@@ -189,7 +193,8 @@ pub struct AcrossView {
 
 pub fn across(found: &AcrossFindings, plan: &Plan) -> AcrossView {
     let rule = rule_of(plan, &found.id);
-    let mut table = TableView::new(capital(&found.words), &[("series", Column::Head), ("answer", Column::Text)]);
+    let mut table =
+        TableView::new(capital(&found.words), &[("series", Column::Head), ("answer", Column::Text)]);
     for (name, figures) in &found.series {
         let numbers = Numbers::of_series(plan, name, None);
         let mut said = numbers.long_line(figures, rule);

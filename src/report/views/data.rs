@@ -49,7 +49,12 @@ pub fn view(findings: &Findings) -> DataView {
         series: series(findings),
         exclusions: exclusions(plan, data),
         events: events(plan),
-        left_out: plan.history.leave_out.iter().map(|(period, reason)| format!("{period}: {reason}")).collect(),
+        left_out: plan
+            .history
+            .leave_out
+            .iter()
+            .map(|(period, reason)| format!("{period}: {reason}"))
+            .collect(),
         history: history(plan),
         not_reviewed: findings
             .not_reviewed
@@ -139,7 +144,8 @@ fn series(findings: &Findings) -> TableView {
             cells.push(plain(planned_here.map_or_else(|| NOTHING.to_string(), text::count)));
         }
         let mut counts = vec![facts.n, facts.missing, facts.excluded];
-        for (shown, count) in [(below, facts.marked_below), (above, facts.marked_above), (later, facts.later)] {
+        for (shown, count) in [(below, facts.marked_below), (above, facts.marked_above), (later, facts.later)]
+        {
             if shown {
                 counts.push(count);
             }
@@ -210,7 +216,8 @@ fn exclusions(plan: &Plan, data: &Data) -> Option<TableView> {
                 0 => text::count(exclude.rows),
                 all => text::count((all - EXCLUDED_PRINTED) as u64),
             };
-            let mut cells = vec![plain(""), plain(""), plain(format!("{rest} more, in readings.csv")), plain("")];
+            let mut cells =
+                vec![plain(""), plain(""), plain(format!("{rest} more, in readings.csv")), plain("")];
             cells.extend(about());
             table.row(cells);
         }
@@ -247,7 +254,12 @@ fn events(plan: &Plan) -> Option<TableView> {
 }
 
 /// Per period of one series: n, mean, sd, smallest, largest, and what part it plays.
-pub fn periods(series: &SeriesData, plan: &Plan, numbers: &Numbers<'_>, all: &[crate::quantity::Period]) -> TableView {
+pub fn periods(
+    series: &SeriesData,
+    plan: &Plan,
+    numbers: &Numbers<'_>,
+    all: &[crate::quantity::Period],
+) -> TableView {
     let heads =
         ["mean", "sd", "smallest", "largest"].map(|name| format!("{name}{}", in_brackets(&numbers.unit)));
     let mut columns = vec![("period", Column::Head), ("n", Column::Number)];
@@ -308,8 +320,7 @@ pub fn readings(period: &PeriodData, data: &Data, plan: &Plan) -> (Option<TableV
         columns.push((own.as_str(), Column::Number));
     }
     columns.push(("used", Column::Text));
-    let mut table =
-        TableView::new(format!("Every reading of {}, word for word", period.period), &columns);
+    let mut table = TableView::new(format!("Every reading of {}, word for word", period.period), &columns);
     for row in rows.iter().take(READINGS_PRINTED) {
         let mut cells = vec![plain(row_name(row, data))];
         if dates {

@@ -1,8 +1,8 @@
 //! The figures of one series: what each shows, made from the findings.
 
 use super::numbers::{Around, Numbers};
-use crate::data::{Data, Fate, Mark as Marked, PeriodData, SeriesData};
 use crate::data::evidence::Evidence;
+use crate::data::{Data, Fate, Mark as Marked, PeriodData, SeriesData};
 use crate::findings::SeriesFindings;
 use crate::math::{fm, normal};
 use crate::plan::{Bounds, Event, Plan};
@@ -45,7 +45,13 @@ pub struct Drawings {
 
 impl Drawings {
     /// Takes a drawing in; `None` where there is nothing to draw.
-    fn add(&mut self, name: &str, alt: &str, caption: &str, drawn: Result<String, FigureError>) -> Option<FigureView> {
+    fn add(
+        &mut self,
+        name: &str,
+        alt: &str,
+        caption: &str,
+        drawn: Result<String, FigureError>,
+    ) -> Option<FigureView> {
         let svg = drawn.ok()?;
         self.figures.push((name.to_string(), svg));
         let caption = escape::markdown(caption).replace('"', "\\\"");
@@ -136,7 +142,10 @@ pub fn level(
         Some(wide) => (core.0.min(wide.0.max(core.0 - room)), core.1.max(wide.1.min(core.1 + room))),
         None => core,
     };
-    let curve = |law: &Law, label: &str| Curve { label: label.to_string(), points: points(law, window, numbers.scale) };
+    let curve = |law: &Law, label: &str| Curve {
+        label: label.to_string(),
+        points: points(law, window, numbers.scale),
+    };
     let (lower, upper) = both.central(0.95).ok()?;
     let [lower, upper] = [lower, upper].map(|end| to_unit(numbers.scale, end));
     let spread = 0.25 * (upper - lower);
@@ -161,13 +170,21 @@ pub fn level(
         prior: if without { None } else { prior.as_ref().map(|law| curve(law, "prior")) },
         readings: readings.as_ref().map(|law| curve(law, "readings alone")),
         posterior: curve(&both, if without { "prior (no readings)" } else { "prior and readings" }),
-        interval: Some(Interval { lower: Some(lower), upper: Some(upper), label: format!("95 % interval, {ends}") }),
+        interval: Some(Interval {
+            lower: Some(lower),
+            upper: Some(upper),
+            label: format!("95 % interval, {ends}"),
+        }),
         limits: limits(plan, &series.name),
     };
     let caption = if without {
-        format!("{title}. There are no readings of {period}: the curve is the prior alone, with its central 95 % interval ({ends}).")
+        format!(
+            "{title}. There are no readings of {period}: the curve is the prior alone, with its central 95 % interval ({ends})."
+        )
     } else {
-        format!("{title}: prior (dashed), readings alone (dotted), both together (solid) with its central 95 % interval ({ends}), and the limits.")
+        format!(
+            "{title}: prior (dashed), readings alone (dotted), both together (solid) with its central 95 % interval ({ends}), and the limits."
+        )
     };
     drawings.add(&name, &title, &caption, figure_level::level(&figure))
 }
@@ -252,7 +269,10 @@ pub fn periods(
         about: About {
             name: name.clone(),
             title: title.clone(),
-            description: format!("Period means from {first} to {}; the table of periods holds the numbers.", plan.review.period),
+            description: format!(
+                "Period means from {first} to {}; the table of periods holds the numbers.",
+                plan.review.period
+            ),
         },
         value_title: value_title(plan),
         period_title: "period".to_string(),
@@ -294,9 +314,7 @@ fn level_estimate(series: &SeriesFindings, scale: Scale) -> Option<Estimate> {
 /// A period's mean with two standard errors on either side.
 fn mean_of(period: &PeriodData, sigma: Option<f64>, scale: Scale) -> Option<Estimate> {
     let (mean, error) = match &period.evidence {
-        Evidence::Sums { n, mean, .. } if *n > 0 => {
-            (*mean, sigma.map(|sigma| sigma / (*n as f64).sqrt()))
-        }
+        Evidence::Sums { n, mean, .. } if *n > 0 => (*mean, sigma.map(|sigma| sigma / (*n as f64).sqrt())),
         Evidence::Mean { mean, uncertainty } => (*mean, Some(*uncertainty)),
         _ => {
             let facts = &period.facts;
@@ -306,7 +324,11 @@ fn mean_of(period: &PeriodData, sigma: Option<f64>, scale: Scale) -> Option<Esti
                 return Some(value);
             };
             let error = sd / (facts.n as f64).sqrt();
-            return Some(Estimate { lower: Some(mean - 2.0 * error), upper: Some(mean + 2.0 * error), ..value });
+            return Some(Estimate {
+                lower: Some(mean - 2.0 * error),
+                upper: Some(mean + 2.0 * error),
+                ..value
+            });
         }
     };
     let ends = error.map(|error| (mean - 2.0 * error, mean + 2.0 * error));
@@ -354,7 +376,8 @@ pub fn quantiles(
     values.sort_by(f64::total_cmp);
     let n = values.len();
     let mean = values.iter().sum::<f64>() / n as f64;
-    let sd = (values.iter().map(|value| (value - mean) * (value - mean)).sum::<f64>() / (n as f64 - 1.0)).sqrt();
+    let sd =
+        (values.iter().map(|value| (value - mean) * (value - mean)).sum::<f64>() / (n as f64 - 1.0)).sqrt();
     let every = n.div_ceil(QUANTILES_AT_MOST);
     let points = values
         .iter()
@@ -384,7 +407,8 @@ pub fn quantiles(
         band: Vec::new(),
         band_label: String::new(),
     };
-    let thinned = if every > 1 { format!(" Every {every}th of {n} readings is drawn.") } else { String::new() };
+    let thinned =
+        if every > 1 { format!(" Every {every}th of {n} readings is drawn.") } else { String::new() };
     let caption = format!(
         "{title}. If readings scatter normally, the points lie near the line; the check “normality” says how far they do.{thinned}"
     );
@@ -424,7 +448,10 @@ pub fn sensitivity(
     let shown = |answer: &&crate::findings::Answer| answer.figures.value("estimate").is_some();
     let answer = series.answers.iter().find(shown)?;
     let rule = super::answers::rule_of(plan, &answer.id);
-    let row = |name: &str, figures: &crate::questions::figures::Figures, given: Option<&crate::questions::rule::Given>, main: bool| {
+    let row = |name: &str,
+               figures: &crate::questions::figures::Figures,
+               given: Option<&crate::questions::rule::Given>,
+               main: bool| {
         let around = Around::of(figures);
         Row {
             name: name.to_string(),
@@ -445,26 +472,38 @@ pub fn sensitivity(
     if rows.len() < 2 {
         return None;
     }
-    let title = format!("{} under other assumptions, {}", super::answers::capital(&answer.words), series.name);
+    let title =
+        format!("{} under other assumptions, {}", super::answers::capital(&answer.words), series.name);
     let name = format!("{slug}-sensitivity");
     let about = About {
         name: name.clone(),
         title: title.clone(),
         description: "Estimate and interval under each alternative; the tables hold the numbers.".to_string(),
     };
-    let figure = RowsFigure { about, value_title: value_title(plan), rows, rows_label: String::new(), limits: near_limits(plan, series) };
+    let figure = RowsFigure {
+        about,
+        value_title: value_title(plan),
+        rows,
+        rows_label: String::new(),
+        limits: near_limits(plan, series),
+    };
     let caption = format!("{title}: estimate and interval as reviewed (bold) and under each alternative.");
     drawings.add(&name, &title, &caption, figure_rows::rows(&figure))
 }
 
 /// Limits that do not lie so far off that the rows would shrink to dots.
 fn near_limits(plan: &Plan, series: &SeriesFindings) -> Vec<Mark> {
-    let Some(reach) = series.posterior.as_ref().ok().and_then(|both| reach(&both.level(When::This).ok()?, 0.001)) else {
+    let Some(reach) =
+        series.posterior.as_ref().ok().and_then(|both| reach(&both.level(When::This).ok()?, 0.001))
+    else {
         return Vec::new();
     };
     let (low, high) = (to_unit(plan.quantity.scale, reach.0), to_unit(plan.quantity.scale, reach.1));
     let room = 2.0 * (high - low);
-    limits(plan, &series.name).into_iter().filter(|mark| mark.value > low - room && mark.value < high + room).collect()
+    limits(plan, &series.name)
+        .into_iter()
+        .filter(|mark| mark.value > low - room && mark.value < high + room)
+        .collect()
 }
 
 /// The levels of all series below each other.
@@ -488,13 +527,16 @@ pub fn levels(drawings: &mut Drawings, series: &[SeriesFindings], plan: &Plan) -
         })
         .collect();
     let title = format!("Level of {} of {}, all series", plan.quantity.name, plan.review.period);
-    let own_limits = |limit: &crate::plan::Limit| plan.series.values().any(|own| own.limits.contains_key(&limit.name));
+    let own_limits =
+        |limit: &crate::plan::Limit| plan.series.values().any(|own| own.limits.contains_key(&limit.name));
     let general: Vec<Mark> = plan
         .limits
         .iter()
         .filter(|limit| !own_limits(limit))
         .flat_map(|limit| match limit.bounds {
-            Bounds::Value(value) => vec![Mark { value, label: format!("{} {}", limit.name, text::record(value)) }],
+            Bounds::Value(value) => {
+                vec![Mark { value, label: format!("{} {}", limit.name, text::record(value)) }]
+            }
             Bounds::Range(lower, upper) => [lower, upper]
                 .map(|value| Mark { value, label: format!("{} {}", limit.name, text::record(value)) })
                 .to_vec(),
@@ -504,13 +546,15 @@ pub fn levels(drawings: &mut Drawings, series: &[SeriesFindings], plan: &Plan) -
         about: About {
             name: "all-levels".to_string(),
             title: title.clone(),
-            description: "Level and central 95 % interval of each series; the table holds the numbers.".to_string(),
+            description: "Level and central 95 % interval of each series; the table holds the numbers."
+                .to_string(),
         },
         value_title: value_title(plan),
         rows,
         rows_label: "level, central 95 % interval".to_string(),
         limits: general,
     };
-    let caption = format!("{title}: prior and readings together, with central 95 % intervals and the limits.");
+    let caption =
+        format!("{title}: prior and readings together, with central 95 % intervals and the limits.");
     drawings.add("all-levels", &title, &caption, figure_rows::rows(&figure))
 }

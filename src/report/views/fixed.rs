@@ -5,18 +5,36 @@ use super::table::{Column, TableView, code, plain};
 
 /// What a caution's code stands for, whatever its text.
 pub const CODES: &[(&str, &str)] = &[
-    ("check-flagged", "A check of an assumption is flagged (p below 0.01, or a fact that puts answers in doubt)."),
+    (
+        "check-flagged",
+        "A check of an assumption is flagged (p below 0.01, or a fact that puts answers in doubt).",
+    ),
     ("few-periods", "The history has few periods, so the between sd is known only roughly."),
     ("fewer-than-planned", "Fewer readings were used than were planned."),
-    ("ids-not-compared", "Rows bear no id, so the same reading found twice could not be told from two equal readings."),
+    (
+        "ids-not-compared",
+        "Rows bear no id, so the same reading found twice could not be told from two equal readings.",
+    ),
     ("limit-applies-to-other", "A limit is held against something other than what its basis sets it for."),
     ("limit-for-something-else", "A limit is held against something other than what its basis sets it for."),
     ("many-excluded", "More than one reading in ten is excluded."),
     ("many-readings-marked", "More than half of the readings are known only to lie below or above a value."),
-    ("method-changed", "The method or an instrument changed since the earlier periods of which the prior is made."),
-    ("most-readings-marked", "More than four fifths of the readings are known only to lie below or above a value."),
-    ("near-threshold", "A probability lies so near to a threshold that the printed digits alone could mislead."),
-    ("no-common-bias", "No uncertainty common to all readings was given; intervals cover random variation only."),
+    (
+        "method-changed",
+        "The method or an instrument changed since the earlier periods of which the prior is made.",
+    ),
+    (
+        "most-readings-marked",
+        "More than four fifths of the readings are known only to lie below or above a value.",
+    ),
+    (
+        "near-threshold",
+        "A probability lies so near to a threshold that the printed digits alone could mislead.",
+    ),
+    (
+        "no-common-bias",
+        "No uncertainty common to all readings was given; intervals cover random variation only.",
+    ),
     ("no-readings", "The period under review has no readings."),
     ("plug-in", "An estimated between sd is used as if it were known."),
     ("prior-alone-decides", "The prior alone would give the verdict."),
@@ -40,8 +58,10 @@ pub fn meaning(code: &str) -> String {
 
 /// The codes that this report uses.
 pub fn codes<'a>(used: impl Iterator<Item = &'a str>) -> Option<TableView> {
-    let mut table =
-        TableView::new("Codes of the cautions in this report", &[("code", Column::Head), ("what it means", Column::Text)]);
+    let mut table = TableView::new(
+        "Codes of the cautions in this report",
+        &[("code", Column::Head), ("what it means", Column::Text)],
+    );
     for used in used {
         table.row(vec![code(used), plain(meaning(used))]);
     }
@@ -55,15 +75,39 @@ const GLOSSARY: &[(&str, &str, &str)] = &[
     ("level", "θ", "the mean about which one period’s readings scatter"),
     ("long-run mean", "μ", "the mean about which the levels of the periods scatter"),
     ("within sd", "σ", "standard deviation of single readings about the level of their period"),
-    ("between sd", "τ", "standard deviation of the periods’ levels about the long-run mean; for a random walk, of one step"),
-    ("prior", "", "what was known before the readings of the period under review, as a probability distribution"),
+    (
+        "between sd",
+        "τ",
+        "standard deviation of the periods’ levels about the long-run mean; for a random walk, of one step",
+    ),
+    (
+        "prior",
+        "",
+        "what was known before the readings of the period under review, as a probability distribution",
+    ),
     ("posterior", "", "what is known with these readings: prior and readings together"),
-    ("interval", "", "a range that holds the true value with the stated probability, given model, prior and readings"),
-    ("limit", "L", "a value, or a lower and an upper one, that readings or levels are held against, with its basis"),
+    (
+        "interval",
+        "",
+        "a range that holds the true value with the stated probability, given model, prior and readings",
+    ),
+    (
+        "limit",
+        "L",
+        "a value, or a lower and an upper one, that readings or levels are held against, with its basis",
+    ),
     ("mark", "", "what stands for a reading known only to lie below or above something, such as “<0.5”"),
-    ("rule, verdict", "", "a decision rule on an answer, and the words it gives; “not decided” is a normal verdict"),
+    (
+        "rule, verdict",
+        "",
+        "a decision rule on an answer, and the words it gives; “not decided” is a normal verdict",
+    ),
     ("prior weight", "B", "the share of the level’s estimate that comes from the prior, between 0 and 1"),
-    ("check", "", "a test of an assumption of the model; it never removes a reading and never changes an answer"),
+    (
+        "check",
+        "",
+        "a test of an assumption of the model; it never removes a reading and never changes an answer",
+    ),
     ("stamp", "", "the SHA-256 that identifies the inputs and the answers of a review"),
 ];
 
@@ -85,7 +129,11 @@ const BARG: &[(&str, &str, &str)] = &[
     ("1B", "likelihood and parameters", "section 5 and the pages of the series"),
     ("1C", "prior", "pages of the series, “Prior”: source, figures, basis"),
     ("1D", "formal specification", "section 5; the spec, word for word, in the last appendix"),
-    ("1E", "prior predictive check", "pages of the series: the prior’s column for the next reading, and the check “prior conflict”"),
+    (
+        "1E",
+        "prior predictive check",
+        "pages of the series: the prior’s column for the next reading, and the check “prior conflict”",
+    ),
     ("2A", "software", "section 10"),
     ("2B, 2C", "convergence and resolution of sampling chains", "does not apply: no sampling is used"),
     ("2D", "other computation", "section 5: quadrature and the error it reached"),

@@ -53,7 +53,10 @@ pub fn summary(findings: &Findings) -> SummaryView {
         influence: influences(findings),
         sensitivity: sensitivity_words(findings),
         cautions: cautions_by_code(findings),
-        not_decided: findings.series.iter().any(|series| series.answers.iter().any(|answer| undecided(answer, &findings.plan))),
+        not_decided: findings
+            .series
+            .iter()
+            .any(|series| series.answers.iter().any(|answer| undecided(answer, &findings.plan))),
     }
 }
 
@@ -67,19 +70,31 @@ fn lead(findings: &Findings) -> String {
     let plan = &findings.plan;
     let name = &plan.quantity.name;
     let period = &plan.review.period;
-    let without: Vec<&str> =
-        findings.series.iter().filter(|series| series.without_readings).map(|series| series.name.as_str()).collect();
+    let without: Vec<&str> = findings
+        .series
+        .iter()
+        .filter(|series| series.without_readings)
+        .map(|series| series.name.as_str())
+        .collect();
     let what = match findings.series.as_slice() {
         [only] => format!("This is the review of {name}, {}, for {period}.", super::series::title(only)),
-        all => format!("This is the review of {name} for {period}, {} series.", text::count(all.len() as u64)),
+        all => {
+            format!("This is the review of {name} for {period}, {} series.", text::count(all.len() as u64))
+        }
     };
     let rest = match without.as_slice() {
         [] => String::new(),
         [one] => format!(" {one} has no readings of {period}; its answers rest on what was known before."),
         many if many.len() <= NAMES_LISTED => {
-            format!(" {} have no readings of {period}; their answers rest on what was known before.", many.join(", "))
+            format!(
+                " {} have no readings of {period}; their answers rest on what was known before.",
+                many.join(", ")
+            )
         }
-        many => format!(" {} series have no readings of {period}; their answers rest on what was known before.", many.len()),
+        many => format!(
+            " {} series have no readings of {period}; their answers rest on what was known before.",
+            many.len()
+        ),
     };
     format!("{what}{rest}")
 }
@@ -95,13 +110,13 @@ fn single(findings: &Findings, series: &SeriesFindings) -> TableView {
     let mut table = TableView::new("The questions and their answers", &columns);
     for answer in &series.answers {
         let rule = rule_of(plan, &answer.id);
-        let mut cells = vec![
-            plain(question_words(answer.say.as_deref(), &answer.words)),
-            plain(said(answer, &numbers)),
-        ];
+        let mut cells =
+            vec![plain(question_words(answer.say.as_deref(), &answer.words)), plain(said(answer, &numbers))];
         if ruled {
             cells.push(verdict_cell(answer.verdict.as_ref(), rule));
-            cells.push(plain(rule.map_or_else(|| NOTHING.to_string(), |rule| rule_words(rule, plan, Some(&series.name)))));
+            cells.push(plain(
+                rule.map_or_else(|| NOTHING.to_string(), |rule| rule_words(rule, plan, Some(&series.name))),
+            ));
         }
         table.row(cells);
     }
@@ -128,7 +143,12 @@ fn questions_over_series(findings: &Findings) -> Option<TableView> {
     let plan = &findings.plan;
     let mut table = TableView::new(
         "The questions, and what came out over all series",
-        &[("question", Column::Head), ("name", Column::Text), ("in short", Column::Text), ("rule", Column::Text)],
+        &[
+            ("question", Column::Head),
+            ("name", Column::Text),
+            ("in short", Column::Text),
+            ("rule", Column::Text),
+        ],
     );
     for question in &plan.questions {
         let across = findings.across.iter().find(|across| across.id == question.id);
@@ -145,7 +165,12 @@ fn questions_over_series(findings: &Findings) -> Option<TableView> {
             plain(question_words(question.say.as_deref(), words)),
             code(&question.id),
             plain(short),
-            plain(question.rule.as_ref().map_or_else(|| NOTHING.to_string(), |rule| rule_words(rule, plan, None))),
+            plain(
+                question
+                    .rule
+                    .as_ref()
+                    .map_or_else(|| NOTHING.to_string(), |rule| rule_words(rule, plan, None)),
+            ),
         ]);
     }
     table.some()
@@ -180,7 +205,11 @@ fn verdicts_in_short(findings: &Findings, question: &QuestionPlan) -> String {
         match names.len() {
             0 => {}
             few if few <= NAMES_LISTED => parts.push(format!("{words}: {}", names.join(", "))),
-            many => parts.push(format!("{words}: {} of {}", text::count(many as u64), text::count(answers.len() as u64))),
+            many => parts.push(format!(
+                "{words}: {} of {}",
+                text::count(many as u64),
+                text::count(answers.len() as u64)
+            )),
         }
     }
     if parts.is_empty() { NOTHING.to_string() } else { parts.join("; ") }
@@ -190,7 +219,8 @@ fn verdicts_in_short(findings: &Findings, question: &QuestionPlan) -> String {
 fn range_in_short(findings: &Findings, question: &QuestionPlan) -> String {
     let mut figures: Vec<(&SeriesFindings, f64, Meaning, Option<f64>)> = Vec::new();
     for (series, answer) in answers_to(findings, question) {
-        if let Some((figure, meaning)) = main_figure(&answer.figures).filter(|(figure, _)| figure.is_finite()) {
+        if let Some((figure, meaning)) = main_figure(&answer.figures).filter(|(figure, _)| figure.is_finite())
+        {
             let uncertainty = numbers::Around::of(&answer.figures).uncertainty();
             figures.push((series, figure, meaning, uncertainty));
         }
@@ -239,7 +269,8 @@ fn series_table<'f>(
         .iter()
         .filter(|question| question.rule.is_some() && !answers_to(findings, question).is_empty())
         .collect();
-    let mut columns = vec![("series", Column::Head), ("readings", Column::Number), (level.as_str(), Column::Number)];
+    let mut columns =
+        vec![("series", Column::Head), ("readings", Column::Number), (level.as_str(), Column::Number)];
     columns.extend(ruled.iter().map(|question| (question.id.as_str(), Column::Text)));
     columns.push(("flagged checks", Column::Text));
     if whole {
@@ -249,15 +280,24 @@ fn series_table<'f>(
     for series in shown {
         let numbers = numbers_of(findings, series);
         let facts = super::data::period_of(&findings.data, &series.name, plan).map(|period| &period.facts);
-        let mut cells =
-            vec![plain(super::series::title(series)), plain(text::count(facts.map_or(0, |facts: &Facts| facts.n)))];
+        let mut cells = vec![
+            plain(super::series::title(series)),
+            plain(text::count(facts.map_or(0, |facts: &Facts| facts.n))),
+        ];
         cells.push(plain(level_in_short(series, &numbers)));
         for question in &ruled {
             let answer = series.answers.iter().find(|answer| answer.id == question.id);
-            cells.push(answer.map_or_else(|| plain(NOTHING), |answer| verdict_and_figure(answer, question, &numbers)));
+            cells.push(
+                answer
+                    .map_or_else(|| plain(NOTHING), |answer| verdict_and_figure(answer, question, &numbers)),
+            );
         }
-        let flags: Vec<&str> =
-            series.checks.iter().filter(|check| check.concern == Concern::Flag).map(|check| check.id).collect();
+        let flags: Vec<&str> = series
+            .checks
+            .iter()
+            .filter(|check| check.concern == Concern::Flag)
+            .map(|check| check.id)
+            .collect();
         cells.push(plain(if flags.is_empty() { "none".to_string() } else { flags.join(", ") }));
         if whole {
             let mut changed: Vec<String> = changes(series).into_iter().map(|(_, id, _)| id).collect();
@@ -344,7 +384,9 @@ fn influences(findings: &Findings) -> Vec<String> {
             most.0,
             findings.plan.review.period
         )],
-        (Some(all), _) => vec![format!("The prior makes up {} of every level’s estimate.", share_text(all.1))],
+        (Some(all), _) => {
+            vec![format!("The prior makes up {} of every level’s estimate.", share_text(all.1))]
+        }
         _ => Vec::new(),
     }
 }
@@ -420,7 +462,8 @@ pub fn cautions_of(findings: &Findings, series: Option<&str>) -> Option<TableVie
     }
     columns.extend([("question", Column::Text), ("caution", Column::Text)]);
     let mut table = TableView::new(caption, &columns);
-    let all = findings.cautions.iter().filter(|caution| series.is_none() || caution.series.as_deref() == series);
+    let all =
+        findings.cautions.iter().filter(|caution| series.is_none() || caution.series.as_deref() == series);
     for caution in all.take(if series.is_none() { CAUTIONS_PRINTED } else { usize::MAX }) {
         let mut cells = vec![code(caution.code)];
         if series.is_none() && findings.series.len() > 1 {
@@ -443,7 +486,12 @@ pub fn cautions_rest(findings: &Findings) -> Option<String> {
 pub fn limits(plan: &Plan) -> Option<TableView> {
     let mut table = TableView::new(
         "Limits",
-        &[("limit", Column::Head), ("value", Column::Number), ("applies to", Column::Text), ("basis", Column::Text)],
+        &[
+            ("limit", Column::Head),
+            ("value", Column::Number),
+            ("applies to", Column::Text),
+            ("basis", Column::Text),
+        ],
     );
     for limit in &plan.limits {
         let applies = match limit.applies_to {

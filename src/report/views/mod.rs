@@ -30,6 +30,9 @@ const SPEC_LINES_PRINTED: usize = 400;
 /// From this many question-and-series pairs on, wrong flags by chance alone are to be expected.
 const MANY_EXAMINED: usize = 20;
 
+/// p below which a check raises a flag.
+const FLAG_BELOW: f64 = 0.01;
+
 /// The whole report.
 #[derive(Debug, Serialize)]
 pub struct ReportView {
@@ -145,7 +148,8 @@ pub fn build(findings: &Findings, stamp: &StampText) -> (ReportView, Drawings) {
         limit_of_each_reading: plan.limits.iter().any(|limit| limit.applies_to == AppliesTo::EachReading),
         questions: head::questions(findings),
         data: data::view(findings),
-        quadrature: (findings.quadrature_error > 0.0).then(|| text::significant(findings.quadrature_error, 1)),
+        quadrature: (findings.quadrature_error > 0.0)
+            .then(|| text::significant(findings.quadrature_error, 1)),
         all_series: (findings.series.len() > 1).then(|| head::all_series(findings)).flatten(),
         levels_figure,
         pages_left_out: left_out(findings.series.len(), pages.len()),
@@ -160,10 +164,10 @@ pub fn build(findings: &Findings, stamp: &StampText) -> (ReportView, Drawings) {
         many_examined: many_examined(findings),
         cautions: head::cautions_of(findings, None),
         cautions_rest: head::cautions_rest(findings),
-        opinion: review.interpretation.as_ref().map(|opinion| OpinionView {
-            text: own_markdown(&opinion.text),
-            by: opinion.by.clone(),
-        }),
+        opinion: review
+            .interpretation
+            .as_ref()
+            .map(|opinion| OpinionView { text: own_markdown(&opinion.text), by: opinion.by.clone() }),
         actions: head::actions(plan),
         inputs: inputs(stamp),
         inputs_copied: plan.report.inputs_copied,
@@ -196,9 +200,8 @@ fn own_markdown(text: &str) -> Value {
 }
 
 fn left_out(all: usize, shown: usize) -> Option<String> {
-    (shown < all).then(|| {
-        format!("{} of {} series", text::count((all - shown) as u64), text::count(all as u64))
-    })
+    (shown < all)
+        .then(|| format!("{} of {} series", text::count((all - shown) as u64), text::count(all as u64)))
 }
 
 fn many_examined(findings: &Findings) -> Option<String> {
@@ -215,16 +218,14 @@ fn many_examined(findings: &Findings) -> Option<String> {
             text::count(examined as u64),
             text::count(findings.series.len() as u64),
             text::count(checks as u64),
-            text::significant(checks as f64 * crate::checks::FLAG_BELOW, 2)
+            text::significant(checks as f64 * FLAG_BELOW, 2)
         )
     })
 }
 
 fn inputs(stamp: &StampText) -> TableView {
-    let mut table = TableView::new(
-        "What went into the stamp",
-        &[("file", Column::Head), ("SHA-256", Column::Text)],
-    );
+    let mut table =
+        TableView::new("What went into the stamp", &[("file", Column::Head), ("SHA-256", Column::Text)]);
     for (file, sha256) in &stamp.inputs {
         table.row(vec![code(file), code(sha256)]);
     }
@@ -242,7 +243,9 @@ fn dependencies() -> TableView {
     let section = MANIFEST.split("[dependencies]").nth(1).unwrap_or_default();
     let section = section.split("\n[").next().unwrap_or_default();
     for line in section.lines() {
-        let Some(name) = line.split('=').next().map(str::trim).filter(|name| !name.is_empty()) else { continue };
+        let Some(name) = line.split('=').next().map(str::trim).filter(|name| !name.is_empty()) else {
+            continue;
+        };
         let entry = format!("name = \"{name}\"\nversion = \"");
         let version = LOCK.split(&entry).nth(1).and_then(|rest| rest.split('"').next());
         if let Some(version) = version {

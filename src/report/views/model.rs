@@ -53,7 +53,11 @@ fn level(level: &LevelPrior, theta: &str) -> Vec<String> {
             vec![format!("{theta} ~ N({}, {}²)    stated", number(*mean), number(*sd))]
         }
         LevelPrior::Worth { mean, readings } => {
-            vec![format!("{theta} ~ N({}, σ²/{})    stated, worth readings", number(*mean), number(*readings))]
+            vec![format!(
+                "{theta} ~ N({}, σ²/{})    stated, worth readings",
+                number(*mean),
+                number(*readings)
+            )]
         }
         LevelPrior::LongRun { mean, sd, between_sd } => vec![
             format!("{theta} | μ ~ N(μ, τ²), τ = {}, known", number(*between_sd)),
@@ -102,7 +106,9 @@ fn of_periods(periods: &Periods, theta: &str, each: &str) -> Vec<String> {
         Between::HalfCauchy(scale) => lines.push(format!("τ ~ half-Cauchy, scale {}", number(scale))),
         Between::Known(sd) => lines.push(format!("τ = {}, known", number(sd))),
         Between::None => {}
-        Between::Reml => lines.push("τ: estimated by restricted maximum likelihood, taken as known".to_string()),
+        Between::Reml => {
+            lines.push("τ: estimated by restricted maximum likelihood, taken as known".to_string())
+        }
         Between::Moments => lines.push("τ: estimated by moments, taken as known".to_string()),
     }
     if periods.weight < 1.0 {
@@ -171,7 +177,9 @@ pub fn results(series: &SeriesFindings, numbers: &Numbers<'_>) -> (TableView, Ve
     let unit = super::data::in_brackets(&numbers.unit);
     let caption = match numbers.scale {
         Scale::Linear => format!("What is known{unit}: mean, sd and central 95 % interval"),
-        Scale::Log => format!("What is known{unit}: median (geometric mean) and central 95 % interval; spreads as factors"),
+        Scale::Log => format!(
+            "What is known{unit}: median (geometric mean) and central 95 % interval; spreads as factors"
+        ),
     };
     let mut table = TableView::new(
         caption,

@@ -261,7 +261,12 @@ impl<'a> Numbers<'a> {
             Scale::Log => fm::exp(value),
         });
         let spread = Some(0.25 * (upper - lower));
-        Ok(format!("{} ({} to {})", self.value(middle, spread), self.value(lower, spread), self.value(upper, spread)))
+        Ok(format!(
+            "{} ({} to {})",
+            self.value(middle, spread),
+            self.value(lower, spread),
+            self.value(upper, spread)
+        ))
     }
 
     fn places_of(&self, uncertainty: f64, number: f64, of_spread: bool) -> Places {

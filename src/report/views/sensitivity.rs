@@ -93,10 +93,16 @@ fn table(series: &SeriesFindings, answers: &[Answer], numbers: &Numbers<'_>) -> 
         let words = verdict(given, rule).words;
         let was = answers.iter().find(|answer| answer.id == id).and_then(|answer| answer.verdict.as_ref());
         let changed = !base && was.is_some_and(|was| was.say.is_some() && was.say != given.say);
-        if changed { bold(&format!("{said}: changed to “{words}”")) } else { plain(format!("{said}: {words}")) }
+        if changed {
+            bold(&format!("{said}: changed to “{words}”"))
+        } else {
+            plain(format!("{said}: {words}"))
+        }
     };
     let mut cells = vec![bold("as reviewed")];
-    cells.extend(answers.iter().map(|answer| cell(&answer.id, &answer.figures, answer.verdict.as_ref(), true)));
+    cells.extend(
+        answers.iter().map(|answer| cell(&answer.id, &answer.figures, answer.verdict.as_ref(), true)),
+    );
     table.row(cells);
     for under in &series.sensitivity {
         let mut cells = vec![plain(&under.alternative)];

@@ -150,7 +150,8 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
 
 fn spread(series: &SeriesFindings, numbers: &Numbers<'_>) -> Option<SpreadView> {
     let spread = series.spread_of_means.as_ref()?;
-    let unit = if numbers.scale == Scale::Linear { numbers.unit.as_str() } else { " (of natural logarithms)" };
+    let unit =
+        if numbers.scale == Scale::Linear { numbers.unit.as_str() } else { " (of natural logarithms)" };
     let said = |figure: &crate::quantity::Figure| match figure {
         Ok(sd) => format!("{}{unit}", text::significant(*sd, 2)),
         Err(absent) => format!("none ({})", absent.reason),
@@ -203,16 +204,27 @@ fn checks(series: &SeriesFindings) -> Option<TableView> {
             (None, Concern::None) => "none".to_string(),
         };
         let meaning = check.why.as_ref().map_or_else(|| check.meaning.clone(), |why| why.clone());
-        let statistic = check.statistic.map_or_else(|| NOTHING.to_string(), |value| {
-            let value = text::significant(value, 4);
-            if check.statistic_name.is_empty() { value } else { format!("{} = {value}", check.statistic_name) }
-        });
+        let statistic = check.statistic.map_or_else(
+            || NOTHING.to_string(),
+            |value| {
+                let value = text::significant(value, 4);
+                if check.statistic_name.is_empty() {
+                    value
+                } else {
+                    format!("{} = {value}", check.statistic_name)
+                }
+            },
+        );
         table.row(vec![
             plain(check.id),
             plain(statistic),
             plain(if check.reference.is_empty() { NOTHING } else { check.reference.as_str() }),
             plain(check.p.map_or_else(|| NOTHING.to_string(), text::p_value)),
-            if check.concern == Concern::Flag && check.why.is_none() { super::table::bold(&finding) } else { plain(finding) },
+            if check.concern == Concern::Flag && check.why.is_none() {
+                super::table::bold(&finding)
+            } else {
+                plain(finding)
+            },
             plain(meaning),
             plain(if check.why.is_some() { NOTHING } else { check.consequence.as_str() }),
         ]);
