@@ -8,7 +8,8 @@ use super::escape;
 use super::views::ReportView;
 use crate::diagnostics::{Fault, Faults, Outcome, Place};
 use minijinja::syntax::SyntaxConfig;
-use minijinja::{Environment, Error, ErrorKind, UndefinedBehavior, Value};
+use minijinja::value::Serde;
+use minijinja::{Environment, Error, ErrorKind, UndefinedBehavior};
 
 /// The template of the whole report.
 const REVIEW: &str = "review.md";
@@ -67,7 +68,7 @@ pub fn render(view: &ReportView, series: usize, own: Option<(&str, &[u8])>) -> O
         added.map_err(|error| fault(&error, own_text))?;
     }
     let template = environment.get_template(REVIEW).map_err(|error| fault(&error, own_text))?;
-    let markdown = template.render(Value::from_serialize(view)).map_err(|error| fault(&error, own_text))?;
+    let markdown = template.render(Serde(view)).map_err(|error| fault(&error, own_text))?;
     Ok(tidied(&markdown))
 }
 

@@ -347,7 +347,7 @@ fn every_caution_has_a_meaning() {
                 continue;
             }
             let text = std::fs::read_to_string(&path).unwrap_or_default();
-            for part in text.split("Caution::new(").skip(1) {
+            for part in text.split(concat!("Caution", "::new(")).skip(1) {
                 let code = part.trim_start().strip_prefix('"').and_then(|rest| rest.split('"').next());
                 let known = |code: &str| super::views::fixed::CODES.iter().any(|(known, _)| *known == code);
                 missing.extend(code.filter(|code| !known(code)).map(str::to_string));
