@@ -11,6 +11,8 @@ mod rows;
 mod series;
 mod sources;
 mod toml_text;
+#[cfg(test)]
+mod tests;
 mod written;
 
 pub use about::BUILT_IN_TEMPLATES;

@@ -4,6 +4,7 @@
 pub mod keys;
 pub mod language;
 pub mod reader;
+pub mod schema;
 pub mod table;
 pub mod text;
 
