@@ -1,10 +1,10 @@
 //! The whole way in one function: [`run`]. Spec and data go in, findings come out; nothing is written.
 
-use crate::checks::{Check, Concern};
+use crate::checks::{Check, Concern, suite};
 use crate::data::evidence::Evidence;
 use crate::data::{self, Data, PeriodData, SeriesData};
 use crate::diagnostics::{Caution, Fault, Faults, Outcome};
-use crate::findings::{AcrossFindings, Answer, Findings, Influence, SeriesFindings, UnderAlternative};
+use crate::findings::{self, AcrossFindings, Answer, Findings, Influence, SeriesFindings, UnderAlternative};
 use crate::plan::{self, Plan, QuestionPlan};
 use crate::posterior::{self, Basis, Posterior};
 use crate::prior::ground::Ground;
@@ -439,8 +439,20 @@ fn across(prepared: &Prepared, worked: &[Worked<'_>]) -> Vec<AcrossFindings> {
     found
 }
 
-fn checks_of(_: &Prepared, _: &Data, _: &Worked<'_>) -> Vec<Check> {
-    Vec::new()
+/// The checks of one series; none without readings.
+fn checks_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Vec<Check> {
+    let Some(period) = worked.period.filter(|_| !worked.readings.is_nothing()) else { return Vec::new() };
+    let plan = &prepared.plan;
+    let ground = Ground { plan, data, series: worked.name, scale: plan.quantity.scale, restored: false };
+    suite::all(&suite::Subject {
+        model: &worked.model,
+        period,
+        readings: &worked.readings,
+        earlier: &ground.earlier_data(),
+        planned: findings::cautions::planned(plan, worked.name),
+        prior_only: worked.prior.as_ref(),
+        posterior: worked.posterior.as_ref(),
+    })
 }
 
 /// A figure that could not be computed to the promised accuracy is an error, never a doubtful digit.

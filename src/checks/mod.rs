@@ -31,6 +31,7 @@ pub mod runs;
 pub mod season;
 pub mod serial_correlation;
 pub mod shapiro_wilk;
+pub mod suite;
 pub mod tails;
 pub mod timed;
 pub mod trend;
