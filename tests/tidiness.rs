@@ -48,7 +48,10 @@ fn code(text: &str) -> String {
 }
 
 fn is_test_file(path: &Path) -> bool {
-    path.file_name().is_some_and(|name| name == "tests.rs") || path.iter().any(|part| part == "tests")
+    path.file_name().is_some_and(|name| {
+        let name = name.to_string_lossy();
+        name.ends_with("tests.rs") || name == "published.rs"
+    }) || path.iter().any(|part| part == "tests")
 }
 
 #[test]
