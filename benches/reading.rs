@@ -19,7 +19,8 @@ fn main() {
     // `cargo bench` adds `--bench`; `cargo test --benches` runs the program too, on few rows.
     let words: Vec<String> = std::env::args().skip(1).filter(|word| !word.starts_with("--")).collect();
     let is_bench = std::env::args().any(|word| word == "--bench");
-    let rows = words.first().and_then(|word| word.parse().ok()).unwrap_or(if is_bench { 2_000_000 } else { 2_000 });
+    let rows =
+        words.first().and_then(|word| word.parse().ok()).unwrap_or(if is_bench { 2_000_000 } else { 2_000 });
     let folder = std::env::temp_dir().join(format!("reassay-reading-{}", std::process::id()));
     std::fs::create_dir_all(&folder).unwrap();
     let file = words.get(1).map_or_else(|| folder.join("rows.csv"), PathBuf::from);
@@ -38,8 +39,18 @@ fn main() {
     let per_row = |time: Duration| time.as_secs_f64() * 1e9 / rows as f64;
     let speed = |time: Duration| bytes as f64 / time.as_secs_f64() / 1e9;
     println!("{rows} rows, {bytes} bytes");
-    println!("hashing alone     {:8.3} s  {:6.1} ns/row  {:5.2} GB/s", hashing.as_secs_f64(), per_row(hashing), speed(hashing));
-    println!("hashing, reading  {:8.3} s  {:6.1} ns/row  {:5.2} GB/s", reading.as_secs_f64(), per_row(reading), speed(reading));
+    println!(
+        "hashing alone     {:8.3} s  {:6.1} ns/row  {:5.2} GB/s",
+        hashing.as_secs_f64(),
+        per_row(hashing),
+        speed(hashing)
+    );
+    println!(
+        "hashing, reading  {:8.3} s  {:6.1} ns/row  {:5.2} GB/s",
+        reading.as_secs_f64(),
+        per_row(reading),
+        speed(reading)
+    );
     println!("ratio             {:8.2}", reading.as_secs_f64() / hashing.as_secs_f64());
     std::fs::remove_dir_all(&folder).unwrap();
 }
@@ -84,8 +95,14 @@ fn write_rows(file: &Path, rows: u64) {
         let noise = (state >> 33) % 2000;
         let year = 2015 + row * 11 / rows;
         let (month, day) = (1 + row / 97 % 12, 1 + row / 13 % 28);
-        writeln!(out, "ST-{:02},{year},{year}-{month:02}-{day:02},{}.{:02}", state >> 58 & 31, 40 + noise / 100, noise % 100)
-            .unwrap();
+        writeln!(
+            out,
+            "ST-{:02},{year},{year}-{month:02}-{day:02},{}.{:02}",
+            state >> 58 & 31,
+            40 + noise / 100,
+            noise % 100
+        )
+        .unwrap();
     }
     out.flush().unwrap();
 }

@@ -6,13 +6,38 @@ use super::decode::{self, Reading};
 use super::fault_list::FaultList;
 use super::record::{Dialect, Record, Splitter};
 use crate::diagnostics::{Fault, Place};
-use crate::plan::{FileRef, Source};
+use crate::plan::{FileRef, OverridesFile, Source};
 use crate::source::{self, Hashed};
+use crate::spec::table::Span;
 use memchr::{memchr, memrchr};
 
 /// What takes the rows of a file.
 pub trait Rows {
     fn row(&mut self, record: &Record<'_>, faults: &mut FaultList);
+}
+
+/// What the spec says of a text file's form.
+#[derive(Clone, Copy)]
+pub struct Layout<'a> {
+    pub delimiter: Option<u8>,
+    pub encoding: Option<&'a str>,
+    pub skip: u64,
+    /// Where the spec speaks of the file.
+    pub span: &'a Span,
+}
+
+impl<'a> From<&'a Source> for Layout<'a> {
+    fn from(source: &'a Source) -> Layout<'a> {
+        let Source { delimiter, encoding, skip, span, .. } = source;
+        Layout { delimiter: *delimiter, encoding: encoding.as_deref(), skip: *skip, span }
+    }
+}
+
+impl<'a> From<&'a OverridesFile> for Layout<'a> {
+    fn from(overrides: &'a OverridesFile) -> Layout<'a> {
+        let OverridesFile { delimiter, encoding, skip, file, .. } = overrides;
+        Layout { delimiter: *delimiter, encoding: encoding.as_deref(), skip: *skip, span: &file.span }
+    }
 }
 
 /// The start of a file in which its delimiter must show.
@@ -28,12 +53,12 @@ pub struct ReadFile<R> {
 
 /// Reads one file. `start` makes, from the head, what takes the rows.
 pub fn read<R: Rows>(
-    source: &Source,
+    layout: Layout<'_>,
     file: &FileRef,
     faults: &mut FaultList,
     start: impl FnOnce(&Head, &mut FaultList) -> Option<R>,
 ) -> Result<ReadFile<R>, Fault> {
-    let mut parser = Parser::new(source, &file.written, faults, start);
+    let mut parser = Parser::new(layout, &file.written, faults, start);
     let hashed = source::stream(&file.path, &file.written, "reading the data", |block| parser.feed(block))?;
     let (notes, rows) = parser.end();
     Ok(ReadFile { hashed, notes, rows })
@@ -41,7 +66,7 @@ pub fn read<R: Rows>(
 
 /// Takes a file's bytes in blocks of any size.
 pub struct Parser<'a, R, S> {
-    source: &'a Source,
+    layout: Layout<'a>,
     file: &'a str,
     faults: &'a mut FaultList,
     start: Option<S>,
@@ -66,9 +91,9 @@ enum Stage<R> {
 }
 
 impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S> {
-    pub fn new(source: &'a Source, file: &'a str, faults: &'a mut FaultList, start: S) -> Self {
+    pub fn new(layout: Layout<'a>, file: &'a str, faults: &'a mut FaultList, start: S) -> Self {
         Parser {
-            source,
+            layout,
             file,
             faults,
             start: Some(start),
@@ -116,12 +141,12 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
         let raw = std::mem::take(&mut self.raw);
         if raw.is_empty() {
             let fault = Fault::wrong("empty-file", format!("{} is empty", self.file))
-                .at(self.source.span.place())
+                .at(self.layout.span.place())
                 .expected("a head of column names and rows below");
             return self.refuse(fault);
         }
         let probe = &raw[..raw.len().min(2 * HEAD_BYTES)];
-        match decode::choose(probe, self.source.encoding.as_deref(), self.file) {
+        match decode::choose(probe, self.layout.encoding, self.file) {
             Ok(reading) => {
                 if !reading.is_utf_8() {
                     self.notes.push(format!("encoding {}", reading.name));
@@ -132,7 +157,7 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
                 self.reading = Some(reading);
                 self.text(&raw[mark_bytes..], last);
             }
-            Err(fault) => self.refuse(fault.at(self.source.span.place())),
+            Err(fault) => self.refuse(fault.at(self.layout.span.place())),
         }
     }
 
@@ -158,7 +183,7 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
             let message =
                 format!("{} holds bytes that are no {name} text, on or after line {line}", self.file);
             let fault = Fault::wrong("wrong-encoding", message)
-                .at(self.source.span.place())
+                .at(self.layout.span.place())
                 .repair("name the encoding that the file was written in, or save it as UTF-8");
             self.refuse(fault);
         }
@@ -190,13 +215,13 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
             b'\n'
         };
         let mut at = 0;
-        for _ in 0..self.source.skip {
+        for _ in 0..self.layout.skip {
             match memchr(line_end, &text[at..]) {
                 Some(length) => at += length + 1,
                 None => {
                     let message =
-                        format!("{} has no more than the {} lines to skip", self.file, self.source.skip);
-                    let fault = Fault::wrong("nothing-after-skip", message).at(self.source.span.place());
+                        format!("{} has no more than the {} lines to skip", self.file, self.layout.skip);
+                    let fault = Fault::wrong("nothing-after-skip", message).at(self.layout.span.place());
                     self.refuse(fault);
                     return None;
                 }
@@ -206,13 +231,13 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
             // Only the lines of the head must be text here; the body is looked at as it comes.
             let until = at + wrong.valid_up_to();
             if memchr(line_end, &text[at..until]).is_none() && (wrong.error_len().is_some() || last) {
-                let line = self.source.skip + 1;
+                let line = self.layout.skip + 1;
                 let fault = not_utf_8(self.file, line, &text[at..], wrong.valid_up_to());
                 self.refuse(fault);
                 return None;
             }
         }
-        let delimiter = match self.source.delimiter {
+        let delimiter = match self.layout.delimiter {
             Some(stated) => stated,
             None => match sniff(&text[at..], line_end, last, self.file) {
                 Ok(Some(found)) => {
@@ -224,13 +249,13 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
                     b','
                 }
                 Err(fault) => {
-                    let place = first_line_place(self.file, self.source.skip + 1, &text[at..], line_end);
+                    let place = first_line_place(self.file, self.layout.skip + 1, &text[at..], line_end);
                     self.refuse(fault.at(place));
                     return None;
                 }
             },
         };
-        let mut splitter = Splitter::new(Dialect { delimiter, line_end }, self.source.skip + 1);
+        let mut splitter = Splitter::new(Dialect { delimiter, line_end }, self.layout.skip + 1);
         let mut head: Option<Head> = None;
         // The head is one record: it is given whole, with nothing of the body.
         let mut end = at;
@@ -267,7 +292,7 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
         let Some(head) = head else {
             if self.faults.is_empty() {
                 let fault = Fault::wrong("no-head", format!("{} has no head of column names", self.file))
-                    .at(self.source.span.place())
+                    .at(self.layout.span.place())
                     .expected("a first line of column names, after the lines of `skip`");
                 self.refuse(fault);
             }

@@ -3,9 +3,8 @@
 use super::dates::Day;
 use super::evidence::{Evidence, Seen, Single};
 use super::fault_list::FaultList;
-use super::gather::{Cell, Gather, Group, Member, Observed, Sums, Tally, too_many_singles};
+use super::gather::{Cell, Gather, Group, Observed, Sums, Tally, too_many_singles};
 use super::{Facts, Mark, PeriodData};
-use crate::diagnostics::Fault;
 use crate::math::fm;
 use crate::math::sums::Moments;
 use crate::quantity::Scale;
@@ -204,30 +203,6 @@ pub fn refuse_lost_singles(gather: &Gather, faults: &mut FaultList) {
         if any && cell.plain.values().is_none() {
             faults.push(too_many_singles());
             return;
-        }
-    }
-}
-
-/// A marked row among several replicates has no average.
-pub fn refuse_marked_replicates(gather: &Gather, faults: &mut FaultList) {
-    for cell in &gather.cells {
-        for (name, group) in &cell.groups {
-            let marked = |member: &&Member| member.observed.mark != Mark::None;
-            if let Some(member) = group.members.iter().find(marked)
-                && group.members.len() > 1
-            {
-                faults.note("marked-replicate", || {
-                    let message = format!(
-                        "replicate \"{}\" of {}, {} has a mark among its rows ({}): its average is not known",
-                        String::from_utf8_lossy(name),
-                        cell.series,
-                        cell.period,
-                        gather.name_of_row(member.file, member.line)
-                    );
-                    Fault::wrong("marked-replicate", message)
-                        .repair("give the replicate as one row with one mark, or leave `replicates` out")
-                });
-            }
         }
     }
 }

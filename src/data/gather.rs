@@ -364,7 +364,22 @@ impl Gather {
         };
         let groups = &mut self.cells[number].groups;
         match groups.get_mut(replicate) {
-            Some(group) => group.members.push(member),
+            Some(group) => {
+                let marked = |member: &Member| member.observed.mark != Mark::None;
+                if marked(&member) || group.members.iter().any(marked) {
+                    faults.note("marked-replicate", || {
+                        let message = format!(
+                            "the replicates \"{}\" are several rows, one of them with a mark: their average is not known",
+                            String::from_utf8_lossy(replicate)
+                        );
+                        Fault::wrong("marked-replicate", message)
+                            .at(place())
+                            .expected("numbers in all rows of the replicates")
+                            .repair("give them as one row with one mark, or leave `replicates` out")
+                    });
+                }
+                group.members.push(member);
+            }
             None => {
                 groups.insert(replicate.into(), Group { members: vec![member] });
             }

@@ -1,6 +1,7 @@
 //! Stage 3: from sources to readings and sums per series and period. One file a format, one screen
 //! for all of them: whatever cannot be read as meant is a fault with its row.
 
+mod cell;
 mod columns;
 mod dates;
 mod decode;
@@ -12,12 +13,14 @@ mod gather;
 mod index;
 mod number;
 mod order;
+mod overrides;
 mod read;
 mod record;
 mod rows_csv;
 mod screen;
 mod summaries;
 
+pub use overrides::read_overrides;
 pub use read::read;
 pub use rows_csv::rows_csv;
 

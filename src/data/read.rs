@@ -1,5 +1,6 @@
 //! All sources of a plan, in the order of the spec.
 
+use super::cell::{Codes, Reader, Refused, Understood};
 use super::columns::{list, nearest, never_both};
 use super::delimited;
 use super::fault_list::FaultList;
@@ -7,7 +8,7 @@ use super::finish;
 use super::gather::{Gather, IDS_COMPARED_AT_MOST, Observed, Row};
 use super::number;
 use super::order;
-use super::screen::{self, Codes, Reader, Refused, Screen, Understood};
+use super::screen::{self, Screen};
 use super::summaries::{self, SummaryScreen};
 use super::{Data, Fate, InputFile, Mark, SeriesData};
 use crate::diagnostics::{Caution, Fault, Outcome};
@@ -43,7 +44,6 @@ pub fn read(plan: &Plan) -> Outcome<Data> {
     }
     refuse_the_same_twice(plan, &gather, &mut faults);
     refuse_readings_beside_summary(&gather, &mut faults);
-    finish::refuse_marked_replicates(&gather, &mut faults);
     finish::refuse_lost_singles(&gather, &mut faults);
     if heads.iter().all(Option::is_some) {
         judge_exclusions(plan, &gather, &heads, &mut faults);
@@ -51,7 +51,7 @@ pub fn read(plan: &Plan) -> Outcome<Data> {
     let periods = match order::periods(&gather, plan) {
         Ok(periods) => periods,
         Err(fault) => {
-            faults.push(fault);
+            faults.push(fault.at(plan.sources.first().map(|source| source.span.place())));
             Vec::new()
         }
     };
@@ -85,7 +85,7 @@ fn read_file(
     let mut names = None;
     let (hashed, mut notes, result) = match &source.what {
         SourceKind::Readings { .. } => {
-            let read = delimited::read(source, file, faults, |head, faults| {
+            let read = delimited::read(source.into(), file, faults, |head, faults| {
                 names = Some(head.names.clone());
                 Screen::new(head, source, plan, gather, number, faults)
             });
@@ -102,7 +102,7 @@ fn read_file(
             }
         }
         SourceKind::Summaries(_) => {
-            let read = delimited::read(source, file, faults, |head, faults| {
+            let read = delimited::read(source.into(), file, faults, |head, faults| {
                 names = Some(head.names.clone());
                 SummaryScreen::new(head, source, plan, gather, faults)
             });
@@ -153,7 +153,7 @@ fn read_file(
     Some(taken)
 }
 
-fn other_bytes(file: &FileRef, pinned: &str, found: &str) -> Fault {
+pub fn other_bytes(file: &FileRef, pinned: &str, found: &str) -> Fault {
     let only_line_ends = source::hashes_by_line_end(&file.path, &file.written)
         .is_ok_and(|hashes| hashes.iter().any(|hash| hash == pinned));
     let message = format!("{} is not the file that the spec pins: its SHA-256 is {found}", file.written);

@@ -455,7 +455,7 @@ mod laws {
         let source = &plan.sources[0];
         let notes = {
             let gather = &mut gather;
-            let mut parser = Parser::new(source, "a.csv", &mut faults, |head, faults| {
+            let mut parser = Parser::new(source.into(), "a.csv", &mut faults, |head, faults| {
                 Screen::new(head, source, plan, gather, 0, faults)
             });
             let mut rest = bytes;
