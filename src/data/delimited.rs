@@ -59,7 +59,7 @@ pub fn read<R: Rows>(
     start: impl FnOnce(&Head, &mut FaultList) -> Option<R>,
 ) -> Result<ReadFile<R>, Fault> {
     let mut parser = Parser::new(layout, &file.written, faults, start);
-    let hashed = source::stream(&file.path, &file.written, "reading the data", |block| parser.feed(block))?;
+    let hashed = source::stream(&file.path, &file.written, "reading the file", |block| parser.feed(block))?;
     let (notes, rows) = parser.end();
     Ok(ReadFile { hashed, notes, rows })
 }
@@ -221,7 +221,9 @@ impl<'a, R: Rows, S: FnOnce(&Head, &mut FaultList) -> Option<R>> Parser<'a, R, S
                 None => {
                     let message =
                         format!("{} has no more than the {} lines to skip", self.file, self.layout.skip);
-                    let fault = Fault::wrong("nothing-after-skip", message).at(self.layout.span.place());
+                    let fault = Fault::wrong("nothing-after-skip", message)
+                        .at(self.layout.span.place())
+                        .expected("the head of column names after them");
                     self.refuse(fault);
                     return None;
                 }

@@ -114,8 +114,6 @@ pub struct Member {
     pub observed: Observed,
     pub excluded: bool,
     pub day: Option<Day>,
-    pub file: Option<usize>,
-    pub line: u64,
 }
 
 /// Everything known of one series and period.
@@ -355,13 +353,7 @@ impl Gather {
             });
             return;
         }
-        let member = Member {
-            observed,
-            excluded: row.fate != Fate::Used,
-            day: row.day,
-            file: row.file,
-            line: row.line,
-        };
+        let member = Member { observed, excluded: row.fate != Fate::Used, day: row.day };
         let groups = &mut self.cells[number].groups;
         match groups.get_mut(replicate) {
             Some(group) => {

@@ -369,14 +369,15 @@ fn judge_exclusions(plan: &Plan, gather: &Gather, heads: &[Option<Vec<String>>],
             };
             let rows = |count: u64| if count == 1 { "1 row".to_string() } else { format!("{count} rows") };
             let message = format!("this exclusion matches {}{where_found}", rows(found.count));
+            let repair = match found.count {
+                0 => "compare the texts of `where` with the file's, letter by letter".to_string(),
+                count => format!("mend `where`, or say rows = {count} if all of them are meant"),
+            };
             faults.push(
                 Fault::wrong("exclusion-count", message)
                     .at(exclude.span.place())
                     .expected(rows(exclude.rows))
-                    .repair(format!(
-                        "mend `where`, or say rows = {} if all of them are meant",
-                        found.count.max(1)
-                    )),
+                    .repair(repair),
             );
         }
     }

@@ -118,7 +118,7 @@ impl Figures {
 }
 
 fn wrong(what: &str) -> Fault {
-    Fault::wrong("wrong-summary", what)
+    Fault::wrong("wrong-summary", what).expected("n, mean and sd; or a mean and its uncertainty")
 }
 
 /// Notes a summary, or why it cannot be one.
