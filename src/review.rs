@@ -5,7 +5,7 @@ use crate::data::evidence::Evidence;
 use crate::data::{self, Data, PeriodData, SeriesData};
 use crate::diagnostics::{Caution, Fault, Faults, Outcome};
 use crate::findings::{self, AcrossFindings, Answer, Findings, Influence, SeriesFindings, UnderAlternative};
-use crate::plan::{self, Plan, QuestionPlan};
+use crate::plan::{self, Plan, QuestionPlan, ReadBytes};
 use crate::posterior::{self, Basis, Posterior};
 use crate::prior::ground::Ground;
 use crate::prior::spread::spread_of_means;
@@ -50,8 +50,13 @@ pub fn run(spec: &Path, shown: &str, jobs: usize) -> Outcome<Findings> {
 
 /// Spec and plan, with every table read; computes nothing.
 pub fn prepare(spec: &Path, shown: &str) -> Outcome<Prepared> {
-    let read_file = |path: &Path| source::whole(path, &path.to_string_lossy(), "the spec");
-    let plan = plan::load(spec, shown, &read_file)?;
+    prepare_by(spec, shown, &|path| source::whole(path, &path.to_string_lossy(), "the spec"))
+}
+
+/// [`prepare`], where `read` gives the bytes of the spec and of its base: an audit takes them from the
+/// review's folder.
+pub fn prepare_by(spec: &Path, shown: &str, read: &ReadBytes<'_>) -> Outcome<Prepared> {
+    let plan = plan::load(spec, shown, read)?;
     let mut faults = Faults::default();
     let questions = questions::read_all(&plan, &mut faults);
     let scale = plan.quantity.scale;
