@@ -3,12 +3,13 @@
 use crate::data;
 use crate::diagnostics::{Fault, Outcome};
 use crate::findings::Findings;
-use crate::plan::{self, TemplateChoice};
+use crate::plan::{self, Plan, TemplateChoice};
 use crate::report::{self, Rendered, StampText};
 use crate::review::{self, Prepared};
 use crate::source::{self, sha256_hex};
 use crate::stamp::audit::Again;
 use crate::stamp::inputs::{self, Input};
+use crate::stamp::made::SPEC_TOML;
 use crate::stamp::stamp_json::{PROGRAM, VERSION};
 use crate::stamp::{Made, Stamp, Texts};
 use std::path::Path;
@@ -20,7 +21,18 @@ pub fn prepare(again: &Again, shown: &str) -> Outcome<Prepared> {
     };
     let mut prepared = review::prepare_by(&again.spec, shown, &read)?;
     again.places.redirect(&mut prepared.plan);
+    name_as_kept(&mut prepared.plan);
     Ok(prepared)
+}
+
+/// From here on the spec has the name of its copy in the review's folder, and the base the name that
+/// the spec gives it: the user's own path to them must not reach any file of the review.
+fn name_as_kept(plan: &mut Plan) {
+    let base_names: Vec<String> =
+        plan.spec_files.iter().map(|file| inputs::written_from(plan, &file.path)).collect();
+    for (place, (file, name)) in plan.spec_files.iter_mut().zip(base_names).enumerate() {
+        file.name = if place == 0 { SPEC_TOML.to_string() } else { name };
+    }
 }
 
 /// The findings, and the review's files.
@@ -51,7 +63,7 @@ fn filled(findings: &Findings) -> Vec<(String, Vec<(String, String)>)> {
 
 fn render(findings: &Findings, stamp: &Stamp, inputs: &[Input]) -> Outcome<Rendered> {
     let plan = &findings.plan;
-    let spec = plan.spec_files.first().map(|spec| ("spec.toml".to_string(), sha256_hex(&spec.bytes)));
+    let spec = plan.spec_files.first().map(|spec| (spec.name.clone(), sha256_hex(&spec.bytes)));
     let others = inputs.iter().map(|input| (input.written.clone(), input.sha256.clone()));
     let text = StampText {
         whole: stamp.whole().to_string(),

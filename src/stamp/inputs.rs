@@ -76,8 +76,8 @@ fn others(plan: &Plan) -> Vec<(&'static str, &FileRef)> {
     overrides.into_iter().chain(template).collect()
 }
 
-/// The base's path as the spec names it: its path without the spec's folder.
-fn written_from(plan: &Plan, path: &Path) -> String {
+/// A path as the spec names it: without the spec's folder.
+pub fn written_from(plan: &Plan, path: &Path) -> String {
     let folder = plan.spec_files.first().and_then(|spec| spec.path.parent());
     let inside = folder.and_then(|folder| path.strip_prefix(folder).ok()).unwrap_or(path);
     inside.to_string_lossy().into_owned()
