@@ -154,7 +154,7 @@ mod tests {
             .number("estimate", Ok(43.9123), Meaning::Value)
             .number("lower", Err(Absent::because("one-sided")), Meaning::Value)
             .number("upper", Ok(45.1), Meaning::Value);
-        assert_eq!(in_short(&bound, "1"), "43.91, at most 45.1");
+        assert_eq!(in_short(&bound, "1"), "43.91, at most 45.10");
         let none = Figures::default().number("chance", Err(Absent::because("no readings")), Meaning::Chance);
         assert_eq!(in_short(&none, "1"), "no readings");
         let counts = Figures::default().with("count", Item::Whole(Some(3)));
