@@ -7,6 +7,7 @@ mod between;
 mod build;
 mod change;
 mod closed;
+mod expect;
 mod grid;
 pub mod joint;
 pub mod law;
@@ -26,7 +27,6 @@ mod weighing;
 mod published;
 
 use crate::data::evidence::Evidence;
-use crate::math::fm;
 use crate::math::mixture::NormalMixture;
 use crate::prior::Model;
 use crate::quantity::{Absent, Figure};
@@ -167,49 +167,6 @@ impl Posterior {
         let own = uncertainty.unwrap_or(0.0);
         let m = mean_of as f64;
         self.affine(when, 1.0, &|sigma| (0.0, (sigma * sigma + own * own) / m))
-    }
-
-    /// E g(θ, σ), θ as measured: trapezoid in the standard score of every piece, halved until two agree.
-    pub fn expect(&self, when: When, g: &dyn Fn(f64, f64) -> f64) -> Figure {
-        self.models(when)?;
-        if let Some(reason) = &self.inner.no_sd {
-            return Err(reason.clone());
-        }
-        const REACH: f64 = 15.0;
-        let sum = |step: f64, offset: f64| {
-            let half = (REACH / step) as i64;
-            let mut total = 0.0;
-            for piece in &self.pieces {
-                let (mean, var) = piece.level(when);
-                if var == 0.0 {
-                    total += piece.weight * g(mean, piece.reading_sd) / step;
-                    continue;
-                }
-                let sd = var.sqrt();
-                let mut inner = 0.0;
-                for i in -half..=half {
-                    let z = (i as f64 + offset) * step;
-                    inner += fm::exp(-0.5 * z * z) * g(mean + sd * z, piece.reading_sd);
-                }
-                total += piece.weight * inner * fm::INV_SQRT_TWO_PI;
-            }
-            total * step
-        };
-        let mut step = 0.5;
-        let mut value = sum(step, 0.0);
-        for _ in 0..9 {
-            // The points between: their mean with the old ones is the halved rule.
-            let finer = 0.5 * (value + sum(step, 0.5));
-            if !finer.is_finite() {
-                return Err(Absent::failed("an expectation over the posterior is not a number"));
-            }
-            if (finer - value).abs() <= 1e-11 * finer.abs() || finer.abs() < 1e-290 {
-                return Ok(finer);
-            }
-            value = finer;
-            step *= 0.5;
-        }
-        Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
     }
 
     /// The within sd σ.

@@ -1,6 +1,7 @@
 //! Published and closed-form cases of the posterior, at the function that computes it.
 
 use super::*;
+use crate::math::fm;
 use crate::prior::{Between, LevelPrior, Pattern, Periods, Within};
 use crate::quantity::{Period, Scale};
 

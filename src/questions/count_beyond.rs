@@ -81,15 +81,13 @@ impl CountBeyond {
         let posterior = subject.posterior.clone()?;
         let own = terms::own_uncertainty(subject, None)?.unwrap_or(0.0);
         let table = LnFactorials::up_to(self.readings);
-        (0..=self.readings)
-            .map(|count| {
-                posterior.expect(When::This, &|theta, sigma| {
-                    let sd = (sigma * sigma + own * own).sqrt();
-                    let (out, within) = beyond::normal_split(beyond, theta, sd);
-                    table.exactly(self.readings, count, out, within)
-                })
-            })
-            .collect()
+        posterior.expect_each(When::This, self.readings as usize + 1, &|theta, sigma, chances| {
+            let sd = (sigma * sigma + own * own).sqrt();
+            let (out, within) = beyond::normal_split(beyond, theta, sd);
+            for (count, chance) in (0..).zip(chances.iter_mut()) {
+                *chance = table.exactly(self.readings, count, out, within);
+            }
+        })
     }
 }
 
