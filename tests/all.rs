@@ -1,6 +1,7 @@
 //! All integration tests, in one binary: one link, one run.
 
 mod faults;
+mod command_line;
 mod tidiness;
 mod reference;
 #[path = "published/checks.rs"]

@@ -84,11 +84,28 @@ impl Ground {
     fn origin(&self, written: &str) -> Option<(PathBuf, String)> {
         let folder = self.spec_place.as_ref()?.parent()?;
         let shown = match self.spec_shown.rfind('/') {
-            Some(at) if !written.starts_with('/') => format!("{}{written}", &self.spec_shown[..=at]),
+            Some(at) if !written.starts_with('/') => {
+                straight(&format!("{}{written}", &self.spec_shown[..=at]))
+            }
             _ => written.to_string(),
         };
         Some((folder.join(written), shown))
     }
+}
+
+/// A path for the eye, without `folder/..`.
+fn straight(path: &str) -> String {
+    let mut parts: Vec<&str> = Vec::new();
+    for part in path.split('/') {
+        match (part, parts.last()) {
+            (".", Some(_)) => {}
+            ("..", Some(last)) if !matches!(*last, ".." | "." | "") => {
+                parts.pop();
+            }
+            _ => parts.push(part),
+        }
+    }
+    parts.join("/")
 }
 
 /// One look at a file that should have a hash.
