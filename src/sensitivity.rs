@@ -107,12 +107,13 @@ fn within_alternatives(base: &Base<'_>) -> Vec<Alternative> {
         Within::Known(sd) => vec![
             with("within sd x 0.8", Within::Known(0.8 * sd)),
             with("within sd x 1.25", Within::Known(1.25 * sd)),
-            with("within sd from readings", Within::Readings),
+            // The earlier periods keep the known sd: only this period's readings speak for themselves.
+            with("within sd from readings", Within::ReadingsBeside { history_sd: sd }),
         ],
         Within::Worth { .. } | Within::Pooled { .. } => {
             vec![with("within sd from readings", Within::Readings)]
         }
-        Within::Readings | Within::None => Vec::new(),
+        Within::Readings | Within::ReadingsBeside { .. } | Within::None => Vec::new(),
     }
 }
 

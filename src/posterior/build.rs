@@ -169,6 +169,16 @@ impl Builder<'_> {
                 }
                 self.improper(sums, has_own, &this, &history)?
             }
+            (Within::ReadingsBeside { history_sd: known }, _) => {
+                if periods.is_some() {
+                    history_sd = Some(Sd::Fixed(self.units.sd_in(*known)));
+                }
+                if this == Told::Nothing {
+                    Sd::Undefined
+                } else {
+                    self.improper(this_sums, this.has_own(), &this, &[])?
+                }
+            }
             (Within::Readings, _) => {
                 if periods.is_some()
                     && history.iter().any(|p| matches!(p, Told::Counted { .. } | Told::Own(_)))
@@ -433,7 +443,7 @@ pub(super) fn units(model: &Model, readings: &Evidence) -> Units {
     let mut places = Vec::new();
     let mut sizes = Vec::new();
     match model.within {
-        Within::Known(sd) | Within::Worth { sd, .. } => sizes.push(sd),
+        Within::Known(sd) | Within::Worth { sd, .. } | Within::ReadingsBeside { history_sd: sd } => sizes.push(sd),
         _ => {}
     }
     place_and_size(readings, &mut places, &mut sizes);

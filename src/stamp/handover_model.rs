@@ -66,6 +66,9 @@ fn within_json(within: &Within) -> Json {
             .put("others", Json::List(others.iter().map(evidence_json).collect()))
             .done(),
         Within::Readings => Object::new().text("kind", "readings").done(),
+        Within::ReadingsBeside { history_sd } => {
+            Object::new().text("kind", "readings beside").number("history_sd", *history_sd).done()
+        }
         Within::None => Object::new().text("kind", "none").done(),
     }
 }
@@ -73,6 +76,7 @@ fn within_json(within: &Within) -> Json {
 fn read_within(at: &At<'_>) -> Result<Within, String> {
     match at.text("kind")? {
         "known" => Ok(Within::Known(at.number("sd")?)),
+        "readings beside" => Ok(Within::ReadingsBeside { history_sd: at.number("history_sd")? }),
         "worth" => Ok(Within::Worth { sd: at.number("sd")?, df: at.number("df")? }),
         "pooled" => Ok(Within::Pooled { others: at.each("others", read_evidence)? }),
         "readings" => Ok(Within::Readings),

@@ -41,6 +41,10 @@ fn within(within: &Within) -> Vec<String> {
             vec!["p(σ²) ∝ 1/σ², one σ for the readings of all periods used".to_string()]
         }
         Within::Readings => vec!["p(σ²) ∝ 1/σ², from the readings of this period alone".to_string()],
+        Within::ReadingsBeside { history_sd } => vec![
+            "p(σ²) ∝ 1/σ², from the readings of this period alone".to_string(),
+            format!("σ of the earlier periods = {}, known", text::record(*history_sd)),
+        ],
         Within::None => vec!["u_i: each reading’s own standard uncertainty".to_string()],
     }
 }
