@@ -460,7 +460,8 @@ fn checks_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Vec<Check
     })
 }
 
-/// A figure that could not be computed to the promised accuracy is an error, never a doubtful digit.
+/// A figure of the review's own answers that could not be computed to the promised accuracy is an error, never
+/// a doubtful digit; under an alternative it is left out with its reason.
 fn keep_exact(series: Vec<SeriesFindings>) -> (Vec<SeriesFindings>, Faults) {
     let mut faults = Faults::default();
     let mut note = |series: &str, what: &str, reason: &str| {
@@ -490,17 +491,6 @@ fn keep_exact(series: Vec<SeriesFindings>) -> (Vec<SeriesFindings>, Faults) {
             {
                 for reason in failures(figures) {
                     note(&found.name, &format!("the answer \"{}\"", answer.id), reason);
-                }
-            }
-        }
-        for under in &found.sensitivity {
-            for (id, figures, _) in &under.answers {
-                for reason in failures(figures) {
-                    note(
-                        &found.name,
-                        &format!("the answer \"{id}\" under \"{}\"", under.alternative),
-                        reason,
-                    );
                 }
             }
         }

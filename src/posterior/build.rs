@@ -443,7 +443,9 @@ pub(super) fn units(model: &Model, readings: &Evidence) -> Units {
     let mut places = Vec::new();
     let mut sizes = Vec::new();
     match model.within {
-        Within::Known(sd) | Within::Worth { sd, .. } | Within::ReadingsBeside { history_sd: sd } => sizes.push(sd),
+        Within::Known(sd) | Within::Worth { sd, .. } | Within::ReadingsBeside { history_sd: sd } => {
+            sizes.push(sd)
+        }
         _ => {}
     }
     place_and_size(readings, &mut places, &mut sizes);

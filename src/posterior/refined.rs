@@ -9,10 +9,18 @@ use super::weighing::FLOOR;
 use super::{Piece, Posterior, solve};
 use crate::math::fm;
 use crate::quantity::{Absent, Figure};
+use std::sync::{Arc, PoisonError};
 
 /// Two grids must agree to this, relative.
 const AGREED: f64 = 2e-11;
-const ROUNDS: u32 = 10;
+const ROUNDS: usize = 10;
+
+/// Pieces of a finer grid and, with a bias, their true levels.
+#[derive(Debug, Default)]
+pub(super) struct Finer {
+    pub pieces: Vec<Piece>,
+    pub levels: Vec<TrueLevel>,
+}
 
 /// Makes a law from pieces and their true levels.
 type LawOf<'a> = dyn Fn(&[Piece], &[TrueLevel]) -> Result<Law, Absent> + 'a;
@@ -26,31 +34,59 @@ impl Posterior {
     /// A law whose centre moves with σ, on finer and finer grids until two agree to 2e−11 in the
     /// middle and in both tails; `law` makes it from pieces and, with a bias, their true levels.
     pub(super) fn settled(&self, first: Law, law: &LawOf<'_>) -> Result<Law, Absent> {
+        self.settled_on(first, law).map(|(law, _)| law)
+    }
+
+    /// The same with the grid on which the law settled.
+    fn settled_on(&self, first: Law, law: &LawOf<'_>) -> Result<(Law, Arc<Finer>), Absent> {
         let (low, high) = first.central(1.0 - 2e-6)?;
         let (near_low, near_high) = first.central(0.9)?;
         let middle = first.median()?;
         let measure =
             |law: &Law| [law.cdf(low), law.cdf(near_low), law.cdf(middle), law.sf(near_high), law.sf(high)];
         let mut before = measure(&first);
-        let mut factor = 1.0;
-        for _ in 0..ROUNDS {
-            factor *= std::f64::consts::FRAC_1_SQRT_2;
-            let (pieces, levels) = self.finer(factor, 0.29)?;
-            let finer = law(&pieces, &levels)?;
+        for round in 0..ROUNDS {
+            let grid = self.finer(round)?;
+            let finer = law(&grid.pieces, &grid.levels)?;
             let now = measure(&finer);
             let worst = before.iter().zip(now).map(|(a, b)| ((a - b) / b).abs()).fold(0.0, f64::max);
             if worst <= AGREED {
-                return Ok(finer);
+                return Ok((finer, grid));
             }
             before = now;
         }
         Err(Absent::failed("a law that moves with the within sd did not reach its promised accuracy"))
     }
 
-    /// The pieces (and with a bias their true levels) again, on grids whose steps are shorter by `factor`
-    /// and begin elsewhere.
-    fn finer(&self, factor: f64, offset: f64) -> Result<(Vec<Piece>, Vec<TrueLevel>), Absent> {
-        let (mut pieces, mut levels) = (Vec::new(), Vec::new());
+    /// What `g` makes of pieces fine enough for sums over θ + z σ with z near `z`: the pieces as held where
+    /// σ is known, else those of a grid on which the law of θ + z σ has settled.
+    pub fn on_pieces_for<R>(&self, z: f64, g: impl FnOnce(&[Piece]) -> R) -> Result<R, Absent> {
+        if !self.has_unknown_sd() {
+            return Ok(g(&self.pieces));
+        }
+        let law = |pieces: &[Piece], _: &[TrueLevel]| {
+            let parts =
+                pieces.iter().map(|p| (p.weight, p.level_mean + z * p.reading_sd, p.level_var)).collect();
+            super::mixture(parts, self.inner.bounds.level.min(self.inner.bounds.sd), "a percentile")
+        };
+        let first = law(&self.pieces, &self.inner.true_levels)?;
+        self.settled_on(first, &law).map(|(_, grid)| g(&grid.pieces))
+    }
+
+    /// The pieces (and with a bias their true levels) again, on a grid whose steps are shorter by √2 for each
+    /// round and begin elsewhere. Made once and kept: many laws settle on the same grids.
+    fn finer(&self, round: usize) -> Result<Arc<Finer>, Absent> {
+        let mut kept = self.inner.finer.lock().unwrap_or_else(PoisonError::into_inner);
+        while kept.len() <= round {
+            let factor = (0..=kept.len()).fold(1.0, |factor, _| factor * std::f64::consts::FRAC_1_SQRT_2);
+            let made = Arc::new(self.made_finer(factor, 0.29)?);
+            kept.push(made);
+        }
+        Ok(Arc::clone(&kept[round]))
+    }
+
+    fn made_finer(&self, factor: f64, offset: f64) -> Result<Finer, Absent> {
+        let mut made = Finer::default();
         let units = &self.inner.units;
         let bias_sd = units.sd_in(self.inner.bias_sd);
         for (part, weighed, share) in &self.inner.parts {
@@ -59,13 +95,13 @@ impl Posterior {
             let (sum, top) = whole(&nodes);
             for node in &nodes {
                 let weight = share * fm::exp(node.ln_weight - top) / sum;
-                pieces.push(solve::piece(node, weight, units));
+                made.pieces.push(solve::piece(node, weight, units));
                 if bias_sd > 0.0 {
-                    levels.push(solve::true_level(node, part, bias_sd, units));
+                    made.levels.push(solve::true_level(node, part, bias_sd, units));
                 }
             }
         }
-        Ok((pieces, levels))
+        Ok(made)
     }
 
     /// E g(piece) over the plane, for a g that is smooth in σ but for a kink (of the kind of a square

@@ -146,7 +146,9 @@ pub enum Within {
     /// p(σ²) ∝ 1/σ², from this period's readings alone; a history prior has a σ of its own.
     Readings,
     /// The same, where the σ of the earlier periods (or peers) is known: for the sensitivity section.
-    ReadingsBeside { history_sd: f64 },
+    ReadingsBeside {
+        history_sd: f64,
+    },
     /// σ = 0: every reading brings its own uncertainty.
     None,
 }

@@ -115,6 +115,48 @@ fn split(posterior: &Posterior, beyond: Beyond, share: Share) -> Result<(f64, f6
     }
 }
 
+/// Shares below 1e−299, or as near to 1, are not told apart.
+const REACH: f64 = 37.0;
+
+/// The limit, and +1 for a share above it, −1 for one below.
+fn one_sided(beyond: Beyond) -> Option<(f64, f64)> {
+    match beyond {
+        Beyond::Above(limit) => Some((limit, 1.0)),
+        Beyond::Below(limit) => Some((limit, -1.0)),
+        Beyond::Between(..) | Beyond::Outside(..) => None,
+    }
+}
+
+/// The bound from pieces alone: first on those at hand, then on pieces fine enough for that share.
+fn one_sided_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upper: bool) -> Figure {
+    let root_on = |pieces: &[Piece]| -> Figure {
+        let excess = |z: f64| {
+            let chance = |more: bool| -> f64 {
+                pieces
+                    .iter()
+                    .map(|piece| {
+                        let d = sign * (piece.level_mean - limit) + z * piece.reading_sd;
+                        let t = d / piece.level_var.sqrt();
+                        piece.weight * if more { normal::cdf(t) } else { normal::sf(t) }
+                    })
+                    .sum()
+            };
+            if upper { chance(true) - tail } else { tail - chance(false) }
+        };
+        if excess(REACH) < 0.0 {
+            return Ok(REACH);
+        }
+        if excess(-REACH) > 0.0 {
+            return Ok(-REACH);
+        }
+        roots::solve(&excess, -REACH, REACH, roots::Tolerance::tight(1.0))
+            .map_err(|error| Absent::failed(error.to_string()))
+    };
+    let coarse = root_on(&posterior.pieces)?;
+    let z = posterior.on_pieces_for(sign * coarse, root_on)??;
+    Ok(Share { z }.value())
+}
+
 /// The chances that the level lies further from the middle of two limits than where the share outside
 /// them is `outside`, and nearer.
 fn apart(
@@ -191,6 +233,9 @@ impl ShareBeyond {
     /// The share with P(share > p) = `above`, or with P(share ≤ p) = `below`: the smaller is given.
     fn bound(&self, subject: &Subject<'_>, tail: f64, upper: bool) -> Figure {
         let (posterior, beyond) = self.known(subject)?;
+        if let Some(ends) = one_sided(beyond) {
+            return one_sided_bound(posterior, ends, tail, upper);
+        }
         let failed = RefCell::new(None);
         // Against z, which falls as the share rises: P(share > p) rises with z, P(share ≤ p) falls.
         let excess = |z: f64| match split(posterior, beyond, Share { z }) {
@@ -206,8 +251,6 @@ impl ShareBeyond {
                 f64::NAN
             }
         };
-        const REACH: f64 = 37.0;
-        // Shares below 1e−299, or as near to 1, are not told apart.
         let root = if excess(REACH) < 0.0 {
             Ok(REACH)
         } else if excess(-REACH) > 0.0 {
