@@ -9,11 +9,12 @@ use super::weighing::FLOOR;
 use super::{Piece, Posterior, solve};
 use crate::math::fm;
 use crate::quantity::{Absent, Figure};
+use std::f64::consts::FRAC_1_SQRT_2;
 use std::sync::{Arc, PoisonError};
 
 /// Two grids must agree to this, relative.
 const AGREED: f64 = 2e-11;
-const ROUNDS: usize = 10;
+const ROUNDS: usize = 14;
 
 /// Pieces of a finer grid and, with a bias, their true levels.
 #[derive(Debug, Default)]
@@ -73,25 +74,30 @@ impl Posterior {
         self.settled_on(first, &law).map(|(_, grid)| g(&grid.pieces))
     }
 
-    /// The pieces (and with a bias their true levels) again, on a grid whose steps are shorter by √2 for each
-    /// round and begin elsewhere. Made once and kept: many laws settle on the same grids.
+    /// The pieces (and with a bias their true levels) again, on a grid that begins elsewhere: its steps are
+    /// shorter by √2, and along σ, where such laws turn over fast, by √2 more for each further round. Made
+    /// once and kept: many laws settle on the same grids.
     fn finer(&self, round: usize) -> Result<Arc<Finer>, Absent> {
         let mut kept = self.inner.finer.lock().unwrap_or_else(PoisonError::into_inner);
         while kept.len() <= round {
-            let factor = (0..=kept.len()).fold(1.0, |factor, _| factor * std::f64::consts::FRAC_1_SQRT_2);
-            let made = Arc::new(self.made_finer(factor, 0.29)?);
+            let along_sd = (0..kept.len()).fold(1.0, |factor, _| factor * FRAC_1_SQRT_2);
+            let made = Arc::new(self.made_finer(along_sd)?);
             kept.push(made);
         }
         Ok(Arc::clone(&kept[round]))
     }
 
-    fn made_finer(&self, factor: f64, offset: f64) -> Result<Finer, Absent> {
+    fn made_finer(&self, along_sd: f64) -> Result<Finer, Absent> {
         let mut made = Finer::default();
         let units = &self.inner.units;
         let bias_sd = units.sd_in(self.inner.bias_sd);
         for (part, weighed, share) in &self.inner.parts {
             let f = |place: &Place| part.plane.node(place);
-            let nodes = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, FLOOR)?;
+            let mut frame = weighed.frame.clone();
+            if let Some(d) = part.plane.coordinates().iter().position(|c| *c == Coordinate::Sd) {
+                frame.width[d] *= along_sd;
+            }
+            let nodes = grid::sweep(&f, &frame, weighed.factor * FRAC_1_SQRT_2, 0.29, FLOOR)?;
             let (sum, top) = whole(&nodes);
             for node in &nodes {
                 let weight = share * fm::exp(node.ln_weight - top) / sum;
@@ -127,7 +133,7 @@ impl Posterior {
                 return Ok(value);
             }
             before = Some(value);
-            factor *= std::f64::consts::FRAC_1_SQRT_2;
+            factor *= FRAC_1_SQRT_2;
         }
         Err(Absent::failed("an expectation over the spreads did not reach its promised accuracy"))
     }
