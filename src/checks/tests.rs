@@ -33,8 +33,18 @@ fn every_kind_has_a_page_a_worked_number_a_source_and_its_own_name() {
 
 #[test]
 fn every_file_of_a_check_is_in_the_registry() {
-    let helpers =
-        ["mod", "tests", "page", "words", "timed", "tails", "printed", "shapiro_wilk", "anderson_darling"];
+    let helpers = [
+        "mod",
+        "suite",
+        "tests",
+        "page",
+        "words",
+        "timed",
+        "tails",
+        "printed",
+        "shapiro_wilk",
+        "anderson_darling",
+    ];
     let folder = concat!(env!("CARGO_MANIFEST_DIR"), "/src/checks");
     let mut files: Vec<String> = std::fs::read_dir(folder)
         .expect("the folder of the checks")
