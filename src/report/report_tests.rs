@@ -356,3 +356,21 @@ fn every_caution_has_a_meaning() {
     }
     assert!(missing.is_empty(), "{missing:?}");
 }
+
+/// For looking at: the demos' reports. `LOOK_AT` names the folder that receives them.
+#[test]
+#[ignore = "writes files to look at"]
+fn write_the_demos() {
+    let out = std::path::PathBuf::from(std::env::var("LOOK_AT").unwrap());
+    let specs = std::env::var("SPECS").unwrap_or_else(|_| "nitrate,concrete,weights".to_string());
+    for name in specs.split(',') {
+        let spec = std::path::Path::new(env!("CARGO_MANIFEST_DIR")).join(format!("specs/{name}.toml"));
+        let mut findings = crate::review::run(&spec, &format!("{name}.toml"), 2).unwrap();
+        let cautions = crate::findings::cautions::of(&findings);
+        findings.cautions.extend(cautions);
+        let Rendered { markdown, html, .. } = render(&findings, &stamp(), None).unwrap();
+        tables_are_whole(&markdown);
+        std::fs::write(out.join(format!("{name}.md")), markdown).unwrap();
+        std::fs::write(out.join(format!("{name}.html")), html).unwrap();
+    }
+}
