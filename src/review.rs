@@ -13,7 +13,7 @@ use crate::prior::within::{self, WithinRead};
 use crate::prior::{self, Built, LevelPrior, Model, Refusal, Source};
 use crate::quantity::{Absent, natural_order};
 use crate::questions::figures::{Figures, Item};
-use crate::questions::{self, Question, Subject, rule};
+use crate::questions::{self, Question, Subject, acceptance, rule};
 use crate::sensitivity::{self, Base, OwnAlternative};
 use crate::source;
 use std::collections::{BTreeMap, BTreeSet};
@@ -159,9 +159,16 @@ pub fn review(prepared: Prepared, data: Data, jobs: usize) -> Outcome<Findings> 
             quadrature_error = quadrature_error.max(posterior.quadrature_error);
         }
     }
+    for (index, question) in &prepared.questions {
+        let asked = &prepared.plan.questions[*index];
+        let of_question = |caution: Caution| caution.of_question(&asked.id);
+        cautions.extend(question.cautions(&prepared.plan).into_iter().map(of_question));
+    }
     let (series, faults) = keep_exact(series);
-    let findings =
+    let mut findings =
         Findings { plan: prepared.plan, data, series, not_reviewed, across, cautions, quadrature_error };
+    let following = crate::findings::cautions::of(&findings);
+    findings.cautions.extend(following);
     faults.or(findings)
 }
 
@@ -346,7 +353,12 @@ fn findings_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Outcome
             prior_only: question.answer(&prior_only),
             readings_only: question.answer(&readings_only),
             verdict,
-            rule_figures: Figures::default(),
+            rule_figures: match &asked.rule {
+                Some(rule) if !worked.readings.is_nothing() => {
+                    acceptance::rule_figures(*question, rule, &both)
+                }
+                _ => Figures::default(),
+            },
             working: question.working(&both),
             figures,
         });

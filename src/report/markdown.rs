@@ -92,6 +92,9 @@ fn tidied(markdown: &str) -> String {
             empty = true;
             continue;
         }
+        if !empty && fence.is_none() && trimmed.starts_with('#') {
+            out.push('\n');
+        }
         out.push_str(if fence.is_some() { line } else { trimmed });
         out.push('\n');
         empty = false;

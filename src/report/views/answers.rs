@@ -4,7 +4,7 @@ use super::numbers::{NOTHING, Numbers, VerdictView, reasons, rule_words, verdict
 use super::table::{Column, TableView, plain};
 use crate::findings::{AcrossFindings, Answer, SeriesFindings};
 use crate::plan::{Plan, QuestionPlan, Rule};
-use crate::questions::figures::{Figures, Item};
+use crate::questions::figures::{Figures, Item, Meaning};
 use crate::report::text;
 use crate::working::Step;
 use minijinja::Value;
@@ -28,6 +28,8 @@ pub struct AnswerView {
     pub verdict: Option<VerdictView>,
     /// Acceptance limits, guard band, risks.
     pub rule_figures: Vec<String>,
+    /// The chance of each verdict against the true level.
+    pub rule_figure: Option<super::drawings::FigureView>,
     pub not_decided: bool,
     pub working: Option<TableView>,
 }
@@ -44,7 +46,7 @@ pub fn rule_of<'p>(plan: &'p Plan, id: &str) -> Option<&'p Rule> {
 pub fn question_words(say: Option<&str>, words: &str) -> String {
     match say {
         Some(say) => say.to_string(),
-        None => capital(words),
+        None => capital(&with_minus(words)),
     }
 }
 
@@ -67,8 +69,8 @@ pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> 
     AnswerView {
         id: answer.id.clone(),
         question: question_words(answer.say.as_deref(), &answer.words),
-        words: capital(&answer.words),
-        symbols: answer.symbols.clone(),
+        words: capital(&with_minus(&answer.words)),
+        symbols: with_minus(&answer.symbols),
         both: numbers.long_line(&answer.figures, rule),
         prior_only: held_back(&answer.prior_only),
         readings_only: held_back(&answer.readings_only),
@@ -78,6 +80,7 @@ pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> 
         not_decided: given.as_ref().is_some_and(open),
         verdict: given,
         rule_figures: rule_figures(&answer.rule_figures, numbers),
+        rule_figure: None,
         working: working(&answer.working),
     }
 }
@@ -102,27 +105,70 @@ pub fn agreed(rule: &Rule) -> String {
     }
 }
 
+/// What each figure of a rule is called; those without a name here are drawn or repeat another.
+const RULE_FIGURES: &[(&str, &str)] = &[
+    ("acceptance_limit", "Acceptance limit for the mean of the readings"),
+    ("accepted", "Accepted"),
+    ("guard_band", "Guard band, the distance of the acceptance limit from the limit"),
+    ("guard_band_share_of_u", "The guard band in units of U, twice the standard deviation of the level"),
+    (
+        "specific_risk",
+        "Risk of this acceptance: probability, given prior and readings, that what would be accepted does not conform",
+    ),
+    (
+        "global_risk_accepted",
+        "Risk of the rule: probability, before any reading, that the level does not conform and is accepted",
+    ),
+    (
+        "global_risk_rejected",
+        "Risk of the rule: probability, before any reading, that the level conforms and is not accepted",
+    ),
+    ("tipping_prior_mean", "The verdict would change with a prior whose mean is"),
+    ("tipping_prior_readings", "The verdict would change with a prior worth this many readings"),
+];
+
+/// Why these do not exist is worth a line; of the others, only what exists is printed.
+const SAID_WHERE_MISSING: [&str; 3] = ["acceptance_limit", "tipping_prior_mean", "tipping_prior_readings"];
+
 fn rule_figures(figures: &Figures, numbers: &Numbers<'_>) -> Vec<String> {
     let mut lines = Vec::new();
     for (name, item) in &figures.0 {
-        let name = capital(&name.replace('_', " "));
-        match item {
-            Item::Number(Ok(number), meaning) => {
-                lines.push(format!("{name}: {}", numbers.number(*number, *meaning, None)));
+        let words = RULE_FIGURES.iter().find(|(known, _)| known == name).map(|(_, words)| *words);
+        match (words, item) {
+            (Some(words), Item::Number(Ok(number), Meaning::Share)) => {
+                lines.push(format!("{words}: {}", text::significant(*number, 2)));
             }
-            Item::Number(Err(absent), _) => lines.push(format!("{name}: none ({})", absent.reason)),
-            Item::Whole(Some(count)) => lines.push(format!("{name}: {}", text::count(*count))),
-            Item::Numbers(all, meaning) if !all.is_empty() => {
+            (Some(words), Item::Number(Ok(number), meaning)) => {
+                lines.push(format!("{words}: {}", numbers.number(*number, *meaning, None)));
+            }
+            (Some(words), Item::Number(Err(absent), _)) if SAID_WHERE_MISSING.contains(name) => {
+                lines.push(format!("{words}: none ({})", with_minus(&absent.reason)));
+            }
+            (Some(words), Item::Text(said)) => lines.push(format!("{words}: {}", with_minus(said))),
+            (None, Item::Numbers(all, meaning)) if *name == "acceptance_limits" && all.len() > 1 => {
                 let all: Vec<String> =
                     all.iter().map(|number| numbers.number(*number, *meaning, None)).collect();
-                lines.push(format!("{name}: {}", all.join(", ")));
+                lines.push(format!("Acceptance limits: {}", all.join(", ")));
             }
-            Item::Text(said) => lines.push(format!("{name}: {said}")),
-            Item::Texts(all) if !all.is_empty() => lines.push(format!("{name}: {}", all.join("; "))),
             _ => {}
         }
     }
     lines
+}
+
+/// Numbers that words bring along have the hyphen of the keyboard; a report has the minus sign.
+pub fn with_minus(words: &str) -> String {
+    let mut out = String::with_capacity(words.len());
+    let mut before = ' ';
+    let mut letters = words.chars().peekable();
+    while let Some(letter) = letters.next() {
+        let is_minus = letter == '-'
+            && matches!(before, ' ' | '(' | '\u{a0}' | '<' | '>')
+            && letters.peek().is_some_and(char::is_ascii_digit);
+        out.push(if is_minus { text::MINUS } else { letter });
+        before = letter;
+    }
+    out
 }
 
 /// The steps of a derivation; values with six digits, enough to follow with a pocket calculator.

@@ -3,14 +3,17 @@
 use super::numbers::{Around, Numbers};
 use crate::data::evidence::Evidence;
 use crate::data::{Data, Fate, Mark as Marked, PeriodData, SeriesData};
-use crate::findings::SeriesFindings;
+use crate::findings::{Answer, SeriesFindings};
 use crate::math::{fm, normal};
 use crate::plan::{Bounds, Event, Plan};
 use crate::posterior::{Law, Posterior, When};
 use crate::quantity::{Absent, Period, Scale};
+use crate::questions::figures::{Figures, Item};
+use crate::questions::rule::Given;
 use crate::report::escape;
 use crate::report::figure_frame::{FigureError, Mark};
 use crate::report::figure_level::{self, Curve, Interval, LevelFigure};
+use crate::report::figure_lines::{self, Line, LinesFigure, Upright};
 use crate::report::figure_periods::{self, Estimate, PeriodsFigure, Single};
 use crate::report::figure_quantiles::{self, QuantilePoint, QuantilesFigure};
 use crate::report::figure_rows::{self, Row, RowsFigure};
@@ -445,13 +448,10 @@ pub fn sensitivity(
     slug: &str,
 ) -> Option<FigureView> {
     let plan = numbers.plan;
-    let shown = |answer: &&crate::findings::Answer| answer.figures.value("estimate").is_some();
+    let shown = |answer: &&Answer| answer.figures.value("estimate").is_some();
     let answer = series.answers.iter().find(shown)?;
     let rule = super::answers::rule_of(plan, &answer.id);
-    let row = |name: &str,
-               figures: &crate::questions::figures::Figures,
-               given: Option<&crate::questions::rule::Given>,
-               main: bool| {
+    let row = |name: &str, figures: &Figures, given: Option<&Given>, main: bool| {
         let around = Around::of(figures);
         Row {
             name: name.to_string(),
@@ -489,6 +489,48 @@ pub fn sensitivity(
     };
     let caption = format!("{title}: estimate and interval as reviewed (bold) and under each alternative.");
     drawings.add(&name, &title, &caption, figure_rows::rows(&figure))
+}
+
+/// The chance of each verdict of a rule against the true level.
+pub fn rule(
+    drawings: &mut Drawings,
+    series: &SeriesFindings,
+    answer: &Answer,
+    plan: &Plan,
+    name: &str,
+) -> Option<FigureView> {
+    let Some(Item::Texts(says)) = answer.rule_figures.get("verdicts") else { return None };
+    let Some(Item::Rows(rows)) = answer.rule_figures.get("operating_characteristic") else { return None };
+    let mut lines: Vec<Line> =
+        says.iter().map(|say| Line { label: say.clone(), points: Vec::with_capacity(rows.len()) }).collect();
+    for row in rows {
+        let (Some(level), Some(Item::Numbers(chances, _))) = (row.value("level"), row.get("chances")) else {
+            continue;
+        };
+        for (line, chance) in lines.iter_mut().zip(chances) {
+            line.points.push((level, *chance));
+        }
+    }
+    let (low, high) = (rows.first()?.value("level")?, rows.last()?.value("level")?);
+    let title = format!("The rule of “{}”, {}", answer.id, series.name);
+    let within = |mark: &Mark| mark.value >= low && mark.value <= high;
+    let figure = LinesFigure {
+        about: About {
+            name: name.to_string(),
+            title: title.clone(),
+            description: "Probability of each verdict against the true level.".to_string(),
+        },
+        x_title: format!("true level of {}", value_title(plan)),
+        y_title: "probability of the verdict".to_string(),
+        upright: Upright::Chance,
+        lines,
+        x_marks: limits(plan, &series.name).into_iter().filter(within).collect(),
+        y_marks: Vec::new(),
+    };
+    let caption = format!(
+        "{title}: how probable each verdict is, for each true level, with as many readings as were made and this prior."
+    );
+    drawings.add(name, &title, &caption, figure_lines::lines(&figure))
 }
 
 /// Limits that do not lie so far off that the rows would shrink to dots.

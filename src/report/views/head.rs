@@ -1,6 +1,6 @@
 //! The first page: what was asked, what was found, how far the prior drives it, and the cautions.
 
-use super::answers::{agreed, question_words, rule_of};
+use super::answers::{agreed, question_words, rule_of, with_minus};
 use super::numbers::{self, NOTHING, Numbers, bounds_words, rule_words, verdict_cell};
 use super::sensitivity::{changes, main_figure};
 use super::series::{flagged, influence, numbers_of};
@@ -163,7 +163,7 @@ fn questions_over_series(findings: &Findings) -> Option<TableView> {
         };
         table.row(vec![
             plain(question_words(question.say.as_deref(), words)),
-            code(&question.id),
+            plain(&question.id),
             plain(short),
             plain(
                 question
@@ -539,9 +539,9 @@ pub fn questions(findings: &Findings) -> Option<TableView> {
             ));
         }
         table.row(vec![
-            code(&question.id),
+            plain(&question.id),
             plain(question.say.as_deref().unwrap_or(NOTHING)),
-            plain(words.unwrap_or(&question.ask)),
+            plain(with_minus(words.unwrap_or(&question.ask))),
             plain(rule_text),
             plain(rule.map_or_else(|| NOTHING.to_string(), agreed)),
             plain(question.only.as_ref().map_or_else(|| "all series".to_string(), |only| only.join(", "))),

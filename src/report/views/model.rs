@@ -206,6 +206,7 @@ pub fn results(series: &SeriesFindings, numbers: &Numbers<'_>) -> (TableView, Ve
     let mut missing: Vec<String> = Vec::new();
     for (name, of, of_spread) in rows {
         let mut cells = vec![plain(&name)];
+        let mut why: Vec<(String, Vec<&str>)> = Vec::new();
         for (basis, posterior) in [
             ("prior only", &series.prior),
             ("readings only", &series.readings_only),
@@ -216,11 +217,23 @@ pub fn results(series: &SeriesFindings, numbers: &Numbers<'_>) -> (TableView, Ve
                 Ok(said) => cells.push(plain(said)),
                 Err(absent) => {
                     cells.push(plain(NOTHING));
-                    missing.push(format!("{name}, {basis}: {}", absent.reason));
+                    match why.iter_mut().find(|(reason, _)| *reason == absent.reason) {
+                        Some((_, bases)) => bases.push(basis),
+                        None => why.push((absent.reason, vec![basis])),
+                    }
                 }
             }
         }
-        table.row(cells);
+        let none_at_all = why.iter().map(|(_, bases)| bases.len()).sum::<usize>() == 3;
+        for (reason, bases) in why {
+            missing.push(match bases.len() {
+                3 => format!("{name}: {reason}"),
+                _ => format!("{name}, {}: {reason}", bases.join(" and ")),
+            });
+        }
+        if !none_at_all {
+            table.row(cells);
+        }
     }
     (table, missing)
 }

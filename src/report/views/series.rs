@@ -31,7 +31,7 @@ pub struct SeriesView {
     pub readings_rest: Option<String>,
     pub prior_from: String,
     pub prior_notes: Vec<String>,
-    pub spread: Option<SpreadView>,
+    pub spread: Option<String>,
     pub influence: Option<String>,
     pub equations: Value,
     pub parameters: TableView,
@@ -43,20 +43,14 @@ pub struct SeriesView {
     pub known_sd: Option<String>,
     pub checks: Option<TableView>,
     pub checks_words: String,
+    /// Checks that could not be made, with the reason.
+    pub checks_not_made: Vec<String>,
     pub quantiles_figure: Option<FigureView>,
     pub sensitivity: Option<SensitivityView>,
     pub sensitivity_figure: Option<FigureView>,
     pub predictions: Option<TableView>,
     pub cautions: Option<TableView>,
     pub remarks: Vec<&'static str>,
-}
-
-/// The between sd of the earlier periods by the plain formula and corrected.
-#[derive(Debug, Serialize)]
-pub struct SpreadView {
-    pub periods: usize,
-    pub naive: String,
-    pub corrected: String,
 }
 
 /// The numbers of one series: the sd of its level decides the usual place.
@@ -106,8 +100,12 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
         None => (None, None),
     };
     let model = series.posterior.as_ref().or(series.prior.as_ref()).ok().map(|posterior| &posterior.model);
-    let answers: Vec<AnswerView> =
+    let mut answers: Vec<AnswerView> =
         series.answers.iter().map(|answer| answers::view(answer, series, &numbers)).collect();
+    for (number, (view, answer)) in answers.iter_mut().zip(&series.answers).enumerate() {
+        let name = format!("{slug}-rule-{}", number + 1);
+        view.rule_figure = drawings::rule(drawings, series, answer, plan, &name);
+    }
     let (results, results_missing) = model::results(series, &numbers);
     let equations = model.map(model::equations).unwrap_or_default();
     let view = SeriesView {
@@ -137,6 +135,11 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
         known_sd: model.and_then(|model| data::known_sd_caution(facts?, model::known_sd(model), &numbers)),
         checks: checks(series),
         checks_words: checks_words(series),
+        checks_not_made: series
+            .checks
+            .iter()
+            .filter_map(|check| Some(format!("{}: {}", check.id, check.why.as_ref()?)))
+            .collect(),
         quantiles_figure: period
             .and_then(|period| drawings::quantiles(drawings, &series.name, period, &numbers, slug)),
         sensitivity: sensitivity::view(series, &numbers),
@@ -148,19 +151,29 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
     SeriesView { remarks: numbers.remarks(), ..view }
 }
 
-fn spread(series: &SeriesFindings, numbers: &Numbers<'_>) -> Option<SpreadView> {
+/// How far the means of the earlier periods differ, plainly and corrected.
+fn spread(series: &SeriesFindings, numbers: &Numbers<'_>) -> Option<String> {
     let spread = series.spread_of_means.as_ref()?;
-    let unit =
-        if numbers.scale == Scale::Linear { numbers.unit.as_str() } else { " (of natural logarithms)" };
-    let said = |figure: &crate::quantity::Figure| match figure {
-        Ok(sd) => format!("{}{unit}", text::significant(*sd, 2)),
-        Err(absent) => format!("none ({})", absent.reason),
+    let unit = if numbers.scale == Scale::Linear { numbers.unit.as_str() } else { " of natural logarithms" };
+    let said = |sd: f64| format!("{}{unit}", text::significant(sd, 2));
+    let periods = spread.periods;
+    let told = match (&spread.naive_sd, &spread.corrected_sd) {
+        (Err(absent), _) => {
+            return Some(format!(
+                "How far the means of the {periods} earlier periods differ is not told by one figure: {}.",
+                absent.reason
+            ));
+        }
+        (Ok(naive), Ok(corrected)) => format!(
+            "have standard deviation {}; without the part that is scatter of readings, {} is left for the differences between periods",
+            said(*naive),
+            said(*corrected)
+        ),
+        (Ok(naive), Err(absent)) => format!("have standard deviation {}; {}", said(*naive), absent.reason),
     };
-    Some(SpreadView {
-        periods: spread.periods,
-        naive: said(&spread.naive_sd),
-        corrected: said(&spread.corrected_sd),
-    })
+    Some(format!(
+        "The means of the {periods} earlier periods {told}. This is for orientation; how the between sd enters the prior is said under “Parameters”."
+    ))
 }
 
 /// How much of the level is prior, in one sentence.
@@ -188,7 +201,7 @@ fn checks(series: &SeriesFindings) -> Option<TableView> {
         "Checks of the assumptions, those without a finding too",
         &[
             ("check", Column::Head),
-            ("statistic", Column::Number),
+            ("statistic", Column::Text),
             ("under the assumption", Column::Text),
             ("p", Column::Number),
             ("finding", Column::Text),
@@ -196,37 +209,23 @@ fn checks(series: &SeriesFindings) -> Option<TableView> {
             ("what follows", Column::Text),
         ],
     );
-    for check in &series.checks {
-        let finding = match (&check.why, check.concern) {
-            (Some(_), _) => "not made".to_string(),
-            (None, Concern::Flag) => "flag".to_string(),
-            (None, Concern::Remark) => "remark".to_string(),
-            (None, Concern::None) => "none".to_string(),
-        };
-        let meaning = check.why.as_ref().map_or_else(|| check.meaning.clone(), |why| why.clone());
+    for check in series.checks.iter().filter(|check| check.why.is_none()) {
         let statistic = check.statistic.map_or_else(
             || NOTHING.to_string(),
-            |value| {
-                let value = text::significant(value, 4);
-                if check.statistic_name.is_empty() {
-                    value
-                } else {
-                    format!("{} = {value}", check.statistic_name)
-                }
-            },
+            |value| format!("{} = {}", check.statistic_name, text::significant(value, 4)),
         );
         table.row(vec![
             plain(check.id),
             plain(statistic),
             plain(if check.reference.is_empty() { NOTHING } else { check.reference.as_str() }),
             plain(check.p.map_or_else(|| NOTHING.to_string(), text::p_value)),
-            if check.concern == Concern::Flag && check.why.is_none() {
-                super::table::bold(&finding)
-            } else {
-                plain(finding)
+            match check.concern {
+                Concern::Flag => super::table::bold("flag"),
+                Concern::Remark => plain("remark"),
+                Concern::None => plain("none"),
             },
-            plain(meaning),
-            plain(if check.why.is_some() { NOTHING } else { check.consequence.as_str() }),
+            plain(answers::with_minus(&check.meaning)),
+            plain(if check.concern == Concern::None { NOTHING } else { check.consequence.as_str() }),
         ]);
     }
     table.some()
@@ -258,7 +257,7 @@ fn predictions(series: &SeriesFindings, numbers: &Numbers<'_>) -> Option<TableVi
         if ahead || reading {
             let rule = answers::rule_of(numbers.plan, &answer.id);
             table.row(vec![
-                plain(answers::capital(&answer.words)),
+                plain(answers::question_words(None, &answer.words)),
                 plain(numbers.long_line(&answer.figures, rule)),
             ]);
         }
