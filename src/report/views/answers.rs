@@ -5,7 +5,7 @@ use super::table::{Column, TableView, plain};
 use crate::findings::{AcrossFindings, Answer, SeriesFindings};
 use crate::plan::{Plan, QuestionPlan, Rule};
 use crate::questions::figures::{Figures, Item, Meaning};
-use crate::report::text;
+use crate::report::text::{self, Places};
 use crate::working::Step;
 use minijinja::Value;
 use serde::Serialize;
@@ -79,7 +79,7 @@ pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> 
         agreed: rule.map(agreed),
         not_decided: given.as_ref().is_some_and(open),
         verdict: given,
-        rule_figures: rule_figures(&answer.rule_figures, numbers),
+        rule_figures: rule_figures(&answer.rule_figures, rule, numbers),
         rule_figure: None,
         working: working(&answer.working),
     }
@@ -105,16 +105,12 @@ pub fn agreed(rule: &Rule) -> String {
     }
 }
 
-/// What each figure of a rule is called; those without a name here are drawn or repeat another.
+/// What each figure of a rule is called; those without a name here are drawn, or are said otherwise.
 const RULE_FIGURES: &[(&str, &str)] = &[
     ("acceptance_limit", "Acceptance limit for the mean of the readings"),
-    ("accepted", "Accepted"),
     ("guard_band", "Guard band, the distance of the acceptance limit from the limit"),
     ("guard_band_share_of_u", "The guard band in units of U, twice the standard deviation of the level"),
-    (
-        "specific_risk",
-        "Risk of this acceptance: probability, given prior and readings, that what would be accepted does not conform",
-    ),
+    ("specific_risk", "Probability, given prior and readings, that the level does not conform"),
     (
         "global_risk_accepted",
         "Risk of the rule: probability, before any reading, that the level does not conform and is accepted",
@@ -128,10 +124,10 @@ const RULE_FIGURES: &[(&str, &str)] = &[
 ];
 
 /// Why these do not exist is worth a line; of the others, only what exists is printed.
-const SAID_WHERE_MISSING: [&str; 3] = ["acceptance_limit", "tipping_prior_mean", "tipping_prior_readings"];
+const SAID_WHERE_MISSING: [&str; 2] = ["tipping_prior_mean", "tipping_prior_readings"];
 
-fn rule_figures(figures: &Figures, numbers: &Numbers<'_>) -> Vec<String> {
-    let mut lines = Vec::new();
+fn rule_figures(figures: &Figures, rule: Option<&Rule>, numbers: &Numbers<'_>) -> Vec<String> {
+    let mut lines = conditions(figures, rule, numbers);
     for (name, item) in &figures.0 {
         let words = RULE_FIGURES.iter().find(|(known, _)| known == name).map(|(_, words)| *words);
         match (words, item) {
@@ -144,14 +140,32 @@ fn rule_figures(figures: &Figures, numbers: &Numbers<'_>) -> Vec<String> {
             (Some(words), Item::Number(Err(absent), _)) if SAID_WHERE_MISSING.contains(name) => {
                 lines.push(format!("{words}: none ({})", with_minus(&absent.reason)));
             }
-            (Some(words), Item::Text(said)) => lines.push(format!("{words}: {}", with_minus(said))),
-            (None, Item::Numbers(all, meaning)) if *name == "acceptance_limits" && all.len() > 1 => {
-                let all: Vec<String> =
-                    all.iter().map(|number| numbers.number(*number, *meaning, None)).collect();
-                lines.push(format!("Acceptance limits: {}", all.join(", ")));
-            }
             _ => {}
         }
+    }
+    lines
+}
+
+/// At which means of the readings each condition of the rule begins or ceases to hold.
+fn conditions(figures: &Figures, rule: Option<&Rule>, numbers: &Numbers<'_>) -> Vec<String> {
+    let Some(Item::Rows(rows)) = figures.get("conditions") else { return Vec::new() };
+    let verdicts = rule.map_or(&[][..], |rule| &rule.verdicts);
+    let conditions = verdicts
+        .iter()
+        .flat_map(|verdict| verdict.conditions.iter().map(move |condition| (verdict, condition)));
+    let mut lines = Vec::new();
+    for (row, (verdict, (condition, threshold))) in rows.iter().zip(conditions) {
+        let Some(Item::Numbers(at, meaning)) = row.get("limits") else { continue };
+        let words = super::numbers::one_condition(*condition, threshold, numbers.plan);
+        let at: Vec<String> = at.iter().map(|at| numbers.number(*at, *meaning, None)).collect();
+        lines.push(match at.len() {
+            0 => format!("“{}”, {words}: the same for every mean of the readings", verdict.say),
+            _ => format!(
+                "“{}”, {words}: begins or ceases to hold at a mean of the readings of {}",
+                verdict.say,
+                at.join(" and ")
+            ),
+        });
     }
     lines
 }
@@ -186,16 +200,22 @@ fn working(steps: &[Step]) -> Option<TableView> {
         let put_in: Vec<String> = step
             .put_in
             .iter()
-            .map(|(symbol, value)| format!("{symbol} = {}", text::significant(*value, 7)))
+            .map(|(symbol, value)| format!("{symbol} = {}", working_number(*value)))
             .collect();
         table.row(vec![
             plain(&step.label),
             plain(&step.formula),
             plain(put_in.join(", ")),
-            plain(text::significant(step.result, 7)),
+            plain(working_number(step.result)),
         ]);
     }
     table.some()
+}
+
+/// Seven digits; a whole number as such.
+fn working_number(value: f64) -> String {
+    let whole = value.abs() < 1e7 && value as i64 as f64 == value;
+    if whole { Places::decimals(0).value(value) } else { text::significant(value, 7) }
 }
 
 /// All answers of one series beside each other.

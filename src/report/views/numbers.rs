@@ -403,6 +403,12 @@ pub fn rule_words(rule: &Rule, plan: &Plan, series: Option<&str>) -> String {
     parts.join("; ")
 }
 
+/// One condition in words: "the probability is at most 0.05".
+pub fn one_condition(condition: Condition, threshold: &Threshold, plan: &Plan) -> String {
+    let value = threshold_words(condition, threshold, plan, None, &unit(plan));
+    format!("{} {value}", condition_words(condition))
+}
+
 fn threshold_words(
     condition: Condition,
     threshold: &Threshold,
