@@ -98,7 +98,8 @@ fn css_string(text: &str) -> String {
         .chars()
         .map(|character| match character {
             'a'..='z' | 'A'..='Z' | '0'..='9' | ' ' => character.to_string(),
-            _ => format!("\\{:06x}", u32::from(character)),
+            // The blank ends the number; it is not printed.
+            _ => format!("\\{:06x} ", u32::from(character)),
         })
         .collect()
 }

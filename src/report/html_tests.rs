@@ -29,7 +29,7 @@ fn the_page_is_whole_and_needs_nothing_else() {
         "<li><a href=\"#one\">One</a></li>",
         "<h2 id=\"two\">Two</h2>",
         "<dd>draft &amp; open</dd>",
-        "content: \"SF\\00002dNO3\\00002d2025 \\000022draft\\000022\"",
+        "content: \"SF\\00002d NO3\\00002d 2025 \\000022 draft\\000022 \"",
         "<p>End of report.</p>",
     ] {
         assert!(text.contains(part), "{part}");

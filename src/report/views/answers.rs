@@ -16,6 +16,8 @@ pub struct AnswerView {
     pub id: String,
     /// The reader's words, or the quantity's.
     pub question: String,
+    /// Whether the spec puts the question in words of its own.
+    pub has_words: bool,
     pub words: String,
     pub symbols: String,
     pub both: String,
@@ -69,6 +71,7 @@ pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> 
     AnswerView {
         id: answer.id.clone(),
         question: question_words(answer.say.as_deref(), &answer.words),
+        has_words: answer.say.is_some(),
         words: capital(&with_minus(&answer.words)),
         symbols: with_minus(&answer.symbols),
         both: numbers.long_line(&answer.figures, rule),

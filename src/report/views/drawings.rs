@@ -185,8 +185,10 @@ pub fn level(
             "{title}. There are no readings of {period}: the curve is the prior alone, with its central 95 % interval ({ends})."
         )
     } else {
+        let prior = if prior.is_some() { "prior (dashed), " } else { "" };
+        let limits = if plan.limits.is_empty() { "" } else { ", and the limits" };
         format!(
-            "{title}: prior (dashed), readings alone (dotted), both together (solid) with its central 95 % interval ({ends}), and the limits."
+            "{title}: {prior}readings alone (dotted), both together (solid) with its central 95 % interval ({ends}){limits}."
         )
     };
     drawings.add(&name, &title, &caption, figure_level::level(&figure))

@@ -203,7 +203,8 @@ pub fn results(series: &SeriesFindings, numbers: &Numbers<'_>) -> (TableView, Ve
         ("between sd".to_string(), Posterior::between_sd, true),
         ("next reading".to_string(), next_reading, false),
     ];
-    let mut missing: Vec<String> = Vec::new();
+    // What is missing, by reason and bases, so that each reason is read once.
+    let mut missing: Vec<(String, Vec<&str>, Vec<String>)> = Vec::new();
     for (name, of, of_spread) in rows {
         let mut cells = vec![plain(&name)];
         let mut why: Vec<(String, Vec<&str>)> = Vec::new();
@@ -224,18 +225,24 @@ pub fn results(series: &SeriesFindings, numbers: &Numbers<'_>) -> (TableView, Ve
                 }
             }
         }
-        let none_at_all = why.iter().map(|(_, bases)| bases.len()).sum::<usize>() == 3;
-        for (reason, bases) in why {
-            missing.push(match bases.len() {
-                3 => format!("{name}: {reason}"),
-                _ => format!("{name}, {}: {reason}", bases.join(" and ")),
-            });
-        }
-        if !none_at_all {
+        if why.iter().map(|(_, bases)| bases.len()).sum::<usize>() < 3 {
             table.row(cells);
         }
+        for (reason, bases) in why {
+            match missing.iter_mut().find(|(known, of, _)| *known == reason && *of == bases) {
+                Some((.., names)) => names.push(name.clone()),
+                None => missing.push((reason, bases, vec![name.clone()])),
+            }
+        }
     }
-    (table, missing)
+    let missing = missing.into_iter().map(|(reason, bases, names)| {
+        let names = names.join(", ");
+        match bases.len() {
+            3 => format!("{names}: {reason}"),
+            _ => format!("{names} ({}): {reason}", bases.join(" and ")),
+        }
+    });
+    (table, missing.collect())
 }
 
 fn next_reading(posterior: &Posterior) -> Result<Law, Absent> {

@@ -20,6 +20,8 @@ pub struct SeriesView {
     pub name: String,
     /// Name and label.
     pub title: String,
+    /// Comma and title behind headings, where there are several series.
+    pub suffix: String,
     pub period: String,
     pub without_readings: bool,
     pub planned: Option<String>,
@@ -111,6 +113,7 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
     let view = SeriesView {
         name: series.name.clone(),
         title: title(series),
+        suffix: if findings.series.len() > 1 { format!(", {}", title(series)) } else { String::new() },
         period: plan.review.period.to_string(),
         without_readings: series.without_readings,
         planned: cautions::planned(plan, &series.name).map(text::count),
