@@ -9,12 +9,12 @@ use std::fs::File;
 use std::io::{ErrorKind, Read, Write};
 use std::path::Path;
 use std::sync::Arc;
-use std::sync::mpsc::sync_channel;
+use std::sync::mpsc::{SyncSender, sync_channel};
 
 /// Bytes read at a time by [`stream`].
 pub const BLOCK_BYTES: usize = 1 << 20;
 
-/// Blocks that may wait for the hashing thread before reading waits for it.
+/// Blocks that may wait to be parsed before reading waits.
 const BLOCKS_IN_FLIGHT: usize = 4;
 
 /// The identity of the bytes that were read.
@@ -73,8 +73,8 @@ fn place_of_byte(bytes: &[u8], at: usize, name: &str) -> Place {
 }
 
 /// Gives a file's bytes to `each`, block by block and in order, and returns the hash of these very
-/// bytes. A file of more than one block is hashed on a second thread while `each` works; the result
-/// does not depend on how the two take turns.
+/// bytes. A file of more than one block is read and hashed on a second thread while `each` works; the
+/// result does not depend on how the two take turns.
 pub fn stream(path: &Path, name: &str, doing: &str, mut each: impl FnMut(&[u8])) -> Result<Hashed, Fault> {
     let mut file = open(path, name, doing)?;
     let read_error = |error: std::io::Error| unreadable(name, doing, &error);
@@ -85,50 +85,48 @@ pub fn stream(path: &Path, name: &str, doing: &str, mut each: impl FnMut(&[u8]))
         each(&first);
         return Ok(Hashed { sha256: sha256_hex(&first), bytes: filled as u64 });
     }
-    std::thread::scope(|scope| {
-        let (to_hasher, blocks) = sync_channel::<Arc<Vec<u8>>>(BLOCKS_IN_FLIGHT);
-        let hasher = scope.spawn(move || {
-            let mut state = Sha256::new();
-            while let Ok(block) = blocks.recv() {
-                state.update(block.as_slice());
-            }
-            hex(&state.finalize())
-        });
-        let mut bytes = 0;
-        // Blocks take turns: one that the hasher has let go of is filled again.
-        let mut ring: Vec<Arc<Vec<u8>>> = vec![Arc::new(first)];
-        let mut turn = 0;
-        loop {
-            let block = Arc::clone(&ring[turn]);
-            bytes += block.len() as u64;
-            // The hasher ends only when the sender is dropped.
-            if to_hasher.send(Arc::clone(&block)).is_err() {
-                break;
-            }
+    let read = std::thread::scope(|scope| {
+        let (send, blocks) = sync_channel(BLOCKS_IN_FLIGHT);
+        let reader = scope.spawn(move || hash_and_send(file, first, &send));
+        while let Ok(block) = blocks.recv() {
+            let block: Arc<Vec<u8>> = block;
             each(&block);
-            drop(block);
-            turn = (turn + 1) % (BLOCKS_IN_FLIGHT + 2);
-            let mut next = match ring.get_mut(turn).map(std::mem::take) {
-                Some(used) => Arc::try_unwrap(used).unwrap_or_default(),
-                None => Vec::new(),
-            };
-            next.resize(BLOCK_BYTES, 0);
-            let filled = fill(&mut file, &mut next).map_err(read_error)?;
-            if filled == 0 {
-                break;
-            }
-            next.truncate(filled);
-            match ring.get_mut(turn) {
-                Some(slot) => *slot = Arc::new(next),
-                None => ring.push(Arc::new(next)),
-            }
         }
-        drop(to_hasher);
-        match hasher.join() {
-            Ok(sha256) => Ok(Hashed { sha256, bytes }),
-            Err(_) => Err(Fault::unreadable("unreadable-file", format!("hashing {name} broke off"))),
+        reader.join()
+    });
+    match read {
+        Ok(hashed) => hashed.map_err(read_error),
+        Err(_) => Err(Fault::unreadable("unreadable-file", format!("hashing {name} broke off"))),
+    }
+}
+
+/// Reads on from the first block, hashes every block and sends it.
+fn hash_and_send(mut file: File, first: Vec<u8>, send: &SyncSender<Arc<Vec<u8>>>) -> std::io::Result<Hashed> {
+    let mut state = Sha256::new();
+    let mut bytes = 0;
+    // Blocks take turns: one that the receiver has let go of is filled again.
+    let mut ring: Vec<Arc<Vec<u8>>> = Vec::new();
+    let mut turn = 0;
+    let mut block = first;
+    while !block.is_empty() {
+        state.update(&block);
+        bytes += block.len() as u64;
+        let shared = Arc::new(block);
+        if send.send(Arc::clone(&shared)).is_err() {
+            break;
         }
-    })
+        match ring.get_mut(turn) {
+            Some(place) => *place = shared,
+            None => ring.push(shared),
+        }
+        turn = (turn + 1) % (BLOCKS_IN_FLIGHT + 2);
+        let used = ring.get_mut(turn).map(std::mem::take).and_then(|used| Arc::try_unwrap(used).ok());
+        block = used.unwrap_or_default();
+        block.resize(BLOCK_BYTES, 0);
+        let filled = fill(&mut file, &mut block)?;
+        block.truncate(filled);
+    }
+    Ok(Hashed { sha256: hex(&state.finalize()), bytes })
 }
 
 /// The hashes that a file would have with only LF, and with only CR LF, as line ends: to say of a

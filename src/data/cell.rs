@@ -6,15 +6,17 @@ use super::columns::trimmed;
 use super::fault_list::FaultList;
 use super::number;
 use crate::diagnostics::{Fault, Place};
-use crate::plan::Marks;
-use crate::quantity::Scale;
+use crate::plan::{Marks, Source};
 
 /// How the cell of a reading is to be understood.
-pub struct Reader<'p> {
-    pub marks: &'p Marks,
-    pub comma: bool,
-    pub scale: Scale,
-    pub coverage: f64,
+pub struct Reader {
+    /// Each mark and what it means, the longest first.
+    marks: Vec<(Vec<u8>, Mark)>,
+    /// Texts that mean that there is no reading.
+    missing: Vec<Vec<u8>>,
+    comma: bool,
+    /// Whether a cell that starts like a number can be nothing else.
+    numbers_are_plain: bool,
 }
 
 /// A cell as understood.
@@ -25,31 +27,56 @@ pub enum Understood {
     Marked { mark: Mark, limit: Option<f64>, decimals: usize },
 }
 
-impl Reader<'_> {
+impl Reader {
+    pub fn new(marks: &Marks, source: &Source) -> Reader {
+        let bytes = |text: &String| text.trim().as_bytes().to_vec();
+        let below = marks.below.iter().map(|mark| (bytes(mark), Mark::Below));
+        let above = marks.above.iter().map(|mark| (bytes(mark), Mark::Above));
+        let mut marks: Vec<(Vec<u8>, Mark)> = below.chain(above).collect();
+        marks.sort_by_key(|(mark, _)| std::cmp::Reverse(mark.len()));
+        let missing: Vec<Vec<u8>> = source.missing.iter().map(bytes).collect();
+        let like_a_number = |text: &Vec<u8>| text.first().is_some_and(starts_a_number);
+        let numbers_are_plain =
+            !missing.iter().any(like_a_number) && !marks.iter().any(|(mark, _)| like_a_number(mark));
+        Reader { marks, missing, comma: source.decimal_comma, numbers_are_plain }
+    }
+
+    fn is_missing(&self, cell: &[u8]) -> bool {
+        cell.is_empty() || self.missing.iter().any(|text| text == cell)
+    }
+
     /// Splits a mark off and reads the number; `mark_cell` is the trimmed cell of the marks' column.
-    pub fn understand(
-        &self,
-        cell: &[u8],
-        mark_cell: Option<&[u8]>,
-        columns_missing: impl Fn(&[u8]) -> bool,
-    ) -> Result<Understood, Refused> {
+    #[inline]
+    pub fn understand(&self, cell: &[u8], mark_cell: Option<&[u8]>) -> Result<Understood, Refused> {
+        if self.numbers_are_plain
+            && mark_cell.is_none()
+            && cell.first().is_some_and(starts_a_number)
+            && let Some(number) = number::parse(cell, self.comma)
+        {
+            return Ok(Understood::Number { value: number.value, decimals: number.decimals });
+        }
+        self.understand_slowly(cell, mark_cell)
+    }
+
+    fn understand_slowly(&self, cell: &[u8], mark_cell: Option<&[u8]>) -> Result<Understood, Refused> {
         let (mark, rest) = match mark_cell {
             Some(apart) if !apart.is_empty() => match self.mark_named(apart) {
                 Some(mark) => (mark, cell),
                 None => return Err(Refused::UnknownMark),
             },
             Some(_) => (Mark::None, cell),
+            None if self.is_missing(cell) => (Mark::None, cell),
             None => self.split_mark(cell),
         };
         if mark == Mark::None {
-            if columns_missing(cell) {
+            if self.is_missing(cell) {
                 return Ok(Understood::Missing);
             }
             let number = number::parse(cell, self.comma).ok_or(Refused::NotANumber)?;
             return Ok(Understood::Number { value: number.value, decimals: number.decimals });
         }
         let rest = trimmed(rest);
-        if rest.is_empty() || (mark_cell.is_some() && columns_missing(rest)) {
+        if rest.is_empty() || (mark_cell.is_some() && self.is_missing(rest)) {
             return Ok(Understood::Marked { mark, limit: None, decimals: 0 });
         }
         let number = number::parse(rest, self.comma).ok_or(Refused::NotANumber)?;
@@ -57,32 +84,20 @@ impl Reader<'_> {
     }
 
     fn mark_named(&self, text: &[u8]) -> Option<Mark> {
-        let is = |marks: &[String]| marks.iter().any(|mark| mark.trim().as_bytes() == text);
-        match (is(&self.marks.below), is(&self.marks.above)) {
-            (true, _) => Some(Mark::Below),
-            (_, true) => Some(Mark::Above),
-            _ => None,
-        }
+        self.marks.iter().find(|(mark, _)| mark == text).map(|(_, kind)| *kind)
     }
 
     /// The longest mark that the cell starts with, and what follows.
-    #[inline]
     fn split_mark<'c>(&self, cell: &'c [u8]) -> (Mark, &'c [u8]) {
-        let mut found = (Mark::None, cell);
-        let mut length = 0;
-        for (marks, kind) in [(&self.marks.below, Mark::Below), (&self.marks.above, Mark::Above)] {
-            for mark in marks {
-                let mark = mark.trim().as_bytes();
-                if mark.len() > length
-                    && let Some(rest) = cell.strip_prefix(mark)
-                {
-                    length = mark.len();
-                    found = (kind, rest);
-                }
-            }
-        }
-        found
+        let found =
+            self.marks.iter().find_map(|(mark, kind)| Some((*kind, cell.strip_prefix(mark.as_slice())?)));
+        found.unwrap_or((Mark::None, cell))
     }
+}
+
+#[inline]
+fn starts_a_number(byte: &u8) -> bool {
+    byte.is_ascii_digit() || matches!(byte, b'-' | b'+' | b'.' | b',')
 }
 
 /// Why a cell was not understood.
@@ -94,11 +109,18 @@ pub enum Refused {
 
 /// Numbers that look like codes for "no reading", and the range of the others: such a number is
 /// refused unless it lies where readings lie.
-#[derive(Debug, Default)]
+#[derive(Debug)]
 pub struct Codes {
     found: Vec<(f64, Place)>,
-    smallest: Option<f64>,
-    largest: Option<f64>,
+    /// Of the other readings; +∞ and −∞ before the first.
+    smallest: f64,
+    largest: f64,
+}
+
+impl Default for Codes {
+    fn default() -> Codes {
+        Codes { found: Vec::new(), smallest: f64::INFINITY, largest: f64::NEG_INFINITY }
+    }
 }
 
 impl Codes {
@@ -110,15 +132,16 @@ impl Codes {
             }
             return;
         }
-        self.smallest = Some(self.smallest.map_or(value, |smallest| smallest.min(value)));
-        self.largest = Some(self.largest.map_or(value, |largest| largest.max(value)));
+        self.smallest = self.smallest.min(value);
+        self.largest = self.largest.max(value);
     }
 
     /// Refuses numbers that look like codes and lie far from all other readings.
     pub fn judge(self, faults: &mut FaultList) {
-        let (Some(smallest), Some(largest)) = (self.smallest, self.largest) else {
+        let Codes { smallest, largest, .. } = self;
+        if smallest > largest {
             return;
-        };
+        }
         let reach = (largest - smallest).max(smallest.abs().max(largest.abs()) / 2.0);
         for (value, place) in self.found {
             if value > largest + reach || value < smallest - reach {

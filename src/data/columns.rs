@@ -74,6 +74,16 @@ pub fn nearest<'a>(wanted: &str, names: &'a [String]) -> Option<&'a str> {
 /// A cell's bytes without the space around.
 #[inline]
 pub fn trimmed(cell: &[u8]) -> &[u8] {
+    // Most cells have nothing around them.
+    let is_plain = |byte: &u8| byte.is_ascii_graphic();
+    if cell.first().is_none_or(is_plain) && cell.last().is_none_or(is_plain) {
+        return cell;
+    }
+    trim(cell)
+}
+
+#[cold]
+fn trim(cell: &[u8]) -> &[u8] {
     let cell = cell.trim_ascii();
     let wide = cell.first().is_some_and(|b| *b >= 0x80) || cell.last().is_some_and(|b| *b >= 0x80);
     if wide {

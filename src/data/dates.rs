@@ -3,45 +3,41 @@
 use crate::plan::DateOrder;
 use jiff::civil::Date;
 
-/// A day of the calendar, ordered in time: year · 10 000 + month · 100 + day.
+/// A day of the calendar, ordered in time: the year, then month and day in four and five bits below it.
 #[derive(Debug, Clone, Copy, PartialEq, Eq, PartialOrd, Ord)]
 pub struct Day(i32);
 
 impl Day {
     pub fn new(year: i32, month: i32, day: i32) -> Option<Day> {
+        const DAYS: [i32; 12] = [31, 29, 31, 30, 31, 30, 31, 31, 30, 31, 30, 31];
+        let days = *DAYS.get(usize::try_from(month - 1).ok()?)?;
         let leap = year % 4 == 0 && (year % 100 != 0 || year % 400 == 0);
-        let days = match month {
-            1 | 3 | 5 | 7 | 8 | 10 | 12 => 31,
-            4 | 6 | 9 | 11 => 30,
-            2 => 28 + i32::from(leap),
-            _ => return None,
-        };
-        ((1..=9999).contains(&year) && (1..=days).contains(&day))
-            .then_some(Day(year * 10_000 + month * 100 + day))
+        let exists = (1..=9999).contains(&year) && (1..=days).contains(&day);
+        (exists && (month != 2 || day < 29 || leap)).then_some(Day(year << 9 | month << 5 | day))
     }
 
     pub fn of(date: Date) -> Day {
-        Day(i32::from(date.year()) * 10_000 + i32::from(date.month()) * 100 + i32::from(date.day()))
+        Day(i32::from(date.year()) << 9 | i32::from(date.month()) << 5 | i32::from(date.day()))
     }
 
     pub fn date(self) -> Option<Date> {
-        Date::new(self.year() as i16, self.month() as i8, (self.0 % 100) as i8).ok()
+        Date::new(self.year() as i16, self.month() as i8, (self.0 & 31) as i8).ok()
     }
 
     pub fn year(self) -> i32 {
-        self.0 / 10_000
+        self.0 >> 9
     }
 
     /// 1 to 12.
     pub fn month(self) -> i32 {
-        self.0 / 100 % 100
+        self.0 >> 5 & 15
     }
 
     /// The year that the day falls in, named after the year it starts in, where years start on that
     /// month and day.
     pub fn year_that_starts(self, month: i8, day: i8) -> i32 {
-        let start = i32::from(month) * 100 + i32::from(day);
-        self.year() - i32::from(self.0 % 10_000 < start)
+        let start = i32::from(month) << 5 | i32::from(day);
+        self.year() - i32::from(self.0 & 511 < start)
     }
 }
 
@@ -66,11 +62,18 @@ pub fn form(order: DateOrder) -> &'static str {
 
 /// A day of the calendar, or `None`: the year has four digits, in ISO order month and day have two;
 /// nothing may follow.
+#[inline]
 pub fn parse(text: &[u8], order: DateOrder) -> Option<Day> {
     match order {
         DateOrder::YearMonthDay => match text {
             [y1, y2, y3, y4, b'-', m1, m2, b'-', d1, d2] => {
-                Day::new(number(&[*y1, *y2, *y3, *y4])?, number(&[*m1, *m2])?, number(&[*d1, *d2])?)
+                let digits =
+                    [*y1, *y2, *y3, *y4, *m1, *m2, *d1, *d2].map(|b| i32::from(b.wrapping_sub(b'0')));
+                let [a, b, c, d, e, f, g, h] = digits;
+                if digits.iter().any(|digit| *digit > 9) {
+                    return None;
+                }
+                Day::new(a * 1000 + b * 100 + c * 10 + d, e * 10 + f, g * 10 + h)
             }
             _ => None,
         },

@@ -121,6 +121,8 @@ pub struct Member {
 pub struct Cell {
     pub series: String,
     pub period: Period,
+    /// The calendar year that the period's name is, if it is one.
+    pub year: Option<i32>,
     pub plain: Tally,
     /// Marked readings and those with an uncertainty of their own.
     pub special: Vec<Observed>,
@@ -217,6 +219,7 @@ impl Gather {
         self.cells.push(Cell {
             series: key.0.clone(),
             period: key.1.clone(),
+            year: period.number().filter(|year| (1900..2200).contains(year)).map(|year| year as i32),
             plain: Tally::default(),
             special: Vec::new(),
             groups: BTreeMap::new(),

@@ -210,15 +210,14 @@ fn read_values(
         Coverage::Factor(factor) => *factor,
         Coverage::Column(_) => 1.0,
     };
-    let reader = Reader { marks, comma: source.decimal_comma, scale: plan.quantity.scale, coverage: factor };
+    let reader = Reader::new(marks, source);
+    let scale = plan.quantity.scale;
     let cell = gather.cell(Period::new(series).as_str(), period);
     let mut codes = Codes::default();
     for (i, (text, span)) in values.iter().enumerate() {
         gather.counts.read += 1;
-        let missing =
-            |cell: &[u8]| cell.is_empty() || source.missing.iter().any(|text| text.trim().as_bytes() == cell);
         let trimmed = text.trim();
-        let understood = reader.understand(trimmed.as_bytes(), None, missing);
+        let understood = reader.understand(trimmed.as_bytes(), None);
         let (value, mark, decimals) = match understood {
             Ok(Understood::Missing) => (None, Mark::None, 0),
             Ok(Understood::Number { value, decimals }) => (Some(value), Mark::None, decimals),
@@ -235,7 +234,7 @@ fn read_values(
                 continue;
             }
             Err(Refused::NotANumber) => {
-                let why = number::diagnose(trimmed, reader.comma);
+                let why = number::diagnose(trimmed, source.decimal_comma);
                 faults.note(why.code, || {
                     Fault::wrong(why.code, why.what).at(span.place()).expected("a number").repair(why.repair)
                 });
@@ -243,7 +242,7 @@ fn read_values(
             }
         };
         if let Some(value) = value {
-            if reader.scale == Scale::Log && value <= 0.0 {
+            if scale == Scale::Log && value <= 0.0 {
                 faults.note("not-above-zero", || screen::not_above_zero(trimmed).at(span.place()));
                 continue;
             }

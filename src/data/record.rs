@@ -33,6 +33,9 @@ impl<'a> Record<'a> {
     /// Whether every field is empty: a blank line, or a spreadsheet's row of delimiters.
     #[inline]
     pub fn is_blank(&self) -> bool {
+        if self.raw.first().is_some_and(u8::is_ascii_alphanumeric) {
+            return false;
+        }
         let is_empty = |(start, end): &(usize, usize)| self.text[*start..*end].trim_ascii().is_empty();
         self.fields.first().is_none_or(is_empty) && self.fields.iter().all(is_empty)
     }

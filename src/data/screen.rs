@@ -36,7 +36,12 @@ pub struct Screen<'p> {
     columns: Columns,
     cells: Cells,
     index: CellIndex,
-    reader: Reader<'p>,
+    reader: Reader,
+    marks: &'p Marks,
+    comma: bool,
+    scale: Scale,
+    /// Coverage factor of all uncertainties, where no column holds it.
+    coverage: f64,
     review_day: Day,
     until: Option<Day>,
     check_ids: bool,
@@ -89,14 +94,13 @@ impl<'p> Screen<'p> {
         }
         Some(Screen {
             check_ids: columns.id.is_some() && columns.id != cells.replicates,
-            reader: Reader {
-                marks,
-                comma: source.decimal_comma,
-                scale: plan.quantity.scale,
-                coverage: match coverage {
-                    Coverage::Factor(factor) => *factor,
-                    Coverage::Column(_) => 1.0,
-                },
+            reader: Reader::new(marks, source),
+            marks,
+            comma: source.decimal_comma,
+            scale: plan.quantity.scale,
+            coverage: match coverage {
+                Coverage::Factor(factor) => *factor,
+                Coverage::Column(_) => 1.0,
             },
             plan,
             source,
@@ -218,7 +222,7 @@ impl<'p> Screen<'p> {
     fn observed(&self, record: &Record<'_>, faults: &mut FaultList) -> Result<Option<(Observed, usize)>, ()> {
         let cell = trimmed(record.get(self.cells.value));
         let mark_cell = self.cells.mark.map(|column| trimmed(record.get(column)));
-        let understood = self.reader.understand(cell, mark_cell, |cell| self.columns.is_missing(cell));
+        let understood = self.reader.understand(cell, mark_cell);
         let (value, mark, decimals) = match understood {
             Ok(Understood::Missing) => return Ok(None),
             Ok(Understood::Number { value, decimals }) => (value, Mark::None, decimals),
@@ -231,7 +235,7 @@ impl<'p> Screen<'p> {
                 return Err(());
             }
         };
-        if self.reader.scale == Scale::Log && value <= 0.0 {
+        if self.scale == Scale::Log && value <= 0.0 {
             faults.note("not-above-zero", || {
                 not_above_zero(&text(cell)).at(self.place(record, self.cells.value))
             });
@@ -255,7 +259,7 @@ impl<'p> Screen<'p> {
     ) {
         match refused {
             Refused::NotANumber => {
-                let why = number::diagnose(&String::from_utf8_lossy(cell), self.reader.comma);
+                let why = number::diagnose(&String::from_utf8_lossy(cell), self.comma);
                 faults.note(why.code, || {
                     Fault::wrong(why.code, why.what)
                         .at(self.place(record, self.cells.value))
@@ -265,8 +269,7 @@ impl<'p> Screen<'p> {
             }
             Refused::UnknownMark => faults.note("unknown-mark", || {
                 let column = self.cells.mark.unwrap_or(self.cells.value);
-                unknown_mark(&text(mark_cell.unwrap_or_default()), self.reader.marks)
-                    .at(self.place(record, column))
+                unknown_mark(&text(mark_cell.unwrap_or_default()), self.marks).at(self.place(record, column))
             }),
         }
     }
@@ -280,11 +283,11 @@ impl<'p> Screen<'p> {
 
     /// The limit of a mark without a number.
     fn limit(&self, record: &Record<'_>, faults: &mut FaultList) -> Option<f64> {
-        match (&self.reader.marks.limit, self.cells.limit) {
+        match (&self.marks.limit, self.cells.limit) {
             (Some(NumberOrColumn::Number(limit)), _) => Some(*limit),
             (_, Some(column)) => {
                 let cell = trimmed(record.get(column));
-                let number = number::parse(cell, self.reader.comma);
+                let number = number::parse(cell, self.comma);
                 if number.is_none() {
                     faults.note("mark-without-limit", || {
                         Fault::wrong(
@@ -310,7 +313,7 @@ impl<'p> Screen<'p> {
     /// The standard uncertainty of a row's reading.
     fn uncertainty(&self, record: &Record<'_>, column: usize, faults: &mut FaultList) -> Option<f64> {
         let factor = match self.cells.coverage {
-            None => self.reader.coverage,
+            None => self.coverage,
             Some(column) => self.positive(record, column, "coverage factor", faults)?,
         };
         Some(self.positive(record, column, "uncertainty", faults)? / factor)
@@ -324,7 +327,7 @@ impl<'p> Screen<'p> {
         faults: &mut FaultList,
     ) -> Option<f64> {
         let cell = trimmed(record.get(column));
-        let number = number::parse(cell, self.reader.comma).map(|number| number.value);
+        let number = number::parse(cell, self.comma).map(|number| number.value);
         let positive = number.filter(|number| *number > 0.0);
         if positive.is_none() {
             faults.note("not-an-uncertainty", || {
@@ -347,7 +350,6 @@ impl<'p> Screen<'p> {
         let Some(column) = self.columns.date else {
             return true;
         };
-        let period = &self.gather.cells[cell].period;
         let Some(day) = day else {
             if trimmed(record.get(column)).is_empty() {
                 faults.note("missing-date", || missing_date(self.place(record, column)));
@@ -357,8 +359,10 @@ impl<'p> Screen<'p> {
         if matches!(self.columns.period, PeriodColumn::YearOfDate { .. }) {
             return true;
         }
-        match period.number() {
-            Some(year) if (1900..2200).contains(&year) && year != i64::from(day.year()) => {
+        let cell = &self.gather.cells[cell];
+        match cell.year {
+            Some(year) if year != day.year() => {
+                let period = &cell.period;
                 faults.note("date-outside-period", || {
                     let message = format!(
                         "\"{}\" does not lie in the period {period}",
