@@ -50,6 +50,11 @@ impl SdAxis {
         SdAxis { sums, uniform: false, centre: 0.5 * fm::ln(sums.ss / sums.df) }
     }
 
+    /// p(σ²) ∝ 1/σ² with no scatter of its own: the readings' bounds must rule out σ = 0.
+    pub fn scale_free(sums: SdSums, typical: f64) -> SdAxis {
+        SdAxis { sums: SdSums { df: sums.df, ss: 0.0 }, uniform: false, centre: fm::ln(typical) }
+    }
+
     /// p(σ) uniform times the sums' factor; `typical` is an sd where the likelihood begins to be flat.
     pub fn uniform(sums: SdSums, typical: f64) -> SdAxis {
         SdAxis { sums, uniform: true, centre: fm::ln(typical) }
@@ -65,6 +70,9 @@ impl SdAxis {
                     (sigma, x + ln_slope - self.sums.df * x - squares)
                 }
             };
+        }
+        if self.sums.ss == 0.0 {
+            return (fm::exp(self.centre + u), -self.sums.df * u);
         }
         // About the place where df σ² = ss, so that a million readings leave no rounding behind.
         let ln_density = -0.5 * self.sums.df * (2.0 * u + fm::exp_m1(-2.0 * u));

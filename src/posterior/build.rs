@@ -4,9 +4,11 @@ use super::Basis;
 use super::about_mean::AboutMean;
 use super::axis::{SdAxis, TauAxis};
 use super::between::{self, Tau};
+use super::marked_periods::MarkedPeriods;
+use super::marks;
 use super::moments::{self, Bounds, Tail};
 use super::plane::{BetweenSd, Level, Move, Plane, Sd};
-use super::told::{AtSd, SdSums, Told, is_marked, told};
+use super::told::{AtSd, SdSums, Told, is_marked};
 use super::units::Units;
 use super::walk::Walk;
 use crate::data::evidence::{Evidence, Seen};
@@ -112,27 +114,27 @@ impl Builder<'_> {
             Within::None => Some(0.0),
             _ => None,
         };
-        let (this, this_sums) = told(self.used, &self.units, known)?;
+        let now = marks::period(self.used, &self.units, known)?;
+        let (this, this_sums) = (now.told(), now.sums);
         // The history's own periods; under a level prior without any, they may still speak of σ.
         let periods = periods_of(level);
         let for_sd = periods.or_else(|| periods_of(&self.model.level));
-        let mut history = Vec::new();
+        let mut all_history = Vec::new();
         let mut history_sums = SdSums::default();
-        if let Some(periods) = periods {
+        if let Some(periods) = for_sd {
             for (_, evidence) in &periods.periods {
-                if is_marked(evidence) {
-                    return Err(Absent::because("marked readings in earlier periods are not served yet"));
+                let period = marks::period(evidence, &self.units, known)?;
+                history_sums.add(period.sums);
+                if periods_of(level).is_some() {
+                    all_history.push(period);
                 }
-                let (period, sums) = told(evidence, &self.units, known)?;
-                history.push(period);
-                history_sums.add(sums);
-            }
-        } else if let Some(periods) = for_sd {
-            for (_, evidence) in &periods.periods {
-                history_sums.add(told(evidence, &self.units, known)?.1);
             }
         }
-        let tails: Vec<Tail> = history.iter().filter_map(Tail::of).collect();
+        let history: Vec<Told> = all_history.iter().map(marks::Period::told).collect();
+        let history_is_marked = all_history.iter().any(|p| !p.marks.is_empty());
+        let scatter = now.excludes_no_scatter() || all_history.iter().any(marks::Period::excludes_no_scatter);
+        let tails: Vec<Tail> =
+            all_history.iter().filter_map(|p| Tail::of_marked(&p.told(), &p.marks)).collect();
         if let Some(periods) = periods {
             enough_periods(periods, tails.len())?;
         }
@@ -153,7 +155,7 @@ impl Builder<'_> {
                 let sd = self.units.sd_in(*sd);
                 sums.add(history_sums);
                 sums.add(SdSums { df: *df, ss: df * sd * sd });
-                if let Some(periods) = periods {
+                if let (Some(periods), false) = (periods, history_is_marked) {
                     pooled_level = shared_level(periods, &history, &mut sums);
                 }
                 Sd::Unknown(SdAxis::squares(sums))
@@ -161,13 +163,13 @@ impl Builder<'_> {
             (Within::Pooled { others }, _) => {
                 sums.add(history_sums);
                 for evidence in others {
-                    sums.add(told(evidence, &self.units, None)?.1);
+                    sums.add(marks::period(evidence, &self.units, None)?.sums);
                 }
-                self.improper(sums, has_own, &this, &history)?;
-                if let (Some(periods), false) = (periods, has_own) {
+                self.improper(sums, has_own, scatter, &this, &history)?;
+                if let (Some(periods), false) = (periods, has_own || history_is_marked) {
                     pooled_level = shared_level(periods, &history, &mut sums);
                 }
-                self.improper(sums, has_own, &this, &history)?
+                self.improper(sums, has_own, scatter, &this, &history)?
             }
             (Within::ReadingsBeside { history_sd: known }, _) => {
                 if periods.is_some() {
@@ -184,12 +186,14 @@ impl Builder<'_> {
                     && history.iter().any(|p| matches!(p, Told::Counted { .. } | Told::Own(_)))
                 {
                     let own = history.iter().any(Told::has_own);
-                    history_sd = Some(self.improper(history_sums, own, &Told::Nothing, &history)?);
+                    let scatter = all_history.iter().any(marks::Period::excludes_no_scatter);
+                    history_sd =
+                        Some(self.improper(history_sums, own, scatter, &Told::Nothing, &history)?);
                 }
-                if this == Told::Nothing {
+                if this == Told::Nothing && now.marks.is_empty() {
                     Sd::Undefined
                 } else {
-                    self.improper(this_sums, this.has_own(), &this, &[])?
+                    self.improper(this_sums, this.has_own(), now.excludes_no_scatter(), &this, &[])?
                 }
             }
             _ => Sd::Undefined,
@@ -203,7 +207,13 @@ impl Builder<'_> {
         let mut move_later = None;
         let level = match level {
             LevelPrior::Flat => {
-                if this == Told::Nothing {
+                let open = !now.marks.iter().any(marks::Mark::is_bounded);
+                if this == Told::Nothing && open && !now.marks.is_empty() {
+                    return Err(Absent::because(
+                        "all readings are marked and a flat prior is no bound on the other side: state a prior",
+                    ));
+                }
+                if this == Told::Nothing && open {
                     return Err(Absent::because(if self.basis == Basis::PriorOnly {
                         "a flat prior says nothing of the level"
                     } else {
@@ -265,6 +275,22 @@ impl Builder<'_> {
                     let law = between::law(periods.between, scale, &given)?;
                     move_later = moved;
                     match &periods.pattern {
+                        Pattern::AboutAMean if history_is_marked => {
+                            if is_plug_in || periods.weight != 1.0 {
+                                return Err(Absent::because(
+                                    "marked readings in earlier periods go with neither a plug-in between sd nor a weight of history",
+                                ));
+                            }
+                            let told = all_history.iter().map(|p| (p.told(), p.marks.clone())).collect();
+                            let about = MarkedPeriods::new(told);
+                            between = between_sd(law, about.smallest_var(typical * typical));
+                            Level::AboutMeanMarked(about)
+                        }
+                        Pattern::RandomWalk { .. } if history_is_marked => {
+                            return Err(Absent::because(
+                                "marked readings in the earlier periods of a random walk are not served: take the pattern about a mean",
+                            ));
+                        }
                         Pattern::AboutAMean => {
                             let about = AboutMean::new(&history);
                             between = between_sd(law, about.smallest_var(typical * typical));
@@ -293,7 +319,7 @@ impl Builder<'_> {
                     | Level::Walk(_)
                     | Level::PerReading { periods: true, .. }
             );
-        let plane = Plane { history_sd, sd, between, level, moved: move_later, readings: this };
+        let plane = Plane { history_sd, sd, between, level, moved: move_later, readings: this, marks: now.marks };
         let bounds = moments::bounds(&plane, &tails);
         let named = periods.map_or(&[][..], |p| &p.periods);
         let history = named.iter().map(|(name, _)| name.clone()).zip(history).collect();
@@ -322,7 +348,14 @@ impl Builder<'_> {
     }
 
     /// σ under an improper prior: 1/σ² over sums of squares, or uniform beside uncertainties of their own.
-    fn improper(&self, sums: SdSums, has_own: bool, this: &Told, history: &[Told]) -> Result<Sd, Absent> {
+    fn improper(
+        &self,
+        sums: SdSums,
+        has_own: bool,
+        scatter: bool,
+        this: &Told,
+        history: &[Told],
+    ) -> Result<Sd, Absent> {
         if has_own {
             let mut distinct: Vec<f64> = Vec::new();
             let mut typical = Vec::new();
@@ -341,6 +374,15 @@ impl Builder<'_> {
             }
             let smallest = typical.into_iter().fold(f64::INFINITY, f64::min);
             return Ok(Sd::Unknown(SdAxis::uniform(sums, if smallest.is_finite() { smallest } else { 1.0 })));
+        }
+        let marked = is_marked(self.used);
+        if scatter && (sums.df < 1.0 || sums.ss == 0.0) {
+            return Ok(Sd::Unknown(SdAxis::scale_free(sums, 1.0)));
+        }
+        if marked && (sums.df < 1.0 || sums.ss == 0.0) {
+            return Err(Absent::because(
+                "with marked readings, an unknown within sd needs at least 2 distinct unmarked readings: state the within sd",
+            ));
         }
         if sums.df < 1.0 {
             if *this == Told::Nothing && history.is_empty() {

@@ -4,6 +4,7 @@
 use super::build::Part;
 use super::grid::{self, Place};
 use super::law::Law;
+use super::marked::{self, Given};
 use super::plane::{BetweenSd, Level, Node};
 use super::solve::NEGLIGIBLE;
 use super::told::{Told, is_marked, told};
@@ -62,13 +63,27 @@ impl Posterior {
             }
         }
         let bound = self.inner.bounds.level.min(self.inner.bounds.sd);
+        if self.inner.is_marked() {
+            return self.change_marked(period, &own, bound);
+        }
         self.over_nodes(bound, &|part, node| difference(part, node, self.held(part, period), &own))
     }
 
     /// The level of this period less the long-run mean, both as measured.
     pub fn change_long_run(&self) -> Result<Law, Absent> {
         self.models(When::LongRun)?;
+        let units = self.inner.units;
         let bound = self.bound(When::LongRun).min(self.bound(When::This));
+        if self.inner.is_marked() {
+            if self.inner.parts.iter().any(|p| p.0.plane.marks.is_empty()) {
+                return Err(not_served());
+            }
+            return marked::law(&self.inner, true, bound, "the change", &|_, node| Given {
+                constant: -units.sd_out(long_constant(node)),
+                slope: units.scale * long_slope(node),
+                var: units.square_out(node.long_var),
+            });
+        }
         self.over_nodes(bound, &|part, node| {
             // θ = B x̄ + (1 − B) μ + noise: the difference is B (x̄ − μ) + noise.
             let level = pulled(&part.plane.readings, node, node.sigma);
@@ -132,6 +147,36 @@ impl Posterior {
         Err(Absent::failed("the law of a change did not reach its promised accuracy"))
     }
 
+    /// A change to a period with marked readings, or from a prior whose periods hold them.
+    fn change_marked(&self, period: &Period, own: &Told, bound: f64) -> Result<Law, Absent> {
+        let units = self.inner.units;
+        for (part, _, _) in &self.inner.parts {
+            let held = self.held(part, period);
+            let joint = !matches!(
+                part.plane.level,
+                Level::Flat | Level::Normal { .. } | Level::PerReading { .. } | Level::AboutMean { .. }
+            );
+            if joint || (held.is_none() && own.at(1.0).is_none()) {
+                return Err(not_served());
+            }
+        }
+        marked::law(&self.inner, true, bound, "the change", &|part, node| match self.held(part, period) {
+            Some(j) => {
+                let then = pulled(&part.history[j].1, node, node.history_sigma);
+                Given {
+                    constant: -units.sd_out(then.own + then.pull * long_constant(node)),
+                    slope: units.scale * (1.0 - then.pull * node.link),
+                    var: units.square_out(then.var + then.pull * then.pull * node.long_var),
+                }
+            }
+            None => {
+                let sigma = if node.history_sigma.is_nan() { node.sigma } else { node.history_sigma };
+                let (mean, var) = own.at(sigma * sigma).map_or((0.0, 0.0), |at| (at.mean, at.var));
+                Given { constant: -units.sd_out(mean), slope: units.scale, var: units.square_out(var) }
+            }
+        })
+    }
+
     /// Where the earlier period stands in the part's model of periods, if it does.
     fn held(&self, part: &Part, period: &Period) -> Option<usize> {
         let models = self.basis != Basis::ReadingsOnly && !matches!(self.model.level, LevelPrior::Peers(_));
@@ -144,6 +189,19 @@ impl Posterior {
         let j = part.history.iter().position(|(name, told)| name == period && *told != Told::Nothing)?;
         Some(j)
     }
+}
+
+fn not_served() -> Absent {
+    Absent::because("this change is not served with marked readings in the periods compared or in the history")
+}
+
+/// With the level on a line: the long-run mean less `link` · θ, and θ's own slope against it.
+fn long_constant(node: &Node) -> f64 {
+    node.long_mean - node.link * node.mean
+}
+
+fn long_slope(node: &Node) -> f64 {
+    1.0 - node.link
 }
 
 /// Mean and variance of this level less the earlier one at one node, inner units.

@@ -27,7 +27,7 @@ impl Conjugate {
     pub fn of(part: &Part, units: &Units) -> Option<Conjugate> {
         let plane = &part.plane;
         let Sd::Unknown(axis) = plane.sd else { return None };
-        if axis.uniform || plane.history_sd.is_some() {
+        if axis.uniform || plane.history_sd.is_some() || plane.is_marked() {
             return None;
         }
         let (prior_mean, prior_readings) = match plane.level {

@@ -1,4 +1,4 @@
-//! The trapezoid rule over up to four coordinates, each on the whole line: lines are swept outward from
+//! The trapezoid rule over a few coordinates, each on the whole line: lines are swept outward from
 //! the highest point until the weight is negligible, and the grid is made finer until two agree
 //! (Takahasi & Mori 1974; Trefethen & Weideman 2014). The order of evaluation is fixed.
 
@@ -6,7 +6,7 @@ use crate::math::{fm, roots};
 use crate::quantity::Absent;
 
 /// How many coordinates a grid can have.
-pub(super) const MOST: usize = 4;
+pub(super) const MOST: usize = 6;
 pub(super) type Place = [f64; MOST];
 
 /// Nodes of one grid before it is an error.

@@ -90,6 +90,7 @@ pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate) -> Result<Panel
                 Coordinate::Between => node.tau,
                 Coordinate::HistorySd => node.history_sigma,
                 Coordinate::Sd => node.sigma,
+                Coordinate::LongRun | Coordinate::Level => f64::NAN,
             };
             if ln > best && spread > 0.0 {
                 best = ln;

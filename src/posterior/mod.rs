@@ -13,6 +13,9 @@ pub mod joint;
 pub mod law;
 mod legendre;
 mod marginal;
+mod marked;
+mod marked_periods;
+mod marks;
 mod moments;
 mod plane;
 mod predictive;
@@ -98,6 +101,9 @@ impl Posterior {
             return self.affine(when, 1.0, &|sigma| (shift(sigma), 0.0));
         }
         self.models(when)?;
+        if self.inner.is_marked() {
+            return self.level_marked(when, shift);
+        }
         let moves_with_sd = shift(1.0) != shift(2.0);
         if moves_with_sd && let Some(reason) = &self.inner.no_sd {
             return Err(reason.clone());
@@ -145,6 +151,13 @@ impl Posterior {
         if uses_sd {
             bound = bound.min(self.inner.bounds.sd);
         }
+        if self.inner.is_marked() {
+            let what = if uses_sd { "a reading" } else { self.name(when) };
+            return marked::law(&self.inner, when == When::This, bound, what, &|part, node| {
+                let (shift, added) = shift_and_variance(self.inner.units.sd_out(node.sigma));
+                self.inner.given(part, node, when, (factor, shift, added))
+            });
+        }
         let law = |pieces: &[Piece]| {
             let parts = pieces.iter().map(|piece| {
                 let (mean, var) = piece.level(when);
@@ -184,6 +197,9 @@ impl Posterior {
         match self.basis {
             Basis::PriorOnly => Ok(1.0),
             Basis::ReadingsOnly => Ok(0.0),
+            Basis::Both if self.inner.parts.iter().any(|p| !p.0.plane.marks.is_empty()) => {
+                Err(Absent::because("with marked readings the prior has no one weight"))
+            }
             Basis::Both => {
                 Ok(self.pieces.iter().zip(&self.inner.prior_shares).map(|(p, b)| p.weight * b).sum())
             }
@@ -202,6 +218,14 @@ impl Posterior {
             return Err(Absent::because("the readings have no weight"));
         }
         Ok(n * share / (1.0 - share))
+    }
+
+    /// The true level with marked readings and a bias.
+    fn level_marked(&self, when: When, shift: &dyn Fn(f64) -> f64) -> Result<Law, Absent> {
+        let bound = self.bound(when);
+        marked::law(&self.inner, when == When::This, bound, self.name(when), &|part, node| {
+            self.inner.true_given(part, node, when, shift(self.inner.units.sd_out(node.sigma)))
+        })
     }
 
     /// Whether a level of that kind is part of the model.

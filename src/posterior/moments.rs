@@ -7,6 +7,7 @@
 
 use super::between::Tau;
 use super::plane::{BetweenSd, Level, Plane, Sd};
+use super::marks::Mark;
 use super::told::Told;
 use crate::quantity::{Absent, Figure};
 
@@ -58,12 +59,22 @@ impl Tail {
             Told::Own(readings) => Some(Tail { with_sd: true, own_powers: readings.len() as f64 - 1.0 }),
         }
     }
+
+    /// Readings with both bounds count as readings; open ones do not hold a tail.
+    pub fn of_marked(told: &Told, marks: &[Mark]) -> Option<Tail> {
+        let bounded = marks.iter().filter(|m| m.is_bounded()).count() as f64;
+        match Tail::of(told) {
+            Some(tail) => Some(Tail { own_powers: tail.own_powers + bounded, ..tail }),
+            None if bounded > 0.0 => Some(Tail { with_sd: true, own_powers: bounded - 1.0 }),
+            None => None,
+        }
+    }
 }
 
 /// The bounds of a plane; `history` are its earlier periods, in any order.
 pub(super) fn bounds(plane: &Plane, history: &[Tail]) -> Bounds {
     let mut bounds = Bounds::ALL;
-    let this = Tail::of(&plane.readings);
+    let this = Tail::of_marked(&plane.readings, &plane.marks);
     let apart = plane.history_sd.is_some();
     let of_history = plane.history_sd.unwrap_or(plane.sd);
     // Exponent a of the density of σ alone: σ^-a dσ.
@@ -76,7 +87,8 @@ pub(super) fn bounds(plane: &Plane, history: &[Tail]) -> Bounds {
     let own_this = own(&mut this.into_iter());
     let base_this = exponent(&plane.sd).map(|a| a + own_this + if apart { 0.0 } else { own_history });
     let base_history = exponent(&of_history).map(|a| a + own_history + if apart { 0.0 } else { own_this });
-    let about_periods = matches!(plane.level, Level::AboutMean { .. } | Level::Walk(_));
+    let about_periods =
+        matches!(plane.level, Level::AboutMean { .. } | Level::AboutMeanMarked(_) | Level::Walk(_));
     let shares_sd = about_periods && !apart;
     let pinned = history.iter().any(|t| !t.with_sd);
     let updated = this.is_some();

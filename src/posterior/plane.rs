@@ -4,6 +4,8 @@
 use super::about_mean::AboutMean;
 use super::axis::{SdAxis, TauAxis};
 use super::grid::{MOST, Place, Weighted};
+use super::marked_periods::MarkedPeriods;
+use super::marks::{self, Mark};
 use super::told::Told;
 use super::walk::Walk;
 use crate::math::fm;
@@ -48,6 +50,8 @@ pub(super) enum Level {
         periods: AboutMean,
         share: f64,
     },
+    /// The same where periods hold marked readings: μ is a coordinate, for its density is not normal.
+    AboutMeanMarked(MarkedPeriods),
     Walk(Walk),
 }
 
@@ -78,6 +82,8 @@ pub(super) struct Plane {
     pub level: Level,
     pub moved: Option<Move>,
     pub readings: Told,
+    /// Readings known by their bounds: with any, the level is a coordinate.
+    pub marks: Vec<Mark>,
 }
 
 /// One node: its weight and the level's piece N(mean, var) there.
@@ -95,11 +101,29 @@ pub(super) struct Node {
     /// The level's prior before this period's readings; var is infinite where flat.
     pub prior_mean: f64,
     pub prior_var: f64,
+    /// The long-run mean before this period's readings.
+    pub long_prior_mean: f64,
+    pub long_prior_var: f64,
+    /// With marked readings: where the node lies, so that its line can be followed between the nodes.
+    pub place: Place,
+    /// The coordinate of the level is (θ − centre)/scale, where it is one; likewise that of μ.
+    pub level_line: (f64, f64),
+    pub long_line: (f64, f64),
+    /// μ itself where it is a coordinate, before any move of the prior.
+    mu: f64,
+    /// Given θ the long-run mean is `long_mean` = constant + link · θ.
+    pub link: f64,
 }
 
 impl Weighted for Node {
     fn ln_weight(&self) -> f64 {
         self.ln_weight
+    }
+}
+
+impl Node {
+    pub fn mu(&self) -> f64 {
+        self.mu
     }
 }
 
@@ -109,6 +133,8 @@ pub(super) enum Coordinate {
     HistorySd,
     Between,
     Sd,
+    LongRun,
+    Level,
 }
 
 impl Plane {
@@ -126,7 +152,18 @@ impl Plane {
         if self.history_sd.is_some() && matches!(self.sd, Sd::Unknown(_)) {
             all.push(Coordinate::Sd);
         }
+        if matches!(self.level, Level::AboutMeanMarked(_)) {
+            all.push(Coordinate::LongRun);
+        }
+        if !self.marks.is_empty() {
+            all.push(Coordinate::Level);
+        }
         all
+    }
+
+    /// Whether a line of the plane is kept as a density rather than as normal pieces.
+    pub fn is_marked(&self) -> bool {
+        !self.marks.is_empty() || matches!(self.level, Level::AboutMeanMarked(_))
     }
 
     /// A place to begin the search for the highest weight.
@@ -135,7 +172,7 @@ impl Plane {
         for (d, coordinate) in self.coordinates().into_iter().enumerate() {
             place[d] = match coordinate {
                 Coordinate::Between => 1.0,
-                Coordinate::HistorySd | Coordinate::Sd => 0.0,
+                _ => 0.0,
             };
         }
         place
@@ -176,10 +213,20 @@ impl Plane {
             long_var: f64::NAN,
             prior_mean: f64::NAN,
             prior_var: f64::INFINITY,
+            long_prior_mean: f64::NAN,
+            long_prior_var: f64::NAN,
+            place: *place,
+            level_line: (f64::NAN, f64::NAN),
+            long_line: (f64::NAN, f64::NAN),
+            mu: f64::NAN,
+            link: 0.0,
         };
         if ln_weight > f64::NEG_INFINITY {
-            self.prior(&mut node);
+            self.prior(&mut node, &mut next);
             self.update(&mut node);
+            if !self.marks.is_empty() {
+                self.mark(&mut node, next);
+            }
             if node.ln_weight.is_nan() && (sigma == 0.0 || history_sigma == 0.0) {
                 node.ln_weight = f64::NEG_INFINITY;
             }
@@ -188,7 +235,7 @@ impl Plane {
     }
 
     /// The level before this period's readings.
-    fn prior(&self, node: &mut Node) {
+    fn prior(&self, node: &mut Node, next: &mut usize) {
         let (sigma2, history2, tau2) =
             (node.sigma * node.sigma, node.history_sigma * node.history_sigma, node.tau * node.tau);
         match &self.level {
@@ -219,6 +266,18 @@ impl Plane {
                 node.mean = long.mean;
                 node.var = node.long_var + tau2;
             }
+            Level::AboutMeanMarked(periods) => {
+                let (centre, scale) = periods.frame(history2, tau2);
+                let mu = centre + scale * node.place[*next];
+                *next += 1;
+                node.long_line = (centre, scale);
+                node.mu = mu;
+                node.ln_weight += fm::ln(scale) + periods.ln_likelihood(mu, history2, tau2);
+                node.long_mean = mu;
+                node.long_var = 0.0;
+                node.mean = mu;
+                node.var = tau2;
+            }
             Level::Walk(walk) => {
                 let last = walk.at(history2, tau2);
                 node.ln_weight += last.ln_weight;
@@ -237,6 +296,8 @@ impl Plane {
         }
         node.prior_mean = node.mean;
         node.prior_var = node.var;
+        node.long_prior_mean = node.long_mean;
+        node.long_prior_var = node.long_var;
     }
 
     /// Methods §1: the level, the long-run mean and the weight, updated by the readings.
@@ -259,8 +320,40 @@ impl Plane {
         } else {
             // The readings speak of the long-run mean with variance τ² + s².
             let long_total = node.long_var + (node.tau * node.tau + at.var);
-            node.long_mean += node.long_var / long_total * (at.mean - node.long_mean);
-            node.long_var *= (node.tau * node.tau + at.var) / long_total;
+            if node.long_var > 0.0 {
+                node.long_mean += node.long_var / long_total * (at.mean - node.long_mean);
+                node.long_var *= (node.tau * node.tau + at.var) / long_total;
+            }
+        }
+    }
+
+    /// The level's own coordinate, and what the marked readings say of it.
+    fn mark(&self, node: &mut Node, next: usize) {
+        let sigma2 = node.sigma * node.sigma;
+        let tau2 = node.tau * node.tau;
+        let (centre, scale) = marks::frame(node.mean, node.var, &self.marks, sigma2);
+        let theta = centre + scale * node.place[next];
+        node.ln_weight += fm::ln(scale);
+        if node.var < f64::INFINITY {
+            let error = theta - node.mean;
+            node.ln_weight -= 0.5 * (fm::ln(node.var) + error * error / node.var) + fm::HALF_LN_TWO_PI;
+        }
+        for mark in &self.marks {
+            node.ln_weight += mark.ln_chance(theta, sigma2);
+        }
+        node.level_line = (centre, scale);
+        node.mean = theta;
+        node.var = 0.0;
+        if self.is_walk() {
+            node.long_mean = theta;
+            node.long_var = 0.0;
+            node.link = 1.0;
+        } else if !node.long_mean.is_nan() {
+            // Before the readings: μ ~ N(M, V) and θ | μ ~ N(μ, τ²); given θ the readings say no more of μ.
+            let (m, v) = (node.long_prior_mean, node.long_prior_var);
+            node.link = if v > 0.0 { v / (v + tau2) } else { 0.0 };
+            node.long_mean = m + node.link * (theta - m);
+            node.long_var = if v > 0.0 { tau2 * node.link } else { 0.0 };
         }
     }
 

@@ -3,7 +3,7 @@
 
 use super::build::build;
 use super::law::Law;
-use super::told::told;
+use super::told::{is_marked, told};
 use super::weighing::weigh;
 use super::{Basis, Posterior, mixture};
 use crate::math::fm;
@@ -17,7 +17,15 @@ impl Posterior {
         if matches!(self.model.level, LevelPrior::Flat) {
             return Err(Absent::because("a flat prior foretells nothing"));
         }
+        if is_marked(&self.readings) {
+            return Err(Absent::because("marked readings have no arithmetic mean"));
+        }
         let built = build(&self.model, &self.readings, Basis::Both)?;
+        if built.parts.iter().any(|p| p.plane.is_marked()) {
+            return Err(Absent::because(
+                "what the prior foretells of a mean is not served with marked readings in earlier periods",
+            ));
+        }
         let units = built.units;
         let known = match self.model.within {
             Within::Known(sd) => Some(units.sd_in(sd)),

@@ -210,6 +210,11 @@ fn no_sd(built: &Built) -> Option<Absent> {
 }
 
 impl Inner {
+    /// Whether some part is kept as densities along lines.
+    pub fn is_marked(&self) -> bool {
+        self.parts.iter().any(|p| p.0.plane.is_marked())
+    }
+
     pub fn weighted(&self) -> Vec<Weighted<'_>> {
         self.parts.iter().map(|(part, weighed, share)| Weighted { part, weighed, share: *share }).collect()
     }

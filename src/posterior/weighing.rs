@@ -38,6 +38,9 @@ impl Gauge {
                 top = *node;
             }
         }
+        let soft = softness(&top);
+        top.var += soft;
+        top.long_var += soft;
         let far = 7.0 * top.var.sqrt();
         Gauge {
             level: (top.mean - far, top.mean + far),
@@ -54,15 +57,16 @@ impl Gauge {
         for node in nodes {
             let w = fm::exp(node.ln_weight - top);
             whole += w;
-            let sd = node.var.sqrt();
+            let soft = softness(node);
+            let sd = (node.var + soft).sqrt();
             sums[0] += w * normal::cdf((self.level.0 - node.mean) / sd);
             sums[1] += w * normal::sf((self.level.1 - node.mean) / sd);
             if self.next.is_finite() {
-                let sd = (node.long_var + node.tau * node.tau).sqrt();
+                let sd = (node.long_var + node.tau * node.tau + soft).sqrt();
                 sums[2] += w * normal::sf((self.next - node.long_mean) / sd);
             }
             if self.reading.is_finite() {
-                let sd = (node.var + node.sigma * node.sigma).sqrt();
+                let sd = (node.var + node.sigma * node.sigma + soft).sqrt();
                 sums[3] += w * normal::sf((self.reading - node.mean) / sd);
             }
             sums[4] += w * normal::cdf((0.6 * self.level.0 + 0.4 * self.level.1 - node.mean) / sd);
@@ -73,6 +77,11 @@ impl Gauge {
         }
         (top + fm::ln(whole) + ln_volume, sums)
     }
+}
+
+/// Added to variances where levels are points on a line, so that the sums compared are smooth.
+fn softness(node: &Node) -> f64 {
+    [node.level_line.1, node.long_line.1].into_iter().filter(|s| s.is_finite()).map(|s| s * s).sum()
 }
 
 fn difference(a: &(f64, [f64; 6]), b: &(f64, [f64; 6])) -> f64 {
