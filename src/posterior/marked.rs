@@ -6,14 +6,15 @@
 use super::When;
 use super::build::{BiasOf, Part};
 use super::grid::{self, MOST, Place};
-use super::law::{Continuous, Law};
+use super::law::Law;
+use super::shapes::OnPanels;
 use super::legendre::Panels;
 use super::moments::moment;
 use super::plane::{Coordinate, Level, Node};
 use super::solve::Inner;
 use super::weighing::FLOOR;
 use crate::math::{fm, normal};
-use crate::quantity::{Absent, Figure};
+use crate::quantity::Absent;
 use std::collections::BTreeMap;
 use std::sync::Arc;
 
@@ -334,27 +335,3 @@ fn inner_given(part: &Part, node: &Node, when: When) -> (f64, f64, f64) {
     }
 }
 
-#[derive(Debug)]
-struct OnPanels(Panels);
-
-impl Continuous for OnPanels {
-    fn cdf(&self, t: f64) -> f64 {
-        self.0.cdf(t)
-    }
-
-    fn sf(&self, t: f64) -> f64 {
-        self.0.sf(t)
-    }
-
-    fn density(&self, t: f64) -> f64 {
-        self.0.density(t)
-    }
-
-    fn quantile(&self, p: f64) -> Figure {
-        self.0.quantile(p)
-    }
-
-    fn upper_quantile(&self, q: f64) -> Figure {
-        self.0.upper_quantile(q)
-    }
-}

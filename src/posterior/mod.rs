@@ -19,6 +19,7 @@ mod marks;
 mod moments;
 mod plane;
 mod predictive;
+mod ranking;
 mod refined;
 mod shapes;
 mod solve;
@@ -26,6 +27,8 @@ mod told;
 mod units;
 mod walk;
 mod weighing;
+#[cfg(test)]
+mod laws;
 #[cfg(test)]
 mod published;
 

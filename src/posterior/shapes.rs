@@ -1,7 +1,7 @@
 //! The shapes a law can have: a mixture of normals, and a spread kept on panels of its logarithm.
 
 use super::grid::failed;
-use super::law::Continuous;
+use super::law::{Continuous, Law};
 use super::legendre::Panels;
 use crate::math::fm;
 use crate::math::mixture::NormalMixture;
@@ -74,4 +74,46 @@ impl Continuous for Spread {
     fn lowest(&self) -> f64 {
         0.0
     }
+}
+
+/// A law kept as its density on panels.
+#[derive(Debug)]
+pub(super) struct OnPanels(pub Panels);
+
+impl Continuous for OnPanels {
+    fn cdf(&self, t: f64) -> f64 {
+        self.0.cdf(t)
+    }
+
+    fn sf(&self, t: f64) -> f64 {
+        self.0.sf(t)
+    }
+
+    fn density(&self, t: f64) -> f64 {
+        self.0.density(t)
+    }
+
+    fn quantile(&self, p: f64) -> Figure {
+        self.0.quantile(p)
+    }
+
+    fn upper_quantile(&self, q: f64) -> Figure {
+        self.0.upper_quantile(q)
+    }
+}
+
+/// The density of a law on panels, from its 1e-16 quantile to its upper one.
+pub(super) fn panels_of(law: &Law) -> Result<Panels, Absent> {
+    let mut edges = Vec::new();
+    for k in (1..=16).rev() {
+        edges.push(law.quantile(fm::pow(10.0, -f64::from(k)))?);
+    }
+    for p in [0.25, 0.5, 0.75] {
+        edges.push(law.quantile(p)?);
+    }
+    for k in 1..=16 {
+        edges.push(law.upper_quantile(fm::pow(10.0, -f64::from(k)))?);
+    }
+    edges.dedup();
+    Panels::new(&|t| law.density(t), &edges)
 }
