@@ -144,7 +144,11 @@ impl Movable {
             let (readings_mean, mean_var) =
                 mean_given(&posterior.readings, piece.reading_sd).ok_or_else(not_so)?;
             let with_bias = linear.true_level && posterior.model.bias_sd > 0.0;
-            let known = linear.shift.is_finite() && linear.variance.is_finite() && mean_var > 0.0;
+            // A level held on nodes, as with marked readings in the history, has no prior share of its own.
+            let known = linear.shift.is_finite()
+                && linear.variance.is_finite()
+                && mean_var > 0.0
+                && piece.level_var > 0.0;
             if linear.when != When::This || with_bias || !known {
                 return Err(not_so());
             }

@@ -61,6 +61,9 @@ impl Outlook {
             let Some((mean, var)) = steps::moments(piece, When::Next) else {
                 return Err(Absent::because("nothing is known of the next period's level"));
             };
+            if var == 0.0 {
+                return Err(Absent::because("with marked readings no plan is computed"));
+            }
             let linear = match question {
                 None => None,
                 Some(question) => match question.linear(subject, piece.reading_sd) {
