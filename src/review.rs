@@ -408,6 +408,7 @@ fn sensitivity_of(
         readings: &worked.readings,
         prior_only: worked.prior.as_ref(),
     };
+    let asked: Vec<_> = asked.iter().filter(|(_, question)| question.in_sensitivity()).copied().collect();
     sensitivity::alternatives(&base, &prepared.alternatives)
         .into_iter()
         .map(|alternative| {

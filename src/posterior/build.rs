@@ -175,10 +175,10 @@ impl Builder<'_> {
                 if periods.is_some() {
                     history_sd = Some(Sd::Fixed(self.units.sd_in(*known)));
                 }
-                if this == Told::Nothing {
+                if this == Told::Nothing && now.marks.is_empty() {
                     Sd::Undefined
                 } else {
-                    self.improper(this_sums, this.has_own(), &this, &[])?
+                    self.improper(this_sums, this.has_own(), now.excludes_no_scatter(), &this, &[])?
                 }
             }
             (Within::Readings, _) => {
@@ -187,8 +187,7 @@ impl Builder<'_> {
                 {
                     let own = history.iter().any(Told::has_own);
                     let scatter = all_history.iter().any(marks::Period::excludes_no_scatter);
-                    history_sd =
-                        Some(self.improper(history_sums, own, scatter, &Told::Nothing, &history)?);
+                    history_sd = Some(self.improper(history_sums, own, scatter, &Told::Nothing, &history)?);
                 }
                 if this == Told::Nothing && now.marks.is_empty() {
                     Sd::Undefined
@@ -319,7 +318,8 @@ impl Builder<'_> {
                     | Level::Walk(_)
                     | Level::PerReading { periods: true, .. }
             );
-        let plane = Plane { history_sd, sd, between, level, moved: move_later, readings: this, marks: now.marks };
+        let plane =
+            Plane { history_sd, sd, between, level, moved: move_later, readings: this, marks: now.marks };
         let bounds = moments::bounds(&plane, &tails);
         let named = periods.map_or(&[][..], |p| &p.periods);
         let history = named.iter().map(|(name, _)| name.clone()).zip(history).collect();

@@ -192,7 +192,9 @@ impl Posterior {
 }
 
 fn not_served() -> Absent {
-    Absent::because("this change is not served with marked readings in the periods compared or in the history")
+    Absent::because(
+        "this change is not served with marked readings in the periods compared or in the history",
+    )
 }
 
 /// With the level on a line: the long-run mean less `link` · θ, and θ's own slope against it.

@@ -131,11 +131,7 @@ fn convolved(a: &Law, b: &Law) -> Result<Law, Absent> {
     let width = |law: &Law| -> Result<f64, Absent> { Ok(law.quantile(0.75)? - law.quantile(0.25)?) };
     let (over_b, left, right) = (width(a)? >= width(b)?, panels_of(a)?, panels_of(b)?);
     let density = |t: f64| {
-        if over_b {
-            right.expect(&|y| left.density(t + y))
-        } else {
-            left.expect(&|x| right.density(x - t))
-        }
+        if over_b { right.expect(&|y| left.density(t + y)) } else { left.expect(&|x| right.density(x - t)) }
     };
     let mut edges = Vec::new();
     for k in (1..=14).rev() {
@@ -238,7 +234,12 @@ pub(super) fn pull(readings: &Told, node: &Node) -> (f64, f64, f64) {
 }
 
 /// The nodes of what is shared, with every member's level given it.
-pub(super) fn shared(members: &[Member<'_>], basis: Basis, sd: bool, bias: bool) -> Result<Vec<Given>, Absent> {
+pub(super) fn shared(
+    members: &[Member<'_>],
+    basis: Basis,
+    sd: bool,
+    bias: bool,
+) -> Result<Vec<Given>, Absent> {
     refuse_marked(members)?;
     let bias_sd = members.iter().map(|m| m.model.bias_sd).fold(0.0, f64::max);
     let unit_of: Vec<Units> = members.iter().map(|m| units(m.model, m.readings)).collect();
@@ -395,7 +396,6 @@ fn less(evidence: &Evidence, b: f64) -> Evidence {
         ),
     }
 }
-
 
 /// What is shared is followed over normal pieces.
 pub(super) fn refuse_marked(members: &[Member<'_>]) -> Result<(), Absent> {

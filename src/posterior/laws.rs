@@ -3,6 +3,7 @@
 use super::published::{about_mean, model, near};
 use super::*;
 use crate::data::evidence::{Seen, Single};
+use crate::math::fm;
 use crate::prior::{Between, LevelPrior, Pattern, Periods, Within};
 use crate::quantity::Period;
 use proptest::prelude::*;
@@ -272,7 +273,10 @@ fn what_cannot_be_known_is_said() {
     // Three periods: quantiles stand, the sd does not exist; five and more: it does.
     let prior = |n| {
         let level = LevelPrior::Periods(history(Between::Uniform, n));
-        solve(&model(known(), level), &Evidence::Nothing, Basis::PriorOnly).unwrap().level(When::This).unwrap()
+        solve(&model(known(), level), &Evidence::Nothing, Basis::PriorOnly)
+            .unwrap()
+            .level(When::This)
+            .unwrap()
     };
     assert!(prior(3).sd().is_err() && prior(3).mean().is_err() && prior(3).quantile(0.9).is_ok());
     assert!(prior(4).sd().is_err() && prior(4).mean().is_ok());

@@ -7,10 +7,10 @@ use super::When;
 use super::build::{BiasOf, Part};
 use super::grid::{self, MOST, Place};
 use super::law::Law;
-use super::shapes::OnPanels;
 use super::legendre::Panels;
 use super::moments::moment;
 use super::plane::{Coordinate, Level, Node};
+use super::shapes::OnPanels;
 use super::solve::Inner;
 use super::weighing::FLOOR;
 use crate::math::{fm, normal};
@@ -58,9 +58,7 @@ impl Line<'_> {
         let Given { constant, slope, var } = self.given;
         let sd = var.sqrt();
         if sd >= 1.3 * slope.abs() * self.step || slope == 0.0 {
-            let density = |(y, share): &(f64, f64)| {
-                share * normal::pdf((t - constant - slope * y) / sd) / sd
-            };
+            let density = |(y, share): &(f64, f64)| share * normal::pdf((t - constant - slope * y) / sd) / sd;
             return self.nodes.iter().map(density).sum();
         }
         let centre = (t - constant) / slope;
@@ -283,7 +281,9 @@ impl Inner {
         let (constant, slope, var) = match part.bias {
             BiasOf::Measured => (c, s, v + u2),
             BiasOf::TrueLevel { mean, var } => pulled(mean, var),
-            BiasOf::TrueLevelPerReading { mean, readings } => pulled(mean, node.sigma * node.sigma / readings),
+            BiasOf::TrueLevelPerReading { mean, readings } => {
+                pulled(mean, node.sigma * node.sigma / readings)
+            }
             BiasOf::TrueLongRun { mean, var } => {
                 // Given φ = μ + (level about it) + b, each share of φ − M goes to each by its variance.
                 let whole = var + u2 + tau2;
@@ -334,4 +334,3 @@ fn inner_given(part: &Part, node: &Node, when: When) -> (f64, f64, f64) {
         }
     }
 }
-

@@ -64,7 +64,8 @@ impl Period {
         let highest_lower = self.marks.iter().map(|m| m.lower).fold(f64::NEG_INFINITY, f64::max);
         let lowest_upper = self.marks.iter().map(|m| m.upper).fold(f64::INFINITY, f64::min);
         let place = self.told().at(1.0).map(|at| at.mean);
-        highest_lower.max(place.unwrap_or(f64::NEG_INFINITY)) > lowest_upper.min(place.unwrap_or(f64::INFINITY))
+        highest_lower.max(place.unwrap_or(f64::NEG_INFINITY))
+            > lowest_upper.min(place.unwrap_or(f64::INFINITY))
     }
 }
 

@@ -6,8 +6,8 @@
 //! exists iff k is below the bound of every direction in which the quantity itself grows.
 
 use super::between::Tau;
-use super::plane::{BetweenSd, Level, Plane, Sd};
 use super::marks::Mark;
+use super::plane::{BetweenSd, Level, Plane, Sd};
 use super::told::Told;
 use crate::quantity::{Absent, Figure};
 

@@ -160,9 +160,7 @@ pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
         measured = again;
         factor = finer;
     }
-    Err(Absent::failed(
-        "the quadrature over the within and between sd did not reach its promised accuracy",
-    ))
+    Err(Absent::failed("the quadrature over the within and between sd did not reach its promised accuracy"))
 }
 
 /// The same integrals by Gauss–Legendre panels over the box that holds the mass; an error where they
@@ -187,9 +185,9 @@ fn confirm(
     };
     let ends = |d: usize, near: Option<(f64, f64)>| {
         let close = |n: &&Node| near.is_none_or(|(u, step)| (n.place[0] - u).abs() <= step);
-        heavy().filter(close).fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), n| {
-            (lo.min(n.place[d]), hi.max(n.place[d]))
-        })
+        heavy()
+            .filter(close)
+            .fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), n| (lo.min(n.place[d]), hi.max(n.place[d])))
     };
     let mut found: Vec<Node> = Vec::new();
     let mut along_last = |place: &mut Place, ln_outer: f64, (lo, hi): (f64, f64)| {

@@ -29,8 +29,11 @@ pub struct SourceKind {
     pub page: &'static str,
     /// Its keys of `[prior]` beside `from`.
     pub keys: &'static [Key],
-    pub read: fn(&Table, Scale, &Plan, &mut Faults) -> Option<Box<dyn Source>>,
+    pub read: ReadSource,
 }
+
+/// Reads the keys of a source; what is wrong with them is noted.
+pub type ReadSource = fn(&Table, Scale, &Plan, &mut Faults) -> Option<Box<dyn Source>>;
 
 /// All sources of a prior, in the order of the reference page.
 pub const ALL: &[SourceKind] =

@@ -77,7 +77,9 @@ fn lead(findings: &Findings) -> String {
         .map(|series| series.name.as_str())
         .collect();
     let what = match findings.series.as_slice() {
-        [only] if super::series::title(only) == *name => format!("This is the review of {name} for {period}."),
+        [only] if super::series::title(only) == *name => {
+            format!("This is the review of {name} for {period}.")
+        }
         [only] => format!("This is the review of {name}, {}, for {period}.", super::series::title(only)),
         all => {
             format!("This is the review of {name} for {period}, {} series.", text::count(all.len() as u64))
