@@ -28,7 +28,7 @@ mod units;
 mod walk;
 mod weighing;
 #[cfg(test)]
-mod laws;
+mod laws_tests;
 #[cfg(test)]
 mod published;
 

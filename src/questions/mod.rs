@@ -188,7 +188,7 @@ fn unknown_kind(asked: &QuestionPlan) -> Fault {
         .expected(one_of(&names));
     match nearest(&asked.ask, names.iter().copied()) {
         Some(meant) => fault.repair(format!("write ask = \"{meant}\"")),
-        None => fault.repair("choose the kind that fits; `reassay explain questions` tells them apart"),
+        None => fault.repair("choose the kind that fits; the README's table tells them apart"),
     }
 }
 
