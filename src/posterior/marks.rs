@@ -28,7 +28,9 @@ impl Mark {
         } else if self.upper == f64::INFINITY {
             normal::ln_sf(low)
         } else {
-            let (width, middle) = (high - low, 0.5 * (low + high));
+            // From the bounds themselves: the difference of the two scores would keep few digits of it.
+            let width = (self.upper - self.lower) / sd;
+            let middle = (0.5 * (self.lower + self.upper) - theta) / sd;
             if width * (1.0 + middle.abs()) < NARROW {
                 // Φ(b) − Φ(a) about the middle: differences would cancel.
                 let (w2, m2) = (width * width, middle * middle);

@@ -178,6 +178,11 @@ impl Posterior {
         }
     }
 
+    /// Whether levels are held as densities along lines (marked readings, here or in earlier periods).
+    pub fn is_marked(&self) -> bool {
+        self.inner.is_marked()
+    }
+
     /// The mean of the next `mean_of` readings; `uncertainty` is each one's own, where σ is none.
     pub fn reading(&self, when: When, mean_of: u64, uncertainty: Option<f64>) -> Result<Law, Absent> {
         let own = uncertainty.unwrap_or(0.0);

@@ -115,6 +115,11 @@ impl Posterior {
     ///
     /// An error where two grids do not agree to 2e−11 after ten halvings (relative to E|g|).
     pub fn expect_with_kink(&self, kink: f64, g: &dyn Fn(&Piece) -> f64) -> Figure {
+        if self.is_marked() {
+            return Err(Absent::because(
+                "a share between or outside two limits is not served with marked readings",
+            ));
+        }
         let mut before: Option<f64> = None;
         let mut factor = 1.0;
         for _ in 0..ROUNDS {

@@ -127,8 +127,42 @@ fn one_sided(beyond: Beyond) -> Option<(f64, f64)> {
     }
 }
 
+/// The same with marked readings, where the level is held as a density: by the law of θ ± z σ itself.
+fn marked_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upper: bool) -> Figure {
+    let failed = RefCell::new(None);
+    let excess = |z: f64| -> f64 {
+        match posterior.affine(When::This, 1.0, &|sigma| (sign * z * sigma, 0.0)) {
+            Ok(law) => {
+                let (above, below) = (law.sf(limit), law.cdf(limit));
+                let (more, less) = if sign > 0.0 { (above, below) } else { (below, above) };
+                if upper { more - tail } else { tail - less }
+            }
+            Err(absent) => {
+                failed.borrow_mut().get_or_insert(absent);
+                f64::NAN
+            }
+        }
+    };
+    // Shares below 1e-18, or as near to 1, are not told apart here.
+    const REACH: f64 = 9.0;
+    let (first, last) = (excess(-REACH), excess(REACH));
+    let found = match (first > 0.0, last < 0.0) {
+        (true, _) => Ok(-REACH),
+        (_, true) => Ok(REACH),
+        _ => roots::solve(&excess, -REACH, REACH, roots::Tolerance::new(1e-13, 1e-13)),
+    };
+    if let Some(absent) = failed.into_inner() {
+        return Err(absent);
+    }
+    let z = found.map_err(|error| Absent::failed(error.to_string()))?;
+    Ok(Share { z }.value())
+}
+
 /// The bound from pieces alone: first on those at hand, then on pieces fine enough for that share.
 fn one_sided_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upper: bool) -> Figure {
+    if posterior.is_marked() {
+        return marked_bound(posterior, (limit, sign), tail, upper);
+    }
     let root_on = |pieces: &[Piece]| -> Figure {
         let excess = |z: f64| {
             let chance = |more: bool| -> f64 {
