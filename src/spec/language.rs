@@ -109,7 +109,7 @@ const WHERE: Takes = Takes::Other("a table of columns and cells, such as { site 
 const FILES: Takes = Takes::Other("a file's path in quotes, or a list of them");
 const COVERAGE: Takes = Takes::Other("a number above 0, or a column's name in quotes");
 
-/// Keys that [[readings]] and [[summaries]] share.
+/// Keys that `[[readings]]` and `[[summaries]]` share.
 pub const SOURCE: &[Key] = &[
     Key::optional("file", FILES, "path of a .csv or .tsv file, or a list of them"),
     Key::optional(
@@ -136,7 +136,7 @@ pub const SOURCE: &[Key] = &[
     Key::later("database_env", Takes::Text, "the variable that holds a database's connection"),
 ];
 
-/// Keys of [[readings]] alone.
+/// Keys of `[[readings]]` alone.
 pub const READINGS: &[Key] = &[
     Key::optional("value", Takes::Text, "the column of the reading"),
     Key::optional(
@@ -164,7 +164,7 @@ pub const MARKS: &[Key] = &[
     ),
 ];
 
-/// Keys of [[summaries]] alone: the columns of a file.
+/// Keys of `[[summaries]]` alone: the columns of a file.
 pub const SUMMARIES: &[Key] = &[
     Key::optional("rows", Takes::Tables, "summaries in the spec"),
     Key::optional("n", Takes::Text, "the column of the number of readings"),
@@ -302,7 +302,7 @@ pub const REPORT: &[Key] = &[
     ),
 ];
 
-/// What a [prior] may hold beside the keys of its source.
+/// What a `[prior]` may hold beside the keys of its source.
 pub const OTHERWISE: Key =
     Key::optional("otherwise", Takes::Table, "the prior of a series whose history is too short");
 

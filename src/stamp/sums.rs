@@ -9,7 +9,7 @@ pub fn write<'a>(files: impl Iterator<Item = (&'a str, String)>) -> String {
     lines.iter().map(|(path, sha256)| format!("{sha256}  {path}\n")).collect()
 }
 
-/// The paths and hashes of the file, or what is wrong with it. Only what [`write`] gives is read: a
+/// The paths and hashes of the file, or what is wrong with it. Only what [`write()`] gives is read: a
 /// changed line end, order or letter case is a change of the file.
 pub fn read(bytes: &[u8]) -> Result<Vec<(String, String)>, String> {
     let text = std::str::from_utf8(bytes)
