@@ -2,6 +2,7 @@
 
 mod faults;
 mod command_line;
+mod cases;
 mod tidiness;
 mod reference;
 #[path = "published/checks.rs"]
