@@ -118,7 +118,7 @@ fn fault(error: &Error, own: Option<(&str, &str)>) -> Faults {
         Some((name, text)) => fault
             .at(place(error, name, text))
             .expected("a template in the language of the built-in one")
-            .repair("mend the template; `reassay explain template` lists what it can print"),
+            .repair("mend the template; the built-in sections in templates/ show what it can print"),
         None => {
             let name = error.name().unwrap_or(REVIEW);
             let text = SECTIONS.iter().chain(TEMPLATES).find(|(known, _)| *known == name);
