@@ -11,11 +11,12 @@ use crate::prior::ground::Ground;
 use crate::prior::spread::spread_of_means;
 use crate::prior::within::{self, WithinRead};
 use crate::prior::{self, Built, LevelPrior, Model, Refusal, Source};
-use crate::quantity::{Absent, natural_order};
+use crate::quantity::{Absent, Scale, natural_order};
 use crate::questions::figures::{Figures, Item};
 use crate::questions::{self, Question, Subject, acceptance, rule};
 use crate::sensitivity::{self, Base, OwnAlternative};
 use crate::source;
+use crate::spec::reader::not_served;
 use std::collections::{BTreeMap, BTreeSet};
 use std::path::Path;
 
@@ -50,13 +51,21 @@ pub fn run(spec: &Path, shown: &str, jobs: usize) -> Outcome<Findings> {
 
 /// Spec and plan, with every table read; computes nothing.
 pub fn prepare(spec: &Path, shown: &str) -> Outcome<Prepared> {
-    prepare_by(spec, shown, &|path| source::whole(path, &path.to_string_lossy(), "the spec"))
+    prepare_by(spec, shown, &|path| source::whole(path, &path.to_string_lossy(), "the spec"), &|_| ())
 }
 
-/// [`prepare`], where `read` gives the bytes of the spec and of its base: an audit takes them from the
-/// review's folder.
-pub fn prepare_by(spec: &Path, shown: &str, read: &ReadBytes<'_>) -> Outcome<Prepared> {
-    let plan = plan::load(spec, shown, read)?;
+/// [`prepare`], where `read` gives the bytes of the spec and of its base, and `lead` leads the files that the
+/// plan names to their places: an audit takes all of them from the review's folder.
+pub fn prepare_by(
+    spec: &Path,
+    shown: &str,
+    read: &ReadBytes<'_>,
+    lead: &dyn Fn(&mut Plan),
+) -> Outcome<Prepared> {
+    let mut plan = plan::load(spec, shown, read)?;
+    lead(&mut plan);
+    // The overrides belong to the series' settings, so they are read before these.
+    data::read_overrides(&mut plan)?;
     let mut faults = Faults::default();
     let questions = questions::read_all(&plan, &mut faults);
     let scale = plan.quantity.scale;
@@ -87,11 +96,47 @@ pub fn prepare_by(spec: &Path, shown: &str, read: &ReadBytes<'_>) -> Outcome<Pre
             within: alternative.within.as_ref().and_then(|table| within::read(table, scale, &mut faults)),
         })
         .collect();
+    refuse_what_is_not_served(&plan, general.iter().chain(own.values()), &mut faults);
     match general {
         Some(general) if faults.is_empty() => {
             Ok(Prepared { plan, questions, general, own, otherwise, alternatives })
         }
         _ => Err(faults),
+    }
+}
+
+/// What the language has and this version would leave out of the computation: refused, never ignored.
+fn refuse_what_is_not_served<'a>(
+    plan: &Plan,
+    settings: impl Iterator<Item = &'a Settings>,
+    faults: &mut Faults,
+) {
+    for alternative in &plan.alternatives {
+        if alternative.scale.is_some_and(|scale| scale != plan.quantity.scale) {
+            faults.push(not_served(
+                &format!("another scale in the alternative \"{}\"", alternative.id),
+                &alternative.span,
+            ));
+        }
+    }
+    let Some(step) = plan.quantity.step else { return };
+    // Rounding to a step of at most half the within sd changes nothing that is printed.
+    let coarse = |settings: &Settings| match (settings.within.stated_sd(), plan.quantity.scale) {
+        (Ok(sd), Scale::Linear) => step.get() > 0.5 * sd,
+        _ => true,
+    };
+    if settings.filter(|settings| coarse(settings)).count() > 0 {
+        faults.push(
+            Fault::wrong(
+                "not-served-yet",
+                format!(
+                    "readings rounded to a step ({}) above half the within sd, or beside one that is not stated, are not served yet by this version",
+                    step.get()
+                ),
+            )
+            .expected("a step of at most half a stated within sd")
+            .repair("leave `step` out of [quantity] if the readings shall count as printed"),
+        );
     }
 }
 

@@ -19,8 +19,7 @@ pub fn prepare(again: &Again, shown: &str) -> Outcome<Prepared> {
     let read = |path: &Path| -> Result<Vec<u8>, Fault> {
         source::whole(&again.places.real(path), &path.to_string_lossy(), "reading the spec")
     };
-    let mut prepared = review::prepare_by(&again.spec, shown, &read)?;
-    again.places.redirect(&mut prepared.plan);
+    let mut prepared = review::prepare_by(&again.spec, shown, &read, &|plan| again.places.redirect(plan))?;
     name_as_kept(&mut prepared.plan);
     Ok(prepared)
 }

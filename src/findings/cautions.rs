@@ -24,6 +24,12 @@ pub fn of(findings: &Findings) -> Vec<Caution> {
             "No allowance for a bias common to all readings was given: the intervals cover random variation only.",
         ));
     }
+    if plan.review.previous.is_some() {
+        all.push(Caution::new(
+            "previous-not-compared",
+            "The previous review is named, but this version neither compares with it nor scores its predictions.",
+        ));
+    }
     for series in &findings.series {
         all.extend(of_series(findings, series));
     }

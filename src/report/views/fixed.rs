@@ -36,6 +36,7 @@ pub const CODES: &[(&str, &str)] = &[
         "No uncertainty common to all readings was given; intervals cover random variation only.",
     ),
     ("no-readings", "The period under review has no readings."),
+    ("previous-not-compared", "The previous review is named, but not compared with and not scored."),
     ("plug-in", "An estimated between sd is used as if it were known."),
     ("prior-alone-decides", "The prior alone would give the verdict."),
     ("prior-nearly-decides", "The prior alone nearly meets what the rule asks."),
