@@ -3,6 +3,7 @@
 mod faults;
 mod command_line;
 mod cases;
+mod checks_of_demos;
 mod tidiness;
 mod reference;
 #[path = "published/checks.rs"]

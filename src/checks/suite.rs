@@ -2,7 +2,8 @@
 //! model and the posterior. The checks themselves know only plain numbers.
 
 use super::homogeneity::PeriodMean;
-use super::prior_conflict::{self, NormalPiece};
+use super::prior_conflict;
+use super::tails::Tails;
 use super::timed::Timed;
 use super::{
     Check, bartlett, brown_forsythe, coverage, duplicates, homogeneity, last_digits, normality, outliers,
@@ -116,20 +117,12 @@ fn of_prior(subject: &Subject<'_>, plain: &[f64]) -> Vec<Check> {
     let mut checks = Vec::new();
     let Ok(prior) = subject.prior_only else { return checks };
     let n = subject.readings.n().unwrap_or(1) as usize;
-    let (mean, error) = match (subject.readings, &subject.model.within) {
-        (Evidence::Sums { n, mean, .. }, Within::Known(sd)) => (Some(*mean), sd * sd / *n as f64),
-        (Evidence::Mean { mean, uncertainty }, Within::Known(_) | Within::None) => {
-            (Some(*mean), uncertainty * uncertainty)
-        }
-        _ => (None, 0.0),
-    };
-    if let Some(mean) = mean
-        && !prior.pieces.is_empty()
-    {
-        checks.push(prior_conflict::check(mean, n, &predictive_mean(prior, error)));
+    if let (Ok(mean), Ok((lower, upper))) = (prior.observed_mean(), prior.predictive_mean_tails()) {
+        let expected = prior.affine(When::This, 1.0, &|_| (0.0, 0.0)).and_then(|law| law.median()).ok();
+        checks.push(prior_conflict::from_tails(mean, n, Tails { lower, upper }, expected));
     }
     if !plain.is_empty()
-        && let Ok(ends) = prior.reading(When::This, 1, None).and_then(|law| law.central(0.99))
+        && let Ok(ends) = prior.reading(When::This, 1, None).and_then(|law| law.central(0.95))
     {
         checks.push(prior_predictive::check(plain, ends));
     }
@@ -203,7 +196,7 @@ fn of_periods(subject: &Subject<'_>) -> Vec<Check> {
             checks.push(brown_forsythe::check(&groups));
         } else {
             let groups: Vec<(usize, f64)> =
-                sums.iter().map(|(n, _, ss)| (*n as usize, ss / (*n as f64 - 1.0))).collect();
+                sums.iter().map(|(n, _, ss)| (*n as usize, (ss / (*n as f64 - 1.0)).sqrt())).collect();
             checks.push(bartlett::check(&groups));
         }
     }
@@ -247,7 +240,8 @@ fn of_print(subject: &Subject<'_>) -> Vec<Check> {
     if rows.is_empty() {
         return checks;
     }
-    let texts: Vec<&str> = rows.iter().map(|row| row.text.as_str()).collect();
+    let printed: Vec<String> = rows.iter().map(|row| with_point(&row.text)).collect();
+    let texts: Vec<&str> = printed.iter().map(String::as_str).collect();
     if subject.model.scale == Scale::Linear
         && let Some(sd) = reading_sd(subject)
     {
@@ -268,6 +262,12 @@ fn of_print(subject: &Subject<'_>) -> Vec<Check> {
         .collect();
     checks.push(duplicates::check(&seen).check);
     checks
+}
+
+/// The printed number with a decimal point, whatever its file has: a used cell was read as a number, so
+/// a comma in it is the decimal one.
+fn with_point(text: &str) -> String {
+    text.replace(',', ".")
 }
 
 /// The within sd that readings are held against: the known one, else the posterior's median.
@@ -317,17 +317,4 @@ fn of_season(subject: &Subject<'_>) -> Option<Check> {
     });
     let own = quarters(subject.period);
     (own.iter().sum::<usize>() > 0 && earlier.iter().sum::<usize>() > 0).then(|| season::check(own, earlier))
-}
-
-/// The law of the period's mean before its readings: each piece widened by the mean's own variance.
-fn predictive_mean(prior: &Posterior, error: f64) -> Vec<NormalPiece> {
-    prior
-        .pieces
-        .iter()
-        .map(|piece| NormalPiece {
-            weight: piece.weight,
-            mean: piece.level_mean,
-            sd: (piece.level_var + error).sqrt(),
-        })
-        .collect()
 }

@@ -62,7 +62,7 @@ impl Posterior {
     }
 
     /// x̄, weighted where readings bring uncertainties of their own and σ is known.
-    fn observed_mean(&self) -> Result<f64, Absent> {
+    pub fn observed_mean(&self) -> Result<f64, Absent> {
         let built = build(&self.model, &self.readings, Basis::Both)?;
         let place = built.parts.first().and_then(|part| part.plane.readings.at(1.0));
         match (place, built.parts.first().map(|p| p.plane.readings.has_own())) {

@@ -20,10 +20,18 @@ pub struct Given {
 /// A chance this near to a rule's threshold is said to be near, and is printed with four decimals.
 pub const NEAR: f64 = 0.0005;
 
+/// How the reason of a verdict that was held back begins.
+const HELD_BACK: &str = "held back";
+
 impl Given {
     /// No verdict, for that reason.
     pub fn none(why: impl Into<String>) -> Given {
         Given { say: None, fail: false, why: Some(why.into()) }
+    }
+
+    /// Whether a flagged check holds back a verdict that the rule would have given.
+    pub fn is_held_back(&self) -> bool {
+        self.say.is_some() && self.why.as_ref().is_some_and(|why| why.starts_with(HELD_BACK))
     }
 
     fn of(verdict: &Verdict, why: Option<String>) -> Given {
@@ -123,7 +131,7 @@ pub fn decide(rule: &Rule, figures: &Figures, plan: &Plan, series: &str, flagged
             let why = if index + 1 == rule.verdicts.len() {
                 format!("{flagged}; the rule would give this verdict without it too")
             } else {
-                format!("held back: {flagged}; without it the verdict would be \"{}\"", verdict.say)
+                format!("{HELD_BACK}: {flagged}; without it the verdict would be \"{}\"", verdict.say)
             };
             Given::of(last, Some(why))
         }

@@ -10,6 +10,7 @@ use crate::data::Facts;
 use crate::findings::{Answer, Findings, SeriesFindings};
 use crate::plan::{AppliesTo, Plan, QuestionPlan};
 use crate::questions::figures::Meaning;
+use crate::questions::rule::Given;
 use crate::report::text;
 use minijinja::Value;
 use serde::Serialize;
@@ -135,6 +136,26 @@ fn single(findings: &Findings, series: &SeriesFindings) -> TableView {
     table
 }
 
+/// What a question asks about, in words that hold for all series: where they differ (limits of a series' own),
+/// those of the first and a word on the others.
+fn words_over_series(findings: &Findings, question: &QuestionPlan) -> Option<String> {
+    let mut own = findings
+        .series
+        .iter()
+        .filter_map(|series| series.answers.iter().find(|answer| answer.id == question.id))
+        .map(|answer| answer.words.as_str());
+    let Some(first) = own.next() else {
+        return findings
+            .across
+            .iter()
+            .find(|across| across.id == question.id)
+            .map(|across| across.words.clone());
+    };
+    let others =
+        if own.any(|words| words != first) { "; for the other series as on their pages" } else { "" };
+    Some(format!("{first}{others}"))
+}
+
 /// The answer in words, or why there is none.
 fn said(answer: &Answer, numbers: &Numbers<'_>) -> String {
     let line = numbers.long_line(&answer.figures, rule_of(numbers.plan, &answer.id));
@@ -155,17 +176,14 @@ fn questions_over_series(findings: &Findings) -> Option<TableView> {
     );
     for question in &plan.questions {
         let across = findings.across.iter().find(|across| across.id == question.id);
-        let words = findings.series.iter().find_map(|series| {
-            series.answers.iter().find(|answer| answer.id == question.id).map(|answer| answer.words.as_str())
-        });
-        let words = words.or(across.map(|across| across.words.as_str())).unwrap_or(&question.ask);
+        let words = words_over_series(findings, question).unwrap_or_else(|| question.ask.clone());
         let short = match across {
             Some(_) => "see “Answers across series”".to_string(),
             None if question.rule.is_some() => verdicts_in_short(findings, question),
             None => range_in_short(findings, question),
         };
         table.row(vec![
-            plain(question_words(question.say.as_deref(), words)),
+            plain(question_words(question.say.as_deref(), &words)),
             plain(&question.id),
             plain(short),
             plain(
@@ -335,7 +353,8 @@ fn verdict_and_figure(answer: &Answer, question: &QuestionPlan, numbers: &Number
     let rule = question.rule.as_ref();
     let verdict = verdict_cell(answer.verdict.as_ref(), rule);
     let line = numbers.line(&answer.figures, rule);
-    Value::from_safe_string(format!("{verdict} ({})", crate::report::escape::markdown(&line)))
+    let held = if answer.verdict.as_ref().is_some_and(Given::is_held_back) { ", held back" } else { "" };
+    Value::from_safe_string(format!("{verdict}{held} ({})", crate::report::escape::markdown(&line)))
 }
 
 fn first_page_series(findings: &Findings) -> (Option<TableView>, Option<String>) {
@@ -527,12 +546,7 @@ pub fn questions(findings: &Findings) -> Option<TableView> {
         ],
     );
     for question in &plan.questions {
-        let answer = findings
-            .series
-            .iter()
-            .find_map(|series| series.answers.iter().find(|answer| answer.id == question.id));
-        let across = findings.across.iter().find(|across| across.id == question.id);
-        let words = answer.map(|answer| answer.words.as_str()).or(across.map(|across| across.words.as_str()));
+        let words = words_over_series(findings, question).unwrap_or_else(|| question.ask.clone());
         let rule = question.rule.as_ref();
         let mut rule_text = rule.map_or_else(|| NOTHING.to_string(), |rule| rule_words(rule, plan, None));
         if let Some(rule) = rule.filter(|rule| !rule.hold_on.is_empty()) {
@@ -544,7 +558,7 @@ pub fn questions(findings: &Findings) -> Option<TableView> {
         table.row(vec![
             plain(&question.id),
             plain(question.say.as_deref().unwrap_or(NOTHING)),
-            plain(with_minus(words.unwrap_or(&question.ask))),
+            plain(with_minus(&words)),
             plain(rule_text),
             plain(rule.map_or_else(|| NOTHING.to_string(), agreed)),
             plain(question.only.as_ref().map_or_else(|| "all series".to_string(), |only| only.join(", "))),

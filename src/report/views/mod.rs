@@ -13,6 +13,7 @@ pub mod series;
 pub mod table;
 
 use super::{StampText, escape, text};
+use crate::checks::FLAG_BELOW;
 use crate::findings::Findings;
 use crate::plan::{AppliesTo, Detail, Status};
 use crate::quantity::Scale;
@@ -29,9 +30,6 @@ use table::{Column, TableView, code, plain};
 const SPEC_LINES_PRINTED: usize = 400;
 /// From this many question-and-series pairs on, wrong flags by chance alone are to be expected.
 const MANY_EXAMINED: usize = 20;
-
-/// p below which a check raises a flag.
-const FLAG_BELOW: f64 = 0.01;
 
 /// The whole report.
 #[derive(Debug, Serialize)]
