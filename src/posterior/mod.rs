@@ -178,6 +178,11 @@ impl Posterior {
         }
     }
 
+    /// Refused where nothing is known of how readings scatter about their level.
+    pub fn knows_within_sd(&self) -> Result<(), Absent> {
+        self.inner.no_sd.clone().map_or(Ok(()), Err)
+    }
+
     /// Whether levels are held as densities along lines (marked readings, here or in earlier periods).
     pub fn is_marked(&self) -> bool {
         self.inner.is_marked()

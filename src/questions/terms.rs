@@ -341,6 +341,6 @@ pub fn needs_within_sd(posterior: &Posterior) -> Result<(), Absent> {
         Within::None => Err(Absent::because(
             "there is no within sd (every reading brings its own uncertainty), so readings have no common law",
         )),
-        _ => Ok(()),
+        _ => posterior.knows_within_sd(),
     }
 }
