@@ -104,7 +104,8 @@ pub fn difference(
             };
             let (a, b) = (unbiased(a)?, unbiased(b)?);
             let bound = a.inner.bounds.level.min(b.inner.bounds.level);
-            if a.pieces.len() * b.pieces.len() > 20_000 || a.inner.is_marked() || b.inner.is_marked() {
+            // Pairs of pieces keep the far tails, which a density kept on panels does not.
+            if a.pieces.len() * b.pieces.len() > PAIRS_CAP || a.inner.is_marked() || b.inner.is_marked() {
                 return convolved(&a.level(When::This)?, &b.level(When::This)?);
             }
             let parts = |p: &super::Posterior| -> Parts {
@@ -160,10 +161,13 @@ fn convolved(a: &Law, b: &Law) -> Result<Law, Absent> {
     Ok(Law::new(Arc::new(OnPanels(panels)), mean, sd))
 }
 
+/// As many pairs of pieces as a difference is computed from.
+const PAIRS_CAP: usize = 3_000_000;
+
 /// All pairs of parts, independent; those too light to matter are left out.
 fn pairs(left: &Parts, right: &Parts, weight: f64) -> Result<Parts, Absent> {
-    const LIGHT: f64 = 1e-17;
-    const CAP: usize = 3_000_000;
+    // All that are left out stay together below 1e−21, the promise of far tails.
+    const LIGHT: f64 = 1e-28;
     let mut right: Vec<(f64, f64, f64)> = right.clone();
     right.sort_by(|a, b| b.0.total_cmp(&a.0));
     let mut all = Vec::new();
@@ -174,7 +178,7 @@ fn pairs(left: &Parts, right: &Parts, weight: f64) -> Result<Parts, Absent> {
             }
             all.push((weight * w * x, m - n, v + u));
         }
-        if all.len() > CAP {
+        if all.len() > PAIRS_CAP {
             return Err(Absent::failed("the difference of two levels needs more pieces than allowed"));
         }
     }
