@@ -7,5 +7,4 @@ mod cases;
 mod checks_of_demos;
 mod tidiness;
 mod reference;
-#[path = "published/checks.rs"]
-mod published_checks;
+mod published;

@@ -19,7 +19,8 @@ const HALVINGS: u32 = 9;
 /// All pieces with one σ.
 struct Group {
     sigma: f64,
-    /// (weight / sd, mean, 1 / sd)
+    /// (weight / sd, mean − centre, 1 / sd): from the centre, because a level narrow against its distance from 0 has
+    /// few digits left for its distance from the mean.
     normals: Vec<(f64, f64, f64)>,
     /// Levels held as nodes: (weight, level).
     points: Vec<(f64, f64)>,
@@ -44,7 +45,7 @@ impl Group {
                 continue;
             }
             let sd = var.sqrt();
-            normals.push((weight / sd, *mean, 1.0 / sd));
+            normals.push((weight / sd, mean - centre, 1.0 / sd));
             spread += weight / whole * (mean - centre) * (mean - centre);
             if *weight > 1e-4 * whole {
                 narrowest = narrowest.min(sd);
@@ -70,10 +71,11 @@ impl Group {
         for index in first..=last {
             let u = (index as f64 + offset) * step;
             let stretched = fm::sinh(u);
-            let level = self.centre + self.scale * stretched;
+            let away = self.scale * stretched;
+            let level = self.centre + away;
             let mut density = 0.0;
             for (height, mean, inverse) in &self.normals {
-                let z = (level - mean) * inverse;
+                let z = (away - mean) * inverse;
                 if z.abs() < REACH {
                     density += height * fm::exp(-0.5 * z * z);
                 }

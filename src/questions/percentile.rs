@@ -65,10 +65,11 @@ fn read(asked: &QuestionPlan, plan: &Plan, faults: &mut Faults) -> Option<Box<dy
     Some(Box::new(Percentile { percentile, z: z_of_percent(percentile)?, probability, interval, beyond }))
 }
 
-/// `percentile`, in per cent; a share such as 0.95 is refused.
+/// `percentile`, in per cent; a share such as 0.95 is refused. 0.1 is not: it is the fractile of a design value
+/// (EN 1990:2002, D7.3), and the answer's words name it.
 pub fn read_percentile(reader: &mut Reader<'_>) -> Option<f64> {
     let percentile = reader.positive("percentile")?;
-    let shares = [0.05, 0.1, 0.25, 0.75];
+    let shares = [0.05, 0.25];
     if percentile >= 100.0 {
         let fault =
             Fault::wrong("out-of-range", format!("`percentile` is {percentile}, and it is in per cent"))
