@@ -110,6 +110,18 @@ pub enum Beyond {
     Outside(f64, f64),
 }
 
+impl Beyond {
+    /// The same limits measured from `origin`.
+    pub fn from_origin(self, origin: f64) -> Beyond {
+        match self {
+            Beyond::Above(limit) => Beyond::Above(limit - origin),
+            Beyond::Below(limit) => Beyond::Below(limit - origin),
+            Beyond::Between(lower, upper) => Beyond::Between(lower - origin, upper - origin),
+            Beyond::Outside(lower, upper) => Beyond::Outside(lower - origin, upper - origin),
+        }
+    }
+}
+
 /// Orders names as a person would: digits by value ("B-2" before "B-10"), then as text.
 pub fn natural_order(a: &str, b: &str) -> std::cmp::Ordering {
     let (mut left, mut right) = (a.chars().peekable(), b.chars().peekable());

@@ -185,7 +185,7 @@ fn of_periods(subject: &Subject<'_>) -> Vec<Check> {
     let sums: Vec<(u64, f64, f64)> = all
         .iter()
         .filter_map(|period| match period.evidence {
-            Evidence::Sums { n, mean, ss: Some(ss) } if n > 1 => Some((n, mean, ss)),
+            Evidence::Sums { n, mean, ss: Some(ss), .. } if n > 1 => Some((n, mean, ss)),
             _ => None,
         })
         .collect();

@@ -7,8 +7,9 @@ pub enum Evidence {
     /// No usable reading.
     Nothing,
     /// Plain readings (or replicate averages, or a summary by n, mean and sd): their number, mean and
-    /// sum of squared deviations from that mean. `ss` is `None` where a summary gave no sd.
-    Sums { n: u64, mean: f64, ss: Option<f64> },
+    /// sum of squared deviations from that mean. `ss` is `None` where a summary gave no sd. `rest` is what the
+    /// exact mean has beyond `mean`: beside 200 kg a spread of 1 mg leaves few digits to a double.
+    Sums { n: u64, mean: f64, ss: Option<f64>, rest: f64 },
     /// A mean with its whole standard uncertainty.
     Mean { mean: f64, uncertainty: f64 },
     /// Single readings: marked, rounded, or with uncertainties of their own.

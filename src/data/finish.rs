@@ -101,7 +101,12 @@ fn evidence(view: &View<'_>, scale: Scale) -> Evidence {
     if moments.n() == 0 {
         return Evidence::Nothing;
     }
-    Evidence::Sums { n: moments.n(), mean: moments.mean(), ss: Some(moments.centred_ss()) }
+    Evidence::Sums {
+        n: moments.n(),
+        mean: moments.mean(),
+        ss: Some(moments.centred_ss()),
+        rest: moments.mean_rest(),
+    }
 }
 
 fn single(datum: &Datum) -> Single {

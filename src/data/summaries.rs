@@ -108,9 +108,9 @@ impl Figures {
                     .repair("say how many readings the mean is of, or how uncertain it is"));
             }
             (None, Some(_), Some(sd)) if sd < 0.0 => return Err(wrong("an sd below 0")),
-            (None, Some(1), _) => Evidence::Sums { n: 1, mean: centre, ss: Some(0.0) },
+            (None, Some(1), _) => Evidence::Sums { n: 1, mean: centre, ss: Some(0.0), rest: 0.0 },
             (None, Some(n), sd) => {
-                Evidence::Sums { n, mean: centre, ss: sd.map(|sd| sd * sd * (n - 1) as f64) }
+                Evidence::Sums { n, mean: centre, ss: sd.map(|sd| sd * sd * (n - 1) as f64), rest: 0.0 }
             }
         };
         Ok(Summary { evidence, mean: self.mean, sd: self.sd, n, place })

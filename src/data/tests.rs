@@ -74,7 +74,7 @@ fn placed(csv: &str, more: &str) -> (&'static str, u64, u64) {
 fn sums(data: &Data, series: &str, period: &str) -> (u64, f64, f64) {
     let series = data.series.iter().find(|known| known.name == series).unwrap();
     match series.period(&Period::new(period)).unwrap().evidence {
-        Evidence::Sums { n, mean, ss: Some(ss) } => (n, mean, ss),
+        Evidence::Sums { n, mean, ss: Some(ss), .. } => (n, mean, ss),
         ref other => panic!("{other:?}"),
     }
 }
@@ -264,7 +264,7 @@ fn exclusions_take_exactly_their_rows_and_can_be_restored() {
     let data = read_csv(ROWS.as_bytes(), &exclude).unwrap();
     assert_eq!(sums(&data, "W", "2025"), (1, 2.0, 0.0));
     let period = &data.series[1].periods[1];
-    assert_eq!(period.restored, Some(Evidence::Sums { n: 2, mean: 3.0, ss: Some(2.0) }));
+    assert_eq!(period.restored, Some(Evidence::Sums { n: 2, mean: 3.0, ss: Some(2.0), rest: 0.0 }));
     assert_eq!(data.excluded_rows[0][0].text, "4.0");
     assert_eq!(data.series[1].periods[0].restored, None);
 
@@ -366,8 +366,8 @@ fn summaries_come_onto_the_models_scale() {
     let values = "[[readings]]\nvalues = [1.0]\n";
     let data = read(&folder.plan(&format!("{values}{rows}"))).unwrap();
     let evidence: Vec<&Evidence> = data.series[0].periods.iter().map(|period| &period.evidence).collect();
-    assert_eq!(*evidence[0], Evidence::Sums { n: 1, mean: 4.1, ss: Some(0.0) });
-    assert_eq!(*evidence[1], Evidence::Sums { n: 5, mean: 4.0, ss: Some(1.0) });
+    assert_eq!(*evidence[0], Evidence::Sums { n: 1, mean: 4.1, ss: Some(0.0), rest: 0.0 });
+    assert_eq!(*evidence[1], Evidence::Sums { n: 5, mean: 4.0, ss: Some(1.0), rest: 0.0 });
     assert_eq!(*evidence[2], Evidence::Mean { mean: 4.2, uncertainty: 0.1 });
     assert!(data.series[0].periods[1].facts.from_summary);
 
@@ -383,7 +383,7 @@ fn summaries_from_a_file_are_screened() {
     folder.write("s.csv", b"site,year,n,mean,sd\nW,2023,5,4.0,0.5\nW,2024,3,4.5,\n");
     let data = read(&folder.plan(source)).unwrap();
     assert_eq!(sums(&data, "W", "2023"), (5, 4.0, 1.0));
-    assert_eq!(data.series[0].periods[1].evidence, Evidence::Sums { n: 3, mean: 4.5, ss: None });
+    assert_eq!(data.series[0].periods[1].evidence, Evidence::Sums { n: 3, mean: 4.5, ss: None, rest: 0.0 });
     folder.write(
         "s.csv",
         b"site,year,n,mean,sd\nW,2023,5,4.0,0.5\nW,2023,2.5,4.0,0.5\nW,2024,5,x,1\nW,2023,5,4,1\n",

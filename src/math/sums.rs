@@ -354,6 +354,18 @@ impl Moments {
         Scaled { fraction: total.fraction / self.n as f64, exponent: total.exponent }.value()
     }
 
+    /// What the exact mean has beyond [`mean`](Self::mean), within 1 unit in its own last place; 0 where there is
+    /// no finite mean.
+    pub fn mean_rest(&self) -> f64 {
+        let mean = self.mean();
+        if !mean.is_finite() {
+            return 0.0;
+        }
+        let mut left = self.sum.clone();
+        left.add_product(-mean, self.n as f64);
+        left.value() / self.n as f64
+    }
+
     /// Σ(x − mean)², never negative, within 1 unit in the last place; 0 for one reading, NaN without readings.
     pub fn centred_ss(&self) -> f64 {
         self.centred().map_or(f64::NAN, Scaled::value)
@@ -504,6 +516,15 @@ mod tests {
             m.add(x);
         }
         assert_eq!(m.centred_ss(), 0.125);
+        assert_eq!(m.mean_rest(), 0.0);
+        // The exact mean is 10⁹ + 2⁻²³/3 · k: the double nearest to it, and what that leaves.
+        let mut m = Moments::new();
+        let step = fm::scale_by_power_of_two(1.0, -23);
+        for x in [1e9, 1e9 + step, 1e9 + 3.0 * step, 1e9 + step] {
+            m.add(x);
+        }
+        assert_eq!((m.mean() - 1e9) + m.mean_rest(), 1.25 * step);
+        assert_eq!(m.mean_rest().abs(), 0.25 * step);
         let mut one = Moments::new();
         one.add(0.1);
         assert_eq!(one.centred_ss(), 0.0);

@@ -526,7 +526,7 @@ fn level_place(level: &LevelPrior, places: &mut Vec<f64>, sizes: &mut Vec<f64>) 
 fn place_and_size(evidence: &Evidence, places: &mut Vec<f64>, sizes: &mut Vec<f64>) {
     match evidence {
         Evidence::Nothing => {}
-        Evidence::Sums { n, mean, ss } => {
+        Evidence::Sums { n, mean, ss, .. } => {
             if *n > 0 {
                 places.push(*mean);
             }

@@ -12,7 +12,7 @@ use crate::math::{chi_square, fm, student};
 use crate::quantity::Figure;
 use std::sync::Arc;
 
-/// θ | σ ~ N(mean, σ²/readings), σ² ~ df s²/χ²_df, in outer units.
+/// θ | σ ~ N(mean, σ²/readings), σ² ~ df s²/χ²_df, in outer units, from the posterior's origin.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Conjugate {
     pub mean: f64,
@@ -51,7 +51,7 @@ impl Conjugate {
             ss += prior_readings * n / all * (gap * gap);
         }
         Some(Conjugate {
-            mean: units.value_out(prior_mean + n / all * gap),
+            mean: units.sd_out(prior_mean + n / all * gap),
             readings: all,
             df,
             sd: units.sd_out((ss / df).sqrt()),

@@ -103,13 +103,13 @@ impl Group {
 }
 
 impl Posterior {
-    /// E g(θ, σ), θ as measured.
+    /// E g(θ − o, σ), θ as measured, o the posterior's origin.
     pub fn expect(&self, when: When, g: &dyn Fn(f64, f64) -> f64) -> Figure {
         let values = self.expect_each(when, 1, &|level, sigma, values| values[0] = g(level, sigma))?;
         Ok(values[0])
     }
 
-    /// The expectations of several functions of (θ, σ) at once; `g` writes their values into the slice.
+    /// The expectations of several functions of (θ − o, σ) at once; `g` writes their values into the slice.
     ///
     /// Two steps agree to 1e−11, relative (below 1e−23, absolute), for each of them; else an error.
     pub fn expect_each(

@@ -27,7 +27,7 @@ pub struct Member<'a> {
     pub readings: &'a Evidence,
 }
 
-/// Normal parts (weight, mean, variance) of a level.
+/// Normal parts (weight, mean, variance) of a level, all levels from one origin.
 pub(super) type Parts = Vec<(f64, f64, f64)>;
 
 /// Given what the series share: a weight, and every member's level.
@@ -109,9 +109,10 @@ pub fn difference(
                 return convolved(&a.level(When::This)?, &b.level(When::This)?);
             }
             let parts = |p: &super::Posterior| -> Parts {
-                p.pieces.iter().map(|k| (k.weight, k.level_mean, k.level_var)).collect()
+                p.pieces.iter().map(|k| (k.weight, k.level_apart, k.level_var)).collect()
             };
-            mixture(pairs(&parts(&a), &parts(&b), 1.0)?, bound, WHAT)
+            let law = mixture(pairs(&parts(&a), &parts(&b), 1.0)?, bound, WHAT)?;
+            Ok(law.moved(a.origin() - b.origin()))
         }
         Sharing::Parameters { sd, bias } => {
             let given = shared(&members, basis, sd, bias)?;
@@ -268,7 +269,7 @@ pub(super) fn shared(
         }
         let mut levels = Vec::with_capacity(members.len());
         for (member, units) in members.iter().zip(&unit_of) {
-            match given(member, basis, sigma, b, units) {
+            match given(member, basis, sigma, b, units, unit_of[0].shift) {
                 Ok((ln_likelihood, parts)) => {
                     ln_weight += ln_likelihood;
                     levels.push(parts);
@@ -323,13 +324,14 @@ fn shared_axis(members: &[Member<'_>], units: &Units) -> Result<Sd, Absent> {
     Ok(Sd::Unknown(super::axis::SdAxis::squares(sums)))
 }
 
-/// A member's level given σ and the bias b: ln of its marginal likelihood, and its parts.
+/// A member's level less `origin`, given σ and the bias b: ln of its marginal likelihood, and its parts.
 fn given(
     member: &Member<'_>,
     basis: Basis,
     sigma: Option<f64>,
     b: f64,
     units: &Units,
+    origin: f64,
 ) -> Result<(f64, Parts), Absent> {
     let mut model = member.model.clone();
     model.bias_sd = 0.0;
@@ -365,7 +367,11 @@ fn given(
         for node in &weighed.nodes {
             let weight = fm::exp(ln - whole + node.ln_weight - weighed.ln_integral + ln_volume(weighed));
             if weight > 1e-20 {
-                parts.push((weight, units.value_out(node.mean) - shift, units.square_out(node.var)));
+                parts.push((
+                    weight,
+                    (units.shift - origin) + units.sd_out(node.mean) - shift,
+                    units.square_out(node.var),
+                ));
             }
         }
     }
@@ -380,7 +386,9 @@ fn ln_volume(weighed: &Weighed) -> f64 {
 fn less(evidence: &Evidence, b: f64) -> Evidence {
     match evidence {
         Evidence::Nothing => Evidence::Nothing,
-        Evidence::Sums { n, mean, ss } => Evidence::Sums { n: *n, mean: mean - b, ss: *ss },
+        Evidence::Sums { n, mean, ss, rest } => {
+            Evidence::Sums { n: *n, mean: mean - b, ss: *ss, rest: *rest }
+        }
         Evidence::Mean { mean, uncertainty } => Evidence::Mean { mean: mean - b, uncertainty: *uncertainty },
         Evidence::Singles(singles) => Evidence::Singles(
             singles

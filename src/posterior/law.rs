@@ -28,41 +28,48 @@ pub trait Continuous: Debug + Send + Sync {
 /// The law of one number, with the moments that exist.
 #[derive(Debug, Clone)]
 pub struct Law {
+    /// Of X − origin: a narrow law far from 0 keeps its digits.
     shape: Arc<dyn Continuous>,
+    origin: f64,
     mean: Figure,
     sd: Figure,
 }
 
 impl Law {
     pub fn new(shape: Arc<dyn Continuous>, mean: Figure, sd: Figure) -> Law {
-        Law { shape, mean, sd }
+        Law { shape, origin: 0.0, mean, sd }
+    }
+
+    /// The law of X + `by`.
+    pub fn moved(self, by: f64) -> Law {
+        Law { origin: self.origin + by, mean: self.mean.map(|mean| mean + by), ..self }
     }
 
     /// P(X ≤ t).
     pub fn cdf(&self, t: f64) -> f64 {
-        self.shape.cdf(t)
+        self.shape.cdf(t - self.origin)
     }
 
     /// P(X > t), exact in its own tail.
     pub fn sf(&self, t: f64) -> f64 {
-        self.shape.sf(t)
+        self.shape.sf(t - self.origin)
     }
 
     pub fn density(&self, t: f64) -> f64 {
-        self.shape.density(t)
+        self.shape.density(t - self.origin)
     }
 
     pub fn quantile(&self, p: f64) -> Figure {
-        self.shape.quantile(p)
+        Ok(self.origin + self.shape.quantile(p)?)
     }
 
     /// The point with P(X > t) = q.
     pub fn upper_quantile(&self, q: f64) -> Figure {
-        self.shape.upper_quantile(q)
+        Ok(self.origin + self.shape.upper_quantile(q)?)
     }
 
     pub fn median(&self) -> Figure {
-        self.shape.quantile(0.5)
+        self.quantile(0.5)
     }
 
     /// The mean, where it exists (methods §4, table of moments).
@@ -83,7 +90,8 @@ impl Law {
     /// The shortest single interval of this probability. With `exponential`, X is a logarithm and the
     /// interval of e^X is the shortest; its ends are handed back as logarithms.
     pub fn shortest(&self, probability: f64, exponential: bool) -> Result<(f64, f64), Absent> {
-        self.shape.shortest(probability, exponential)
+        let (lower, upper) = self.shape.shortest(probability, exponential)?;
+        Ok((self.origin + lower, self.origin + upper))
     }
 }
 

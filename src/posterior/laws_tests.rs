@@ -9,7 +9,7 @@ use crate::quantity::Period;
 use proptest::prelude::*;
 
 fn sums(n: u64, mean: f64, ss: f64) -> Evidence {
-    Evidence::Sums { n, mean, ss: Some(ss) }
+    Evidence::Sums { n, mean, ss: Some(ss), rest: 0.0 }
 }
 
 /// A period's number of readings, mean and sum of squares.
@@ -53,8 +53,7 @@ proptest! {
         let at_once = Evidence::Sums {
             n: n + m,
             mean: (n as f64 * a + m as f64 * b) / (n + m) as f64,
-            ss: None,
-        };
+            ss: None, rest: 0.0 };
         let prior = LevelPrior::Stated { mean: 0.3, sd };
         let whole = solve(&model(Within::Known(1.3), prior.clone()), &at_once, Basis::Both).unwrap();
         let first = solve(&model(Within::Known(1.3), prior), &sums(n, a, 0.0), Basis::Both).unwrap();
@@ -141,7 +140,7 @@ proptest! {
         let pooled_level =
             solve(&model(pooled(), LevelPrior::Periods(history)), now, Basis::Both).unwrap();
         // All readings in one period.
-        let Evidence::Sums { n, mean, ss: Some(ss) } = now else { return Ok(()) };
+        let Evidence::Sums { n, mean, ss: Some(ss), .. } = now else { return Ok(()) };
         let all: Vec<(f64, f64, f64)> = periods
             .iter()
             .map(|(n, m, s)| (*n as f64, *m, *s))
@@ -195,7 +194,7 @@ proptest! {
 #[test]
 fn hard_histories_are_answered() {
     let plain = |n: u64, means: &[f64]| -> Vec<Evidence> {
-        means.iter().map(|m| Evidence::Sums { n, mean: *m, ss: None }).collect()
+        means.iter().map(|m| Evidence::Sums { n, mean: *m, ss: None, rest: 0.0 }).collect()
     };
     let many: Vec<f64> = (0..500).map(|j| fm::sin(f64::from(j) * 1.7)).collect();
     let cases: [(&str, Vec<Evidence>, f64); 8] = [
@@ -213,7 +212,9 @@ fn hard_histories_are_answered() {
         for between in [Between::Uniform, Between::HalfCauchy(1.0), Between::HalfNormal(2.0)] {
             let of = |unit: f64| {
                 let scaled = periods.iter().map(|e| match e {
-                    Evidence::Sums { n, mean, ss } => Evidence::Sums { n: *n, mean: mean * unit, ss: *ss },
+                    Evidence::Sums { n, mean, ss, rest } => {
+                        Evidence::Sums { n: *n, mean: mean * unit, ss: *ss, rest: rest * unit }
+                    }
                     other => other.clone(),
                 });
                 let between = match between {
@@ -222,7 +223,7 @@ fn hard_histories_are_answered() {
                     other => other,
                 };
                 let history = about_mean(between, scaled.collect());
-                let now = Evidence::Sums { n: 4, mean: 1.4 * unit, ss: None };
+                let now = Evidence::Sums { n: 4, mean: 1.4 * unit, ss: None, rest: 0.0 };
                 solve(&model(Within::Known(sd * unit), LevelPrior::Periods(history)), &now, Basis::Both)
                     .inspect_err(|e| assert!(e.failed, "{name}, {between:?}: {e}"))
                     .ok()

@@ -18,7 +18,7 @@ use crate::quantity::Absent;
 use std::collections::BTreeMap;
 use std::sync::Arc;
 
-/// X | y ~ N(constant + slope · y, var), in outer units of X; y in inner units.
+/// X | y ~ N(constant + slope · y, var), X in outer units from the posterior's origin; y in inner units.
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Given {
     pub constant: f64,
@@ -262,7 +262,7 @@ impl Inner {
         let (constant, slope, var) = inner_given(part, node, when);
         let units = &self.units;
         Given {
-            constant: factor * units.value_out(constant) + shift,
+            constant: factor * units.sd_out(constant) + shift,
             slope: factor * units.scale * slope,
             var: factor * factor * units.square_out(var) + added,
         }
@@ -301,7 +301,7 @@ impl Inner {
             }
         };
         Given {
-            constant: units.value_out(constant) + shift,
+            constant: units.sd_out(constant) + shift,
             slope: units.scale * slope,
             var: units.square_out(var),
         }

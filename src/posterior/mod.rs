@@ -62,6 +62,8 @@ pub enum When {
 pub struct Piece {
     pub weight: f64,
     pub level_mean: f64,
+    /// level_mean less the posterior's origin: all digits, where the level is narrow against its distance from 0.
+    pub level_apart: f64,
     pub level_var: f64,
     /// σ; NaN where nothing is known of it.
     pub reading_sd: f64,
@@ -72,6 +74,8 @@ pub struct Piece {
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub struct PeriodsPart {
     pub long_run_mean: f64,
+    /// long_run_mean less the posterior's origin.
+    pub long_run_apart: f64,
     pub long_run_var: f64,
     pub between_sd: f64,
     /// σ of the history: the piece's own, unless within is from this period's readings.
@@ -93,6 +97,11 @@ pub struct Posterior {
 }
 
 impl Posterior {
+    /// A place near the level, from which pieces and laws measure.
+    pub fn origin(&self) -> f64 {
+        self.inner.units.shift
+    }
+
     /// The true level (a stated bias taken out) of a period, or the long-run mean.
     pub fn level(&self, when: When) -> Result<Law, Absent> {
         self.level_shifted(when, &|_| 0.0)
@@ -121,14 +130,14 @@ impl Posterior {
                 };
                 (piece.weight, mean + if moves_with_sd { shift(piece.reading_sd) } else { shift(1.0) }, var)
             });
-            mixture(parts.collect(), bound, self.name(when))
+            mixture(parts.collect(), bound, self.name(when)).map(|law| law.moved(self.origin()))
         };
         let as_held = law(&self.pieces, &self.inner.true_levels)?;
         if moves_with_sd && self.has_unknown_sd() { self.settled(as_held, &law) } else { Ok(as_held) }
     }
 
-    /// The law of `factor`·θ + shift(σ) + N(0, variance(σ)), θ the level as measured in that period:
-    /// next readings, percentiles, shares and arithmetic means are all of this shape.
+    /// The law of o + `factor`·(θ − o) + shift(σ) + N(0, variance(σ)), θ the level as measured in that period and
+    /// o the posterior's origin: next readings, percentiles, shares and arithmetic means are all of this shape.
     pub fn affine(
         &self,
         when: When,
@@ -148,7 +157,7 @@ impl Posterior {
         {
             let bound = if uses_sd { self.bound(when).min(self.inner.bounds.sd) } else { self.bound(when) };
             let what = if uses_sd { "a reading" } else { self.name(when) };
-            return Ok(conjugate.affine(factor, shift, share, bound, what));
+            return Ok(conjugate.affine(factor, shift, share, bound, what).moved(self.origin()));
         }
         let mut bound = self.bound(when);
         if uses_sd {
@@ -159,7 +168,8 @@ impl Posterior {
             return marked::law(&self.inner, when == When::This, bound, what, &|part, node| {
                 let (shift, added) = shift_and_variance(self.inner.units.sd_out(node.sigma));
                 self.inner.given(part, node, when, (factor, shift, added))
-            });
+            })
+            .map(|law| law.moved(self.origin()));
         }
         let law = |pieces: &[Piece]| {
             let parts = pieces.iter().map(|piece| {
@@ -167,7 +177,8 @@ impl Posterior {
                 let (shift, added) = shift_and_variance(piece.reading_sd);
                 (piece.weight, factor * mean + shift, factor * factor * var + added)
             });
-            mixture(parts.collect(), bound, if uses_sd { "a reading" } else { self.name(when) })
+            let what = if uses_sd { "a reading" } else { self.name(when) };
+            mixture(parts.collect(), bound, what).map(|law| law.moved(self.origin()))
         };
         let as_held = law(&self.pieces)?;
         let moves_with_sd = shift_and_variance(1.0).0 != shift_and_variance(2.0).0;
@@ -239,6 +250,7 @@ impl Posterior {
         marked::law(&self.inner, when == When::This, bound, self.name(when), &|part, node| {
             self.inner.true_given(part, node, when, shift(self.inner.units.sd_out(node.sigma)))
         })
+        .map(|law| law.moved(self.origin()))
     }
 
     /// Whether a level of that kind is part of the model.
@@ -277,12 +289,12 @@ impl Posterior {
 }
 
 impl Piece {
-    /// The level of a period, or the long-run mean: mean and variance.
+    /// The level of a period, or the long-run mean, from the posterior's origin: mean and variance.
     fn level(&self, when: When) -> (f64, f64) {
         match (when, self.periods) {
-            (When::This, _) | (_, None) => (self.level_mean, self.level_var),
-            (When::Next, Some(p)) => (p.long_run_mean, p.long_run_var + p.between_sd * p.between_sd),
-            (When::LongRun, Some(p)) => (p.long_run_mean, p.long_run_var),
+            (When::This, _) | (_, None) => (self.level_apart, self.level_var),
+            (When::Next, Some(p)) => (p.long_run_apart, p.long_run_var + p.between_sd * p.between_sd),
+            (When::LongRun, Some(p)) => (p.long_run_apart, p.long_run_var),
         }
     }
 }

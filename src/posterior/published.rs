@@ -82,7 +82,8 @@ fn eight_schools() {
 #[test]
 fn a_normal_prior_and_a_known_sd() {
     let model = model(Within::Known(20.0), LevelPrior::Stated { mean: 180.0, sd: 40.0 });
-    let posterior = solve(&model, &Evidence::Sums { n: 10, mean: 150.0, ss: None }, Basis::Both).unwrap();
+    let posterior =
+        solve(&model, &Evidence::Sums { n: 10, mean: 150.0, ss: None, rest: 0.0 }, Basis::Both).unwrap();
     let level = posterior.level(When::This).unwrap();
     near(level.mean().unwrap(), 150.7317073170732, 1e-14);
     near(level.sd().unwrap(), 6.246950475544243, 1e-14);
@@ -97,8 +98,12 @@ fn a_normal_prior_and_a_known_sd() {
 #[test]
 fn a_prior_worth_readings() {
     let model = model(Within::Worth { sd: 4.0, df: 8.0 }, LevelPrior::Worth { mean: 30.0, readings: 2.0 });
-    let posterior =
-        solve(&model, &Evidence::Sums { n: 6, mean: 33.5, ss: Some(5.0 * 3.1 * 3.1) }, Basis::Both).unwrap();
+    let posterior = solve(
+        &model,
+        &Evidence::Sums { n: 6, mean: 33.5, ss: Some(5.0 * 3.1 * 3.1), rest: 0.0 },
+        Basis::Both,
+    )
+    .unwrap();
     near(posterior.level(When::This).unwrap().mean().unwrap(), 32.625, 1e-13);
     near(posterior.reading(When::This, 1, None).unwrap().quantile(0.05).unwrap(), 25.66315849944776, 1e-11);
 }
@@ -107,14 +112,14 @@ fn a_prior_worth_readings() {
 #[test]
 fn a_flat_prior_and_an_unknown_sd() {
     let model = model(Within::Readings, LevelPrior::Flat);
-    let readings = Evidence::Sums { n: 8, mean: 41.2, ss: Some(7.0 * 3.1 * 3.1) };
+    let readings = Evidence::Sums { n: 8, mean: 41.2, ss: Some(7.0 * 3.1 * 3.1), rest: 0.0 };
     let posterior = solve(&model, &readings, Basis::Both).unwrap();
     near(posterior.reading(When::This, 1, None).unwrap().sf(50.0), 0.01585299970027, 1e-11);
     near(posterior.level(When::This).unwrap().sf(50.0), 0.00004453041238618, 1e-11);
     // One or more of the next 4: 1 − E (chance of one inside)⁴.
     let any = posterior
-        .expect(When::This, &|theta, sigma| {
-            let inside = crate::math::normal::cdf((50.0 - theta) / sigma);
+        .expect(When::This, &|from_origin, sigma| {
+            let inside = crate::math::normal::cdf((50.0 - posterior.origin() - from_origin) / sigma);
             1.0 - inside * inside * inside * inside
         })
         .unwrap();
@@ -130,7 +135,8 @@ fn a_mixture_prior_and_data_in_conflict() {
         (0.2, LevelPrior::Stated { mean: 50.0, sd: 10.0 }),
     ];
     let model = model(Within::Known(1.2), LevelPrior::Mixture(parts));
-    let posterior = solve(&model, &Evidence::Sums { n: 1, mean: 56.0, ss: None }, Basis::Both).unwrap();
+    let posterior =
+        solve(&model, &Evidence::Sums { n: 1, mean: 56.0, ss: None, rest: 0.0 }, Basis::Both).unwrap();
     near(posterior.pieces[0].weight, 0.01889883500173906, 1e-12);
     let level = posterior.level(When::This).unwrap();
     near(level.mean().unwrap(), 55.84951571345135, 1e-13);
@@ -140,7 +146,7 @@ fn a_mixture_prior_and_data_in_conflict() {
 /// The pieces and the closed form are two roads to the same law.
 #[test]
 fn pieces_agree_with_the_closed_form() {
-    let readings = Evidence::Sums { n: 4, mean: 33.5, ss: Some(3.0 * 3.1 * 3.1) };
+    let readings = Evidence::Sums { n: 4, mean: 33.5, ss: Some(3.0 * 3.1 * 3.1), rest: 0.0 };
     for (within, level) in [
         (Within::Worth { sd: 4.0, df: 8.0 }, LevelPrior::Worth { mean: 30.0, readings: 2.0 }),
         (Within::Readings, LevelPrior::Flat),

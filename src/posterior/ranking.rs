@@ -35,15 +35,18 @@ pub fn ranking(
         Sharing::Peers => of_peers(members, highest)?,
         Sharing::Nothing => {
             let mut levels = Vec::with_capacity(members.len());
+            let mut origin = None;
             for member in members {
                 let mut model = member.model.clone();
                 model.bias_sd = 0.0;
                 let posterior = solve(&model, member.readings, basis)?;
+                let origin = *origin.get_or_insert(posterior.origin());
                 levels.push(match &posterior.pieces[..] {
                     [piece] if piece.level_var > 0.0 => {
-                        Level::Normal { mean: piece.level_mean, sd: piece.level_var.sqrt() }
+                        let mean = (posterior.origin() - origin) + piece.level_apart;
+                        Level::Normal { mean, sd: piece.level_var.sqrt() }
                     }
-                    _ => Level::of_law(&posterior.level(When::This)?)?,
+                    _ => Level::of_law(&posterior.level(When::This)?.moved(-origin))?,
                 });
             }
             given(&levels, highest)?

@@ -67,7 +67,7 @@ impl Posterior {
         }
         let law = |pieces: &[Piece], _: &[TrueLevel]| {
             let parts =
-                pieces.iter().map(|p| (p.weight, p.level_mean + z * p.reading_sd, p.level_var)).collect();
+                pieces.iter().map(|p| (p.weight, p.level_apart + z * p.reading_sd, p.level_var)).collect();
             super::mixture(parts, self.inner.bounds.level.min(self.inner.bounds.sd), "a percentile")
         };
         let first = law(&self.pieces, &self.inner.true_levels)?;

@@ -42,7 +42,7 @@ pub(super) struct Inner {
     pub finer: Mutex<Vec<Arc<Finer>>>,
 }
 
-/// (mean, variance) of the true levels and of the true long-run mean.
+/// (mean less the origin, variance) of the true levels and of the true long-run mean.
 #[derive(Debug, Clone, Copy)]
 pub(super) struct TrueLevel {
     pub this: (f64, f64),
@@ -152,6 +152,7 @@ fn weigh_parts(
 pub(super) fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
     let periods = (!node.long_mean.is_nan()).then(|| PeriodsPart {
         long_run_mean: units.value_out(node.long_mean),
+        long_run_apart: units.sd_out(node.long_mean),
         long_run_var: units.square_out(node.long_var),
         between_sd: units.sd_out(node.tau),
         history_sd: units.sd_out(node.history_sigma),
@@ -159,6 +160,7 @@ pub(super) fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
     Piece {
         weight,
         level_mean: units.value_out(node.mean),
+        level_apart: units.sd_out(node.mean),
         level_var: units.square_out(node.var),
         reading_sd: units.sd_out(node.sigma),
         periods,
@@ -198,7 +200,7 @@ pub(super) fn true_level(node: &Node, part: &Part, bias_sd: f64, units: &Units) 
             ((node.mean - rest * moved, var), long)
         }
     };
-    let out = |(m, v): (f64, f64)| (units.value_out(m), units.square_out(v));
+    let out = |(m, v): (f64, f64)| (units.sd_out(m), units.square_out(v));
     TrueLevel { this: out(this), next: out((long_run.0, long_run.1 + tau2)), long_run: out(long_run) }
 }
 

@@ -67,7 +67,7 @@ pub(super) fn told(
     match evidence {
         Evidence::Nothing => Ok((Told::Nothing, SdSums::default())),
         Evidence::Sums { n: 0, .. } => Ok((Told::Nothing, SdSums::default())),
-        Evidence::Sums { n, mean, ss } => {
+        Evidence::Sums { n, mean, ss, rest } => {
             if known_sd == Some(0.0) {
                 return Err(Absent::because(
                     "the within sd is none, so every reading or mean must bring its own uncertainty",
@@ -78,7 +78,7 @@ pub(super) fn told(
                 Some(ss) => SdSums { df: n - 1.0, ss: units.square_in(*ss) },
                 None => SdSums::default(),
             };
-            Ok((Told::Counted { n, mean: units.value_in(*mean) }, sums))
+            Ok((Told::Counted { n, mean: units.value_in(*mean) + units.sd_in(*rest) }, sums))
         }
         Evidence::Mean { mean, uncertainty } => {
             let u = units.sd_in(*uncertainty);

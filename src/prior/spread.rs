@@ -76,7 +76,7 @@ mod tests {
     use super::*;
 
     fn period(name: &str, n: u64, mean: f64) -> (Period, Evidence) {
-        (Period::new(name), Evidence::Sums { n, mean, ss: None })
+        (Period::new(name), Evidence::Sums { n, mean, ss: None, rest: 0.0 })
     }
 
     /// By hand: means 10, 12, 14 have variance 4; σ = 2 and n = 4, 2, 4 give s² = 1, 2, 1, mean 4/3.

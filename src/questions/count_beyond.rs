@@ -81,6 +81,7 @@ impl CountBeyond {
         let posterior = subject.posterior.clone()?;
         let own = terms::own_uncertainty(subject, None)?.unwrap_or(0.0);
         let table = LnFactorials::up_to(self.readings);
+        let beyond = beyond.from_origin(posterior.origin());
         posterior.expect_each(When::This, self.readings as usize + 1, &|theta, sigma, chances| {
             let sd = (sigma * sigma + own * own).sqrt();
             let (out, within) = beyond::normal_split(beyond, theta, sd);

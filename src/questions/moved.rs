@@ -89,7 +89,9 @@ pub fn plain_mean(evidence: &Evidence) -> Result<f64, Absent> {
 pub fn moved(evidence: &Evidence, by: f64) -> Evidence {
     match evidence {
         Evidence::Nothing => Evidence::Nothing,
-        Evidence::Sums { n, mean, ss } => Evidence::Sums { n: *n, mean: mean + by, ss: *ss },
+        Evidence::Sums { n, mean, ss, rest } => {
+            Evidence::Sums { n: *n, mean: mean + by, ss: *ss, rest: *rest }
+        }
         Evidence::Mean { mean, uncertainty } => Evidence::Mean { mean: mean + by, uncertainty: *uncertainty },
         Evidence::Singles(singles) => {
             let mut singles = singles.clone();

@@ -59,16 +59,16 @@ fn read(asked: &QuestionPlan, plan: &Plan, faults: &mut Faults) -> Option<Box<dy
     Some(Box::new(PeriodMean { readings: readings?, probability, beyond }))
 }
 
-/// Number and mean of the readings in hand, on the model's scale.
-fn in_hand(subject: &Subject<'_>) -> Result<(f64, f64), Absent> {
+/// Number and mean of the readings in hand, on the model's scale, and what the exact mean has beyond that one.
+fn in_hand(subject: &Subject<'_>) -> Result<(f64, f64, f64), Absent> {
     if subject.basis == Basis::PriorOnly {
         return Err(Absent::because(
             "the readings in hand are part of the answer, so the prior alone has none",
         ));
     }
     match subject.period.map(|period| &period.evidence) {
-        None | Some(Evidence::Nothing) => Ok((0.0, 0.0)),
-        Some(Evidence::Sums { n, mean, .. }) => Ok((*n as f64, *mean)),
+        None | Some(Evidence::Nothing) => Ok((0.0, 0.0, 0.0)),
+        Some(Evidence::Sums { n, mean, rest, .. }) => Ok((*n as f64, *mean, *rest)),
         Some(Evidence::Mean { .. }) => {
             Err(Absent::because("the period is given by its mean, not by counted readings"))
         }
@@ -84,7 +84,7 @@ fn in_hand(subject: &Subject<'_>) -> Result<(f64, f64), Absent> {
                     }
                 }
             }
-            Ok((singles.len() as f64, moments.mean()))
+            Ok((singles.len() as f64, moments.mean(), moments.mean_rest()))
         }
     }
 }
@@ -93,10 +93,11 @@ impl PeriodMean {
     fn law(&self, subject: &Subject<'_>) -> Result<Law, Absent> {
         let posterior = subject.posterior.clone()?;
         let own = terms::own_uncertainty(subject, None)?.unwrap_or(0.0);
-        let (n, mean) = in_hand(subject)?;
+        let (n, mean, rest) = in_hand(subject)?;
         let m = self.readings as f64;
         let share = m / (n + m);
-        let fixed = n * mean / (n + m);
+        // From the posterior's origin; without readings in hand there is no mean to hold against it.
+        let fixed = if n > 0.0 { n / (n + m) * ((mean - posterior.origin()) + rest) } else { 0.0 };
         posterior.affine(When::This, share, &|sigma| (fixed, share * share * (sigma * sigma + own * own) / m))
     }
 }
@@ -147,7 +148,7 @@ impl Question for PeriodMean {
     }
 
     fn working(&self, subject: &Subject<'_>) -> Vec<Step> {
-        let (Ok(posterior), Ok((n, mean)), Ok(own)) =
+        let (Ok(posterior), Ok((n, mean, _)), Ok(own)) =
             (&subject.posterior, in_hand(subject), terms::own_uncertainty(subject, None))
         else {
             return Vec::new();

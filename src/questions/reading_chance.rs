@@ -126,6 +126,7 @@ impl ReadingChance {
             Of::AtLeast(least) => {
                 let table = LnFactorials::up_to(self.readings);
                 let own = own.unwrap_or(0.0);
+                let beyond = beyond.from_origin(posterior.origin());
                 posterior.expect(self.when, &|theta, sigma| {
                     let sd = (sigma * sigma + own * own).sqrt();
                     let (out, within) = beyond::normal_split(beyond, theta, sd);

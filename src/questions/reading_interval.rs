@@ -150,6 +150,7 @@ impl ReadingInterval {
         // The chance that at least one lies outside, less what is allowed, against ln of one reading's own.
         let excess = |ln_outside: f64| -> f64 {
             let missed = interval_at(fm::exp(ln_outside)).and_then(|(lower, upper)| {
+                let (lower, upper) = (lower - posterior.origin(), upper - posterior.origin());
                 posterior.expect(self.when, &|theta, sigma| {
                     let sd = (sigma * sigma + own * own).sqrt();
                     let (out, within) = outside_split(theta, sd, lower, upper);

@@ -163,13 +163,14 @@ fn one_sided_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, 
     if posterior.is_marked() {
         return marked_bound(posterior, (limit, sign), tail, upper);
     }
+    let limit = limit - posterior.origin();
     let root_on = |pieces: &[Piece]| -> Figure {
         let excess = |z: f64| {
             let chance = |more: bool| -> f64 {
                 pieces
                     .iter()
                     .map(|piece| {
-                        let d = sign * (piece.level_mean - limit) + z * piece.reading_sd;
+                        let d = sign * (piece.level_apart - limit) + z * piece.reading_sd;
                         let t = d / piece.level_var.sqrt();
                         piece.weight * if more { normal::cdf(t) } else { normal::sf(t) }
                     })
@@ -200,7 +201,8 @@ fn apart(
     outside: f64,
     inside: f64,
 ) -> Result<(f64, f64), Absent> {
-    let (middle, half) = (0.5 * (lower + upper), 0.5 * (upper - lower));
+    let middle = 0.5 * ((lower - posterior.origin()) + (upper - posterior.origin()));
+    let half = 0.5 * (upper - lower);
     let tail = normal::upper_quantile(0.5 * outside).map_err(|error| Absent::failed(error.to_string()))?;
     // The σ with which the share outside is `outside` in the middle already: a kink of the distance.
     let kink = half / tail;
@@ -218,7 +220,7 @@ fn apart(
         }
         beyond::normal_split(
             Beyond::Outside(middle - d, middle + d),
-            piece.level_mean,
+            piece.level_apart,
             piece.level_var.sqrt(),
         )
     };

@@ -162,7 +162,7 @@ fn findings(names: &[&str]) -> Findings {
         name: name.to_string(),
         periods: vec![PeriodData {
             period: Period::new("2025"),
-            evidence: Evidence::Sums { n: 3, mean: 0.15, ss: Some(1e-4) },
+            evidence: Evidence::Sums { n: 3, mean: 0.15, ss: Some(1e-4), rest: 0.0 },
             restored: None,
             facts: Facts {
                 n: 3,

@@ -178,8 +178,12 @@ fn read_periods(at: &At<'_>) -> Result<Periods, String> {
 pub fn evidence_json(evidence: &Evidence) -> Json {
     match evidence {
         Evidence::Nothing => Object::new().text("kind", "nothing").done(),
-        Evidence::Sums { n, mean, ss } => {
-            let object = Object::new().text("kind", "sums").whole("n", *n).number("mean", *mean);
+        Evidence::Sums { n, mean, ss, rest } => {
+            let object = Object::new()
+                .text("kind", "sums")
+                .whole("n", *n)
+                .number("mean", *mean)
+                .number("mean_rest", *rest);
             match ss {
                 Some(ss) => object.number("ss", *ss).done(),
                 None => object.absent("ss", "the summary gave no sd").done(),
@@ -200,7 +204,12 @@ pub fn evidence_json(evidence: &Evidence) -> Json {
 pub fn read_evidence(at: &At<'_>) -> Result<Evidence, String> {
     match at.text("kind")? {
         "nothing" => Ok(Evidence::Nothing),
-        "sums" => Ok(Evidence::Sums { n: at.whole("n")?, mean: at.number("mean")?, ss: at.number_if("ss")? }),
+        "sums" => Ok(Evidence::Sums {
+            n: at.whole("n")?,
+            mean: at.number("mean")?,
+            ss: at.number_if("ss")?,
+            rest: at.number("mean_rest")?,
+        }),
         "mean" => Ok(Evidence::Mean { mean: at.number("mean")?, uncertainty: at.number("uncertainty")? }),
         "singles" => Ok(Evidence::Singles(at.each("singles", read_single)?)),
         _ => Err(at.key("kind")?.fault("a kind of evidence")),

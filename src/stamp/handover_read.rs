@@ -100,11 +100,8 @@ mod tests {
         let single = (single, number()).prop_map(|(seen, uncertainty)| Single { seen, uncertainty });
         prop_oneof![
             Just(Evidence::Nothing),
-            (1..99u64, number(), prop::option::of(number())).prop_map(|(n, mean, ss)| Evidence::Sums {
-                n,
-                mean,
-                ss
-            }),
+            (1..99u64, number(), prop::option::of(number()), number())
+                .prop_map(|(n, mean, ss, rest)| Evidence::Sums { n, mean, ss, rest }),
             (number(), number()).prop_map(|(mean, uncertainty)| Evidence::Mean { mean, uncertainty }),
             prop::collection::vec(single, 1..4).prop_map(Evidence::Singles),
         ]

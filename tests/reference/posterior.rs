@@ -7,7 +7,7 @@ use reassay::prior::{Between, LevelPrior, Model, Pattern, Periods, Within};
 use reassay::quantity::{Period, Scale};
 
 fn sums(n: u64, mean: f64, ss: f64) -> Evidence {
-    Evidence::Sums { n, mean, ss: Some(ss) }
+    Evidence::Sums { n, mean, ss: Some(ss), rest: 0.0 }
 }
 
 fn mean(mean: f64, uncertainty: f64) -> Evidence {

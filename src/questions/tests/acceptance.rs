@@ -24,7 +24,7 @@ fn mixture() -> Posterior {
     ];
     both(
         &model(Within::Known(1.5), LevelPrior::Mixture(parts)),
-        &Evidence::Sums { n: 6, mean: 43.1, ss: Some(11.0) },
+        &Evidence::Sums { n: 6, mean: 43.1, ss: Some(11.0), rest: 0.0 },
     )
 }
 

@@ -30,7 +30,7 @@ fn answer(keys: &str, posterior: &Posterior, data: &SeriesData) -> Figures {
 }
 
 fn within_known(mean: f64) -> Evidence {
-    Evidence::Sums { n: 6, mean, ss: Some(11.0) }
+    Evidence::Sums { n: 6, mean, ss: Some(11.0), rest: 0.0 }
 }
 
 /// The page's worked number, and which period is the previous one.
@@ -38,7 +38,7 @@ fn within_known(mean: f64) -> Evidence {
 fn change_without_a_model_of_periods() {
     let all = data(&[
         ("2022", within_known(40.0)),
-        ("2023", Evidence::Sums { n: 5, mean: 41.9, ss: Some(9.0) }),
+        ("2023", Evidence::Sums { n: 5, mean: 41.9, ss: Some(9.0), rest: 0.0 }),
         ("2024", Evidence::Nothing),
         ("2025", within_known(43.1)),
     ]);
@@ -113,9 +113,9 @@ fn change_with_a_history_by_simulation() {
 fn ratios_on_the_log_scale() {
     let all = data(&[("2024", within_known(41.9)), ("2025", within_known(43.1))]);
     let log = Model { scale: Scale::Log, ..model(Within::Known(0.3), LevelPrior::Flat) };
-    let posterior = both(&log, &Evidence::Sums { n: 4, mean: 2.0, ss: Some(0.2) });
+    let posterior = both(&log, &Evidence::Sums { n: 4, mean: 2.0, ss: Some(0.2), rest: 0.0 });
     let asked = put("log", "ask = \"change\"\nband = 1.1");
-    let earlier = data(&[("2024", Evidence::Sums { n: 4, mean: 1.9, ss: Some(0.2) })]);
+    let earlier = data(&[("2024", Evidence::Sums { n: 4, mean: 1.9, ss: Some(0.2), rest: 0.0 })]);
     let subject = Subject { data: Some(&earlier), ..asked.subject(&posterior, None) };
     let figures = asked.question.answer(&subject);
     let sd = 0.3 * (2.0f64 / 4.0).sqrt();
@@ -140,7 +140,7 @@ fn across(keys: &str, members: &[(&str, &Posterior)]) -> Vec<(String, Figures)> 
 #[test]
 fn two_series_that_share_nothing() {
     let line = |n: u64, mean: f64| {
-        both(&model(Within::Known(0.25), LevelPrior::Flat), &Evidence::Sums { n, mean, ss: None })
+        both(&model(Within::Known(0.25), LevelPrior::Flat), &Evidence::Sums { n, mean, ss: None, rest: 0.0 })
     };
     let (a, b) = (line(5, 12.12), line(4, 11.65));
     let members = [("Line A", &a), ("Line B", &b)];
@@ -166,7 +166,7 @@ fn a_ranking_by_simulation() {
         .iter()
         .map(|(n, mean, prior)| {
             let model = model(Within::Known(1.5), LevelPrior::Stated { mean: *prior, sd: 2.0 });
-            both(&model, &Evidence::Sums { n: *n, mean: *mean, ss: None })
+            both(&model, &Evidence::Sums { n: *n, mean: *mean, ss: None, rest: 0.0 })
         })
         .collect();
     let names = ["A", "B", "C", "D"];
@@ -295,7 +295,8 @@ fn plans_with_an_unknown_sd_by_simulation() {
         let theta = 43.5 + 2.0 * pcg.normal();
         let mean = theta + sigma / (n as f64).sqrt() * pcg.normal();
         let ss = sigma * sigma * pcg.chi_square(n as u32 - 1);
-        let posterior = both(&model(worth(), level.clone()), &Evidence::Sums { n, mean, ss: Some(ss) });
+        let posterior =
+            both(&model(worth(), level.clone()), &Evidence::Sums { n, mean, ss: Some(ss), rest: 0.0 });
         let chance = value(&ask("ask = \"level chance\"\nabove = 45", &posterior), "chance");
         let index = if chance >= 0.95 {
             0

@@ -139,7 +139,7 @@ pub fn model(within: Within, level: LevelPrior) -> Model {
 }
 
 pub fn sums(n: u64, mean: f64, sd: f64) -> Evidence {
-    Evidence::Sums { n, mean, ss: (n > 1).then(|| (n - 1) as f64 * sd * sd) }
+    Evidence::Sums { n, mean, ss: (n > 1).then(|| (n - 1) as f64 * sd * sd), rest: 0.0 }
 }
 
 pub fn both(model: &Model, readings: &Evidence) -> Posterior {
@@ -150,7 +150,7 @@ pub fn both(model: &Model, readings: &Evidence) -> Posterior {
 pub fn example() -> Posterior {
     both(
         &model(Within::Known(1.5), LevelPrior::Stated { mean: 40.0, sd: 2.0 }),
-        &Evidence::Sums { n: 6, mean: 43.1, ss: Some(11.0) },
+        &Evidence::Sums { n: 6, mean: 43.1, ss: Some(11.0), rest: 0.0 },
     )
 }
 

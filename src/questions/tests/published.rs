@@ -19,7 +19,7 @@ fn characteristic_values_with_the_sd_known() {
         (30, 1.672043132188460, 1.67),
     ];
     for (n, wanted, printed) in table {
-        let readings = Evidence::Sums { n, mean: 50.0, ss: None };
+        let readings = Evidence::Sums { n, mean: 50.0, ss: None, rest: 0.0 };
         let posterior = both(&model(Within::Known(2.0), LevelPrior::Flat), &readings);
         let got = (50.0 - value(&ask("ask = \"characteristic value\"", &posterior), "estimate")) / 2.0;
         near(got, wanted, 1e-13);
@@ -262,7 +262,7 @@ fn a_mixture_in_conflict_and_in_agreement() {
         (50.7, [50.30342004879040, 48.76508465878548, 51.87682109658430]),
     ];
     for (mean, [estimate, lower, upper]) in table {
-        let posterior = both(&model, &Evidence::Sums { n: 1, mean, ss: None });
+        let posterior = both(&model, &Evidence::Sums { n: 1, mean, ss: None, rest: 0.0 });
         let figures = ask("ask = \"level interval\"", &posterior);
         near(value(&figures, "estimate"), estimate, 1e-12);
         near(value(&figures, "lower"), lower, 1e-11);
@@ -273,13 +273,17 @@ fn a_mixture_in_conflict_and_in_agreement() {
 /// Montgomery & Runger, Example 8-1 (10 values, σ = 1), and Walpole et al., Example 9.2 (from memory, recomputed).
 #[test]
 fn textbook_intervals_with_the_sd_known() {
-    let charpy =
-        both(&model(Within::Known(1.0), LevelPrior::Flat), &Evidence::Sums { n: 10, mean: 64.46, ss: None });
+    let charpy = both(
+        &model(Within::Known(1.0), LevelPrior::Flat),
+        &Evidence::Sums { n: 10, mean: 64.46, ss: None, rest: 0.0 },
+    );
     let figures = ask("ask = \"level interval\"", &charpy);
     near(value(&figures, "lower"), 63.84020496769544, 1e-14);
     near(value(&figures, "upper"), 65.07979503230456, 1e-14);
-    let zinc =
-        both(&model(Within::Known(0.3), LevelPrior::Flat), &Evidence::Sums { n: 36, mean: 2.6, ss: None });
+    let zinc = both(
+        &model(Within::Known(0.3), LevelPrior::Flat),
+        &Evidence::Sums { n: 36, mean: 2.6, ss: None, rest: 0.0 },
+    );
     let figures = ask("ask = \"level interval\"\nprobability = 0.99", &zinc);
     near(value(&figures, "lower"), 2.471208534822555, 1e-13);
     near(value(&figures, "upper"), 2.728791465177445, 1e-13);
@@ -308,16 +312,20 @@ fn worked_numbers_of_the_pages() {
     for (got, wanted) in classes.iter().zip([0.07710547175838484, 0.8996450763506472, 0.023249451890968054]) {
         within(*got, wanted, 1e-13);
     }
-    let strength =
-        both(&model(Within::Known(2.75), LevelPrior::Flat), &Evidence::Sums { n: 10, mean: 55.0, ss: None });
+    let strength = both(
+        &model(Within::Known(2.75), LevelPrior::Flat),
+        &Evidence::Sums { n: 10, mean: 55.0, ss: None, rest: 0.0 },
+    );
     within(value(&ask("ask = \"characteristic value\"", &strength), "estimate"), 50.25587314579846, 1e-11);
 }
 
 /// Far tails keep their relative accuracy: Φ itself is the reference.
 #[test]
 fn tails_far_out() {
-    let posterior =
-        both(&model(Within::Known(1.0), LevelPrior::Flat), &Evidence::Sums { n: 1, mean: 0.0, ss: None });
+    let posterior = both(
+        &model(Within::Known(1.0), LevelPrior::Flat),
+        &Evidence::Sums { n: 1, mean: 0.0, ss: None, rest: 0.0 },
+    );
     for z in [5.0, 10.0, 20.0, 30.0] {
         near(
             value(&ask(&format!("ask = \"level chance\"\nabove = {z}"), &posterior), "chance"),
