@@ -5,6 +5,7 @@
 
 // Ground.
 pub mod diagnostics;
+pub mod json;
 pub mod math;
 pub mod quantity;
 pub mod source;

@@ -67,6 +67,16 @@ pub enum Scale {
     Log,
 }
 
+impl Scale {
+    /// "linear" or "log", as the spec says it.
+    pub fn word(self) -> &'static str {
+        match self {
+            Scale::Linear => "linear",
+            Scale::Log => "log",
+        }
+    }
+}
+
 /// The name of a period: trimmed text; a spreadsheet's `2025.0` is `2025`.
 #[derive(Debug, Clone, PartialEq, Eq, Hash, PartialOrd, Ord)]
 pub struct Period(String);

@@ -4,7 +4,7 @@ use std::fs;
 use std::path::{Path, PathBuf};
 
 /// Ground first (each imports ground only), then the stages in the order of the data.
-const GROUND: &[&str] = &["diagnostics", "math", "quantity", "source", "working"];
+const GROUND: &[&str] = &["diagnostics", "json", "math", "quantity", "source", "working"];
 const STAGES: &[&str] = &[
     "spec",
     "plan",

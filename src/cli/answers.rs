@@ -5,7 +5,6 @@ use crate::findings::Findings;
 use crate::questions::figures::{Figures, Item, Meaning};
 use crate::questions::rule::Given;
 use crate::report::text;
-use crate::stamp::answers_json::status_word;
 
 /// Significant digits of a value where no uncertainty sets the place.
 const DIGITS: u8 = 4;
@@ -13,13 +12,7 @@ const DIGITS: u8 = 4;
 /// All answers of a review, series by series.
 pub fn say(findings: &Findings, screen: &mut Screen) {
     let review = &findings.plan.review;
-    screen.say(&format!(
-        "{}  {}, {} ({})",
-        review.id,
-        review.title,
-        review.period,
-        status_word(review.status)
-    ));
+    screen.say(&format!("{}  {}, {} ({})", review.id, review.title, review.period, review.status.word()));
     let unit = &findings.plan.quantity.unit;
     for series in &findings.series {
         screen.say("");

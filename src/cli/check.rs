@@ -5,7 +5,6 @@ use crate::data::{self, Data};
 use crate::diagnostics::{Faults, Outcome};
 use crate::plan::{Bounds, Plan};
 use crate::review::Prepared;
-use crate::stamp::answers_json::{scale_word, status_word};
 use crate::stamp::audit::Again;
 use crate::stamp::{Places, folder};
 
@@ -35,14 +34,14 @@ fn say(prepared: &Prepared, data: &Data, shown: &str, screen: &mut Screen) {
     let plan = &prepared.plan;
     let review = &plan.review;
     screen.say(&format!("{shown}: nothing wrong was found"));
-    screen.say(&format!("  review      {}, {} ({})", review.id, review.title, status_word(review.status)));
+    screen.say(&format!("  review      {}, {} ({})", review.id, review.title, review.status.word()));
     screen.say(&format!("  period      {}, report of {}", review.period, review.date));
     let quantity = &plan.quantity;
     screen.say(&format!(
         "  quantity    {}, {}, {} scale",
         quantity.name,
         quantity.unit,
-        scale_word(quantity.scale)
+        quantity.scale.word()
     ));
     for limit in &plan.limits {
         let bounds = match limit.bounds {

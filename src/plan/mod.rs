@@ -68,6 +68,17 @@ pub enum Status {
     Final,
 }
 
+impl Status {
+    /// "draft", "interim" or "final", as the spec says it.
+    pub fn word(self) -> &'static str {
+        match self {
+            Status::Draft => "draft",
+            Status::Interim => "interim",
+            Status::Final => "final",
+        }
+    }
+}
+
 #[derive(Debug, Clone, PartialEq)]
 pub struct ReviewPlan {
     pub title: String,

@@ -7,7 +7,6 @@ use crate::plan::{
     PeriodOf, Plan, QuestionPlan, SeriesOf, Source, SourceKind, Status, SummaryRow, TemplateChoice,
     Threshold, Whence, questions,
 };
-use crate::quantity::Scale;
 use crate::spec::language;
 use crate::spec::table::Table;
 
@@ -64,7 +63,7 @@ pub fn plan_toml(plan: &Plan, filled: &Filled) -> String {
             let more = extra(filled, &format!("alternative.{}.{name}", alternative.id));
             out.some(name, table.as_ref().map(|table| inline_table(table, more)));
         }
-        out.some("scale", alternative.scale.map(|scale| text(scale_word(scale))));
+        out.some("scale", alternative.scale.map(|scale| text(scale.word())));
     }
     for name in plan.series.keys() {
         series(plan, name, filled, &mut out);
@@ -135,19 +134,12 @@ fn link(link: &Link) -> String {
     format!("{{ {} }}", parts.join(", "))
 }
 
-fn scale_word(scale: Scale) -> &'static str {
-    match scale {
-        Scale::Linear => "linear",
-        Scale::Log => "log",
-    }
-}
-
 fn quantity(plan: &Plan, out: &mut TomlText) {
     let quantity = &plan.quantity;
     out.head("[quantity]");
     out.line("name", text(&quantity.name));
     out.line("unit", text(&quantity.unit));
-    out.line("scale", text(scale_word(quantity.scale)));
+    out.line("scale", text(quantity.scale.word()));
     out.some("method", quantity.method.as_deref().map(text));
     out.some("step", quantity.step.map(|step| number(step.get())));
     out.some("bias", quantity.bias.as_ref().map(bias));

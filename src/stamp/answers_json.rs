@@ -2,12 +2,12 @@
 
 use crate::data::Data;
 use crate::findings::{AcrossFindings, Answer, Findings, SeriesFindings, UnderAlternative};
-use crate::plan::{Plan, Status};
+use crate::json::{Json, Object, reason_against};
+use crate::plan::Plan;
 use crate::posterior::Posterior;
-use crate::quantity::{Absent, Scale};
+use crate::quantity::Absent;
 use crate::questions::figures::{Figures, Item};
 use crate::questions::rule::Given;
-use crate::stamp::json::{Json, Object, reason_against};
 use crate::stamp::laws::{self, LawFigures};
 use toml::de::{DeTable, DeValue};
 
@@ -37,23 +37,6 @@ pub fn answers_json(findings: &Findings) -> Json {
         .done()
 }
 
-/// "draft", "interim" or "final".
-pub fn status_word(status: Status) -> &'static str {
-    match status {
-        Status::Draft => "draft",
-        Status::Interim => "interim",
-        Status::Final => "final",
-    }
-}
-
-/// "linear" or "log".
-pub fn scale_word(scale: Scale) -> &'static str {
-    match scale {
-        Scale::Linear => "linear",
-        Scale::Log => "log",
-    }
-}
-
 fn review(plan: &Plan) -> Json {
     let review = &plan.review;
     Object::new()
@@ -61,7 +44,7 @@ fn review(plan: &Plan) -> Json {
         .text("title", review.title.as_str())
         .text("period", review.period.as_str())
         .text("date", review.date.to_string())
-        .text("status", status_word(review.status))
+        .text("status", review.status.word())
         .done()
 }
 
@@ -69,7 +52,7 @@ fn quantity(plan: &Plan) -> Json {
     Object::new()
         .text("name", plan.quantity.name.as_str())
         .text("unit", plan.quantity.unit.as_str())
-        .text("scale", scale_word(plan.quantity.scale))
+        .text("scale", plan.quantity.scale.word())
         .done()
 }
 

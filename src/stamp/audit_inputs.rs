@@ -1,12 +1,12 @@
 //! The inputs of an audited review: each against stamp.json, in the folder first, then in the place
 //! where it lay; and where each is to be read when the review is made again.
 
+use crate::json::At;
+use crate::json::Json;
 use crate::source;
 use crate::stamp::audit::{Again, Difference, Found};
-use crate::stamp::json::Json;
 use crate::stamp::made::{RUN_JSON, SPEC_TOML, STAMP_JSON};
 use crate::stamp::places::Places;
-use crate::stamp::reading::At;
 use crate::stamp::run_json;
 use crate::stamp::stamp_json::{FORMAT, VERSION};
 use std::fs;

@@ -1,7 +1,7 @@
 //! Where two versions of a file part, in one line: the first differing key of JSON with both values and
 //! their distance, the first differing line of any other text, the first differing byte of the rest.
 
-use crate::stamp::json::Json;
+use crate::json::Json;
 
 /// Characters of a value or a line that are shown.
 const SHOWN: usize = 60;

@@ -5,9 +5,9 @@
 //! same review takes it away.
 
 use crate::diagnostics::{Fault, Outcome};
+use crate::json::Json;
 use crate::source;
 use crate::stamp::inputs::changed;
-use crate::stamp::json::Json;
 use crate::stamp::listing::{self, What};
 use crate::stamp::made::{Content, Made, RUN_JSON, STAMP_JSON, SUMS};
 use crate::stamp::sums;

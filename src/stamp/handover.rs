@@ -8,13 +8,12 @@
 use crate::data::{Data, Mark, PeriodData, ReadingRow};
 use crate::data::{Fate, evidence::Evidence};
 use crate::findings::{Findings, SeriesFindings};
+use crate::json::{Json, Object};
 use crate::posterior::{Piece, Posterior};
 use crate::prior::{LevelPrior, Model};
 use crate::quantity::{Period, Scale};
 use crate::source::sha256_hex;
-use crate::stamp::answers_json::scale_word;
 use crate::stamp::handover_model::{evidence_json, model_json};
-use crate::stamp::json::{Json, Object};
 
 pub const FORMAT: &str = "reassay-handover/1";
 
@@ -182,7 +181,7 @@ impl Handover {
         let quantity = Object::new()
             .text("name", self.quantity.as_str())
             .text("unit", self.unit.as_str())
-            .text("scale", scale_word(self.scale));
+            .text("scale", self.scale.word());
         Object::new()
             .text("format", FORMAT)
             .text("review", self.review.as_str())

@@ -1,15 +1,14 @@
 //! A model and a period's evidence as JSON, complete: what is read back equals what was written.
 
 use crate::data::evidence::{Evidence, Seen, Single};
+use crate::json::At;
+use crate::json::{Json, Object};
 use crate::prior::{Adjust, Between, LevelPrior, Model, Pattern, Periods, Within};
 use crate::quantity::{Period, Scale};
-use crate::stamp::answers_json::scale_word;
-use crate::stamp::json::{Json, Object};
-use crate::stamp::reading::At;
 
 pub fn model_json(model: &Model) -> Json {
     let object = Object::new()
-        .text("scale", scale_word(model.scale))
+        .text("scale", model.scale.word())
         .put("within", within_json(&model.within))
         .put("prior", prior_json(&model.level))
         .number("bias_sd", model.bias_sd);

@@ -1,11 +1,11 @@
 //! Reading handover.json back, for a prior that is carried from one period to the next.
 
 use crate::diagnostics::Fault;
+use crate::json::At;
+use crate::json::Json;
 use crate::quantity::Period;
 use crate::stamp::handover::{FORMAT, Handed, HandedPiece, Handover, LedgerLine};
 use crate::stamp::handover_model::{read_evidence, read_model, read_scale};
-use crate::stamp::json::Json;
-use crate::stamp::reading::At;
 
 impl Handover {
     /// Reads the bytes of a handover.json that the user knows as `name`.

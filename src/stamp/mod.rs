@@ -1,10 +1,8 @@
 //! Stage 10: the files of a review, their hashes, the stamp, and the audit that makes them again.
 
-// Ground of this stage: JSON, sums, listings.
-pub mod json;
+// Ground of this stage: sums, listings.
 pub mod sums;
 mod listing;
-mod reading;
 
 // What a review leaves.
 mod laws;

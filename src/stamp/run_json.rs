@@ -1,7 +1,7 @@
 //! run.json: when a review was made, and where its spec lay as seen from its folder. The only file
 //! outside hashes and byte identity; it names no user and no host.
 
-use crate::stamp::json::{Json, Object};
+use crate::json::{Json, Object};
 use crate::stamp::stamp_json::{PROGRAM, VERSION};
 use std::fs;
 use std::path::{Component, Path, PathBuf};

@@ -3,11 +3,10 @@
 //! It depends on the inputs alone: files are named as the spec names them, and the report, which prints
 //! the stamp, is not part of it.
 
+use crate::json::{Json, Object};
 use crate::plan::{Link, Plan, TemplateChoice};
 use crate::source::sha256_hex;
-use crate::stamp::answers_json::status_word;
 use crate::stamp::inputs::Input;
-use crate::stamp::json::{Json, Object};
 use std::fmt;
 
 pub const FORMAT: &str = "reassay-stamp/1";
@@ -52,10 +51,8 @@ pub struct Left {
 
 /// The bytes of stamp.json.
 pub fn stamp_json(plan: &Plan, spec: &[u8], inputs: &[Input], left: &[Left]) -> Vec<u8> {
-    let review = Object::new()
-        .text("id", plan.review.id.as_str())
-        .text("status", status_word(plan.review.status))
-        .done();
+    let review =
+        Object::new().text("id", plan.review.id.as_str()).text("status", plan.review.status.word()).done();
     let spec = Object::new().whole("bytes", spec.len() as u64).text("sha256", sha256_hex(spec)).done();
     let template = match &plan.report.template {
         TemplateChoice::BuiltIn(name) => name.as_str(),

@@ -4,7 +4,10 @@
 //! Numbers are written in their shortest form that reads back as the same number; what is infinite or
 //! undefined is never written. [`Object`] turns an absent figure into null and says why in its `why`.
 
+mod at;
+
 use crate::quantity::Figure;
+pub use at::At;
 use serde::de::{Deserialize, Deserializer, Error, MapAccess, SeqAccess, Visitor};
 use std::fmt;
 

@@ -1,7 +1,7 @@
 //! Reading values out of JSON with faults that say where: `series[2].model.within.sd: expected a
 //! number, found null`.
 
-use crate::stamp::json::Json;
+use crate::json::Json;
 
 /// A value and the way to it.
 #[derive(Debug, Clone)]
