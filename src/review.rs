@@ -66,13 +66,14 @@ pub fn prepare_by(
     lead(&mut plan);
     // The overrides belong to the series' settings, so they are read before these.
     data::read_overrides(&mut plan)?;
+    data::read_linked(&mut plan)?;
     let mut faults = Faults::default();
     let questions = questions::read_all(&plan, &mut faults);
     let scale = plan.quantity.scale;
     let read_settings =
         |prior: &crate::spec::table::Table, spread: &crate::spec::table::Table, faults: &mut Faults| {
             let source = prior::read(prior, scale, &plan, faults);
-            let within = within::read(spread, scale, faults);
+            let within = within::read(spread, scale, &plan, faults);
             Some(Settings { source: source?, within: within? })
         };
     let general = read_settings(&plan.prior, &plan.within, &mut faults);
@@ -93,7 +94,10 @@ pub fn prepare_by(
                 .prior
                 .as_ref()
                 .and_then(|table| prior::read(table, scale, &plan, &mut faults)),
-            within: alternative.within.as_ref().and_then(|table| within::read(table, scale, &mut faults)),
+            within: alternative
+                .within
+                .as_ref()
+                .and_then(|table| within::read(table, scale, &plan, &mut faults)),
         })
         .collect();
     refuse_what_is_not_served(&plan, general.iter().chain(own.values()), &mut faults);
@@ -271,7 +275,10 @@ fn work<'a>(prepared: &'a Prepared, data: &'a Data, name: &'a str) -> Outcome<Wo
     let scale = plan.quantity.scale;
     let ground = Ground { plan, data, series: name, scale, restored: false };
     let (source, built) = build(settings.source.as_ref(), prepared.otherwise.as_deref(), &ground)?;
-    let (within, within_cautions) = settings.within.within(&ground, &built.level);
+    let (within, within_cautions) =
+        settings.within.within(&ground, &built.level).map_err(|refusal| match refusal {
+            Refusal::TooShort(fault) | Refusal::Wrong(fault) => fault,
+        })?;
     let bias = plan.series.get(name).and_then(|own| own.bias.as_ref()).or(plan.quantity.bias.as_ref());
     let model = Model {
         scale,
@@ -422,6 +429,7 @@ fn findings_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Outcome
             }
             _ => None,
         },
+        carried_ledger: worked.built.ledger.clone(),
         prior: worked.prior.clone(),
         readings_only: worked.readings_only.clone(),
         posterior: worked.posterior.clone(),

@@ -81,7 +81,10 @@ fn prior_alternatives(base: &Base<'_>) -> Vec<Alternative> {
 /// earlier periods.
 fn without_periods(base: &Base<'_>) -> Within {
     match &base.model.within {
-        Within::Pooled { .. } => base.within.within(&base.ground, &LevelPrior::Flat).0,
+        Within::Pooled { .. } => match base.within.within(&base.ground, &LevelPrior::Flat) {
+            Ok((within, _)) => within,
+            Err(_) => base.model.within.clone(),
+        },
         within => within.clone(),
     }
 }
@@ -204,9 +207,10 @@ fn rebuilt(
     source: &dyn Source,
     within: &WithinRead,
 ) -> Result<Model, Absent> {
-    let built = source.level(&ground).map_err(|refusal| match refusal {
+    let why = |refusal| match refusal {
         Refusal::TooShort(fault) | Refusal::Wrong(fault) => Absent::because(fault.message),
-    })?;
-    let (within, _) = within.within(&ground, &built.level);
+    };
+    let built = source.level(&ground).map_err(why)?;
+    let (within, _) = within.within(&ground, &built.level).map_err(why)?;
     Ok(Model { within, level: built.level, adjust: None, ..base.model.clone() })
 }

@@ -4,6 +4,7 @@ mod reference_answers;
 mod faults;
 mod command_line;
 mod cases;
+mod carried;
 mod checks_of_demos;
 mod tidiness;
 mod reference;

@@ -11,6 +11,7 @@ mod fault_list;
 mod finish;
 mod gather;
 mod index;
+mod linked;
 mod number;
 mod order;
 mod overrides;
@@ -20,6 +21,7 @@ mod rows_csv;
 mod screen;
 mod summaries;
 
+pub use linked::read_linked;
 pub use overrides::read_overrides;
 pub use read::read;
 pub use rows_csv::rows_csv;

@@ -7,6 +7,7 @@ use crate::data::Data;
 use crate::diagnostics::Caution;
 use crate::plan::Plan;
 use crate::posterior::Posterior;
+use crate::prior::handover::LedgerLine;
 use crate::prior::spread::SpreadOfMeans;
 use crate::quantity::{Absent, Figure};
 use crate::questions::figures::Figures;
@@ -46,6 +47,8 @@ pub struct SeriesFindings {
     pub answers: Vec<Answer>,
     pub checks: Vec<Check>,
     pub sensitivity: Vec<UnderAlternative>,
+    /// Of a carried prior: the periods that its handover holds.
+    pub carried_ledger: Vec<LedgerLine>,
     /// True where no verdict on the period can be given (no readings).
     pub without_readings: bool,
 }

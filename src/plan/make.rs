@@ -1,7 +1,9 @@
 //! The plan of a whole spec: each section by its own module, then what concerns several of them.
 
 use crate::diagnostics::{Fault, Faults, Outcome};
-use crate::plan::{FileRef, OverridesFile, Plan, SpecFile, about, compared, questions, series, sources};
+use crate::plan::{
+    FileRef, OverridesFile, Plan, SpecFile, about, compared, linked, questions, series, sources,
+};
 use crate::spec::keys::{Key, Takes, nearest};
 use crate::spec::language;
 use crate::spec::reader::Reader;
@@ -120,6 +122,12 @@ pub fn plan(root: &Table, mut ground: Ground, files: Vec<SpecFile>) -> Outcome<P
     let questions = questions::all(root.tables("question"), &limits, &mut ground);
     let report = about::report(section("report"), &mut ground);
 
+    let links = review.iter().flat_map(|review| review.previous.iter().chain(&review.supersedes));
+    let priors = prior.iter().chain(&otherwise);
+    let priors = priors.chain(alternatives.iter().filter_map(|alternative| alternative.prior.as_ref()));
+    let own_priors = series.values().flat_map(|series| series.prior.iter().chain(&series.otherwise));
+    let linked = linked::all(links, priors.chain(own_priors), &mut ground);
+
     let mut faults = ground.faults;
     in_order_of_text(&mut faults, &files);
     let within = section("within").cloned();
@@ -146,6 +154,7 @@ pub fn plan(root: &Table, mut ground: Ground, files: Vec<SpecFile>) -> Outcome<P
         report,
         spec_files: files,
         actions,
+        linked,
     })
 }
 

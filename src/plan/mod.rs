@@ -4,6 +4,7 @@
 
 mod about;
 mod compared;
+mod linked;
 mod load;
 mod make;
 mod questions;
@@ -16,6 +17,7 @@ mod tests;
 mod written;
 
 pub use about::BUILT_IN_TEMPLATES;
+pub use linked::{FoundFile, FoundReview, LinkedReview};
 pub use load::{ReadBytes, load};
 pub use series::{OverrideCell, STANDING_ALTERNATIVES};
 pub use written::{Filled, plan_toml};
@@ -51,6 +53,8 @@ pub struct Plan {
     /// The spec, and its base where it has one: their bytes are stamped.
     pub spec_files: Vec<SpecFile>,
     pub actions: Vec<Action>,
+    /// The other reviews that the spec names.
+    pub linked: Vec<LinkedReview>,
 }
 
 #[derive(Debug, Clone, PartialEq)]

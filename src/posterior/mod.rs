@@ -216,6 +216,15 @@ impl Posterior {
         self.inner.between_sd()
     }
 
+    /// Of a mixture prior: what each part weighs, the readings taken in where the basis has them; empty
+    /// for any other prior.
+    pub fn part_weights(&self) -> Vec<f64> {
+        match self.inner.parts.len() {
+            0 | 1 => Vec::new(),
+            _ => self.inner.parts.iter().map(|(_, _, share)| *share).collect(),
+        }
+    }
+
     /// Share of the answer that comes from the prior, Σ w B.
     pub fn prior_weight(&self) -> Figure {
         match self.basis {

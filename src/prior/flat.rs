@@ -35,7 +35,7 @@ impl Source for Flat {
 
     fn level(&self, _: &Ground<'_>) -> Result<Built, Refusal> {
         let notes = vec!["The prior is flat: the readings of the period speak alone.".to_string()];
-        Ok(Built { level: LevelPrior::Flat, notes, cautions: Vec::new() })
+        Ok(Built { level: LevelPrior::Flat, notes, cautions: Vec::new(), ledger: Vec::new() })
     }
 
     fn settings(&self) -> Vec<(&'static str, String)> {

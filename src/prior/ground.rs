@@ -5,7 +5,9 @@
 use crate::data::evidence::Evidence;
 use crate::data::{Data, PeriodData, SeriesData};
 use crate::plan::Plan;
+use crate::prior::handover::sorted_values;
 use crate::quantity::{Period, Scale};
+use crate::source::sha256_hex;
 
 /// The data as one source of a prior, for one series, sees them.
 #[derive(Debug, Clone, Copy)]
@@ -32,6 +34,19 @@ impl<'a> Ground<'a> {
     pub fn earlier_data(&self) -> Vec<&'a PeriodData> {
         let Some(series) = self.own() else { return Vec::new() };
         series.periods.iter().filter(|data| self.counts(&data.period)).collect()
+    }
+
+    /// The same with the evidence of each and the hash of its readings, where single ones are held.
+    pub fn earlier_with_hashes(&self) -> Vec<(&'a PeriodData, Evidence, Option<String>)> {
+        let with = |data: &'a PeriodData| (data, self.evidence(data), hash(data));
+        self.earlier_data().into_iter().map(with).filter(|(_, evidence, _)| !evidence.is_nothing()).collect()
+    }
+
+    /// How many readings of the period under review there are, and their hash: enough to tell whether
+    /// an earlier review has used them, and no more.
+    pub fn hash_of_readings(&self) -> Option<(u64, String)> {
+        let data = self.own()?.period(&self.plan.review.period)?;
+        Some((data.facts.n, hash(data)?))
     }
 
     /// The other series of the period under review, by name.
@@ -88,4 +103,9 @@ impl<'a> Ground<'a> {
         };
         place(period) < place(other)
     }
+}
+
+/// The hash by which a ledger knows a period's readings.
+fn hash(data: &PeriodData) -> Option<String> {
+    sorted_values(&data.readings).map(|text| sha256_hex(text.as_bytes()))
 }

@@ -266,7 +266,7 @@ impl Source for History {
             between: self.read.between,
             weight: self.read.weight,
         });
-        Ok(Built { level, notes, cautions })
+        Ok(Built { level, notes, cautions, ledger: Vec::new() })
     }
 
     fn settings(&self) -> Vec<(&'static str, String)> {

@@ -12,6 +12,7 @@
 //! 1 − 1.4e-11 and 1.4e-11, since exp(−(10² − 0²)/(2 × 2)) = 1.4e-11.
 
 use super::ground::Ground;
+use super::handover::LedgerLine;
 use super::{ALL, Built, LevelPrior, Refusal, Source, SourceKind};
 use crate::diagnostics::{Fault, Faults};
 use crate::plan::Plan;
@@ -66,7 +67,7 @@ fn read(table: &Table, scale: Scale, plan: &Plan, faults: &mut Faults) -> Option
             faults.push(
                 Fault::wrong("wrong-part", format!("a part of a mixture cannot be \"{from}\""))
                     .at(own.span.place())
-                    .expected("a proper density: stated, quantiles, history or peers")
+                    .expected("a proper density: stated, quantiles, history, peers or carried")
                     .repair("state a wide prior in the place of a flat one"),
             );
             continue;
@@ -99,6 +100,7 @@ impl Source for Mixture {
             level: LevelPrior::Flat,
             notes: vec![format!("The prior is a mixture of {} parts.", self.parts.len())],
             cautions: Vec::new(),
+            ledger: Vec::new(),
         };
         let mut levels = Vec::new();
         for (weight, source) in &self.parts {
@@ -106,6 +108,9 @@ impl Source for Mixture {
             levels.push((weight / total, part.level));
             built.notes.extend(part.notes.into_iter().map(|note| format!("Part of weight {weight}: {note}")));
             built.cautions.extend(part.cautions);
+            let known = |line: &LedgerLine| built.ledger.iter().any(|own| own.period == line.period);
+            let new: Vec<LedgerLine> = part.ledger.into_iter().filter(|line| !known(line)).collect();
+            built.ledger.extend(new);
         }
         built.level = LevelPrior::Mixture(levels);
         Ok(built)

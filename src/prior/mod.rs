@@ -2,8 +2,10 @@
 //! of `[prior]` and turns them, with the data of earlier periods or other series, into a [`Model`].
 
 mod basis;
+pub mod carried;
 pub mod flat;
 pub mod ground;
+pub mod handover;
 pub mod history;
 pub mod mixture;
 pub mod peers;
@@ -37,7 +39,7 @@ pub type ReadSource = fn(&Table, Scale, &Plan, &mut Faults) -> Option<Box<dyn So
 
 /// All sources of a prior, in the order of the reference page.
 pub const ALL: &[SourceKind] =
-    &[stated::KIND, quantiles::KIND, history::KIND, peers::KIND, flat::KIND, mixture::KIND];
+    &[stated::KIND, quantiles::KIND, history::KIND, peers::KIND, carried::KIND, flat::KIND, mixture::KIND];
 
 /// A source with its keys read, ready to give the prior of any series.
 pub trait Source: Debug + Send + Sync {
@@ -58,6 +60,8 @@ pub struct Built {
     /// Sentences for the report: which source, which periods, which figures.
     pub notes: Vec<String>,
     pub cautions: Vec<Caution>,
+    /// Of a carried prior: the periods that its handover holds.
+    pub ledger: Vec<handover::LedgerLine>,
 }
 
 /// Why a source gives no prior for a series.
@@ -181,6 +185,17 @@ pub enum LevelPrior {
     Peers(Periods),
     /// Proper densities, each with its weight before the readings.
     Mixture(Vec<(f64, LevelPrior)>),
+}
+
+impl LevelPrior {
+    /// The earlier periods of the series that it holds; of a mixture, those of the first part that has any.
+    pub fn own_periods(&self) -> Option<&Periods> {
+        match self {
+            LevelPrior::Periods(periods) => Some(periods),
+            LevelPrior::Mixture(parts) => parts.iter().find_map(|(_, part)| part.own_periods()),
+            _ => None,
+        }
+    }
 }
 
 /// Earlier periods (or peers) and how their levels hang together.

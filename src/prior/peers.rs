@@ -81,7 +81,7 @@ impl Source for Peers {
             between: self.read.between,
             weight: self.read.weight,
         });
-        Ok(Built { level, notes, cautions })
+        Ok(Built { level, notes, cautions, ledger: Vec::new() })
     }
 
     fn settings(&self) -> Vec<(&'static str, String)> {

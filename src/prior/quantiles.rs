@@ -175,7 +175,7 @@ impl Source for Quantiles {
             }
             notes.push(text);
         }
-        Ok(Built { level: self.level.clone(), notes, cautions })
+        Ok(Built { level: self.level.clone(), notes, cautions, ledger: Vec::new() })
     }
 
     fn settings(&self) -> Vec<(&'static str, String)> {

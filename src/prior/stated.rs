@@ -196,7 +196,7 @@ impl Source for Stated {
 
     fn level(&self, _: &Ground<'_>) -> Result<Built, Refusal> {
         let notes = vec![format!("The prior is stated. Its basis: {}.", self.basis.trim_end_matches('.'))];
-        Ok(Built { level: self.level.clone(), notes, cautions: Vec::new() })
+        Ok(Built { level: self.level.clone(), notes, cautions: Vec::new(), ledger: Vec::new() })
     }
 
     fn settings(&self) -> Vec<(&'static str, String)> {

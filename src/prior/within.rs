@@ -7,6 +7,7 @@
 //! * `history`: p(σ²) ∝ 1/σ², from the readings of all periods used, pooled.
 //! * `readings`: p(σ²) ∝ 1/σ², from this period's readings alone.
 //! * `peers`: one σ for all series of this period, pooled.
+//! * `carried`: what the handover of the previous review holds of σ, with the readings of its ledger.
 //! * `none`: every reading brings its own uncertainty.
 //!
 //! Assumes the same σ in all periods that are pooled. Source: Gelman et al., Bayesian Data Analysis,
@@ -14,15 +15,17 @@
 //!
 //! A worked number: 4 readings with sum of squares 12 alone: σ² is 12 over a chi-square of 3 df.
 
+use super::carried::HandedOver;
 use super::ground::Ground;
 use super::stated::{geometric_sd, needed, only_linear, refuse_on_log};
-use super::{LevelPrior, Within, basis};
+use super::{LevelPrior, Refusal, Within, basis};
 use crate::data::evidence::Evidence;
 use crate::diagnostics::{Caution, Fault, Faults, Place};
 use crate::math::fm;
+use crate::plan::Plan;
 use crate::quantity::{Absent, Figure, Scale};
 use crate::spec::keys::{Key, Takes};
-use crate::spec::reader::{Reader, not_served};
+use crate::spec::reader::Reader;
 use crate::spec::table::Table;
 
 pub const KEYS: &[Key] = &[
@@ -50,7 +53,7 @@ pub struct WithinRead {
     pub place: Place,
 }
 
-#[derive(Debug, Clone, Copy, PartialEq)]
+#[derive(Debug, Clone, PartialEq)]
 pub enum From {
     /// On the model's scale; `df` may be infinite.
     Stated {
@@ -60,10 +63,11 @@ pub enum From {
     History,
     Readings,
     Peers,
+    Carried(Box<HandedOver>),
     None,
 }
 
-pub fn read(table: &Table, scale: Scale, faults: &mut Faults) -> Option<WithinRead> {
+pub fn read(table: &Table, scale: Scale, plan: &Plan, faults: &mut Faults) -> Option<WithinRead> {
     let mut reader = Reader::new(table, KEYS, faults);
     let from = reader.choice("from");
     let stated = from == Some("stated");
@@ -93,9 +97,9 @@ pub fn read(table: &Table, scale: Scale, faults: &mut Faults) -> Option<WithinRe
         Some("peers") => Some(From::Peers),
         Some("none") => Some(From::None),
         Some("carried") => {
-            let span = reader.span("from").clone();
-            reader.faults.push(not_served("a within sd carried from a handover", &span));
-            None
+            let handed = HandedOver::of(plan, None, &reader.span("from").place());
+            let handed = handed.map_err(|fault| reader.faults.push(fault)).ok();
+            handed.map(|handed| From::Carried(Box::new(handed)))
         }
         _ => None,
     };
@@ -117,10 +121,10 @@ pub fn read(table: &Table, scale: Scale, faults: &mut Faults) -> Option<WithinRe
 
 impl WithinRead {
     /// The within sd of one series, with what the reader must know of it.
-    pub fn within(&self, ground: &Ground<'_>, level: &LevelPrior) -> (Within, Vec<Caution>) {
+    pub fn within(&self, ground: &Ground<'_>, level: &LevelPrior) -> Result<(Within, Vec<Caution>), Refusal> {
         let mut cautions = Vec::new();
-        let within = match self.from {
-            From::Stated { sd, df } if df.is_infinite() => Within::Known(sd),
+        let within = match &self.from {
+            From::Stated { sd, df } if df.is_infinite() => Within::Known(*sd),
             From::Stated { sd, df } => {
                 cautions.push(
                     Caution::new(
@@ -129,7 +133,7 @@ impl WithinRead {
                     )
                     .of_series(ground.series),
                 );
-                Within::Worth { sd, df }
+                Within::Worth { sd: *sd, df: *df }
             }
             From::History => Within::Pooled {
                 others: if holds_periods(level) { Vec::new() } else { evidence(ground.earlier()) },
@@ -142,9 +146,13 @@ impl WithinRead {
                 },
             },
             From::Readings => Within::Readings,
+            From::Carried(handed) => handed
+                .series(ground.series)?
+                .next_within(level)
+                .map_err(|why| handed.unfit(ground.series, why))?,
             From::None => Within::None,
         };
-        (within, cautions)
+        Ok((within, cautions))
     }
 
     /// The stated sd on the model's scale, where there is one.
@@ -161,6 +169,7 @@ impl WithinRead {
             From::History => "history",
             From::Readings => "readings",
             From::Peers => "peers",
+            From::Carried(_) => "carried",
             From::None => "none",
         }
     }
@@ -176,10 +185,10 @@ impl WithinRead {
     /// In words, for the report.
     pub fn in_words(&self, scale: Scale) -> String {
         let of_log = if scale == Scale::Log { " of the natural logarithms" } else { "" };
-        let text = match self.from {
+        let text = match &self.from {
             From::Stated { sd, df } if df.is_infinite() => {
                 let factor = if scale == Scale::Log {
-                    format!(" (a factor of {:.4})", fm::exp(sd))
+                    format!(" (a factor of {:.4})", fm::exp(*sd))
                 } else {
                     String::new()
                 };
@@ -189,6 +198,7 @@ impl WithinRead {
             From::History => "unknown, from the readings of all periods used".to_string(),
             From::Readings => "unknown, from this period's readings alone".to_string(),
             From::Peers => "unknown, one for all series of this period".to_string(),
+            From::Carried(handed) => format!("carried from the review {}", handed.review()),
             From::None => "none: every reading brings its own uncertainty".to_string(),
         };
         match &self.basis {

@@ -24,6 +24,7 @@ use super::figures::Figures;
 use super::terms::{self, Mean};
 use super::{Question, QuestionKind, Subject, steps};
 use crate::data::PeriodData;
+use crate::data::evidence::Evidence;
 use crate::diagnostics::{Fault, Faults};
 use crate::plan::{Plan, QuestionPlan};
 use crate::posterior::{Law, When};
@@ -89,8 +90,29 @@ fn read_against(reader: &mut Reader<'_>, plan: &Plan) -> Option<Against> {
 }
 
 impl Change {
-    /// The earlier period that this series is compared with.
-    fn earlier<'a>(&self, subject: &Subject<'a>) -> Result<&'a PeriodData, Absent> {
+    /// The earlier period that this series is compared with, and its readings: in the data, or in the
+    /// handover that the prior was carried from.
+    fn earlier(&self, subject: &Subject<'_>) -> Result<(Period, Evidence), Absent> {
+        let in_data = self.earlier_in_data(subject);
+        let held = subject.posterior.as_ref().ok().and_then(|posterior| posterior.model.level.own_periods());
+        let held = held.map_or(&[][..], |periods| &periods.periods);
+        let own = |data: &PeriodData| (data.period.clone(), data.evidence.clone());
+        match (&self.against, in_data) {
+            (Against::Period(_), Ok(data)) => Ok(own(data)),
+            (Against::Period(period), Err(reason)) => {
+                held.iter().find(|(known, _)| known == period).cloned().ok_or(reason)
+            }
+            (_, in_data) => {
+                let series = subject.data;
+                let carried = held
+                    .last()
+                    .filter(|(period, _)| series.and_then(|series| series.period(period)).is_none());
+                carried.cloned().map_or_else(|| in_data.map(own), Ok)
+            }
+        }
+    }
+
+    fn earlier_in_data<'a>(&self, subject: &Subject<'a>) -> Result<&'a PeriodData, Absent> {
         let none = || Absent::because("the series has no earlier readings");
         let data = subject.data.ok_or_else(none)?;
         let review = &subject.plan.review.period;
@@ -123,8 +145,8 @@ impl Change {
         if self.against == Against::LongRun {
             return posterior.change_long_run();
         }
-        let earlier = self.earlier(subject)?;
-        posterior.change(&earlier.period, &earlier.evidence)
+        let (period, readings) = self.earlier(subject)?;
+        posterior.change(&period, &readings)
     }
 
     fn against_words(&self, subject: &Subject<'_>) -> String {
@@ -132,7 +154,7 @@ impl Change {
             Against::LongRun => "the long-run mean".to_string(),
             Against::Period(period) => format!("that of {period}"),
             Against::Previous => match self.earlier(subject) {
-                Ok(earlier) => format!("that of {}", earlier.period),
+                Ok((period, _)) => format!("that of {period}"),
                 Err(_) => "that of the period before".to_string(),
             },
         }

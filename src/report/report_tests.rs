@@ -107,6 +107,7 @@ fn series(name: &str, over: f64, verdict: &str) -> SeriesFindings {
         working: Vec::new(),
     };
     SeriesFindings {
+        carried_ledger: Vec::new(),
         name: name.to_string(),
         label: None,
         prior_from: "stated".to_string(),

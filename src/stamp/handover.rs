@@ -1,70 +1,13 @@
-//! handover.json: what a final review leaves for the next period's prior.
-//!
-//! Per series: the model and its period's evidence, from which a later review builds its prior again;
-//! the pieces of the posterior, which say the same in figures that can be read off; and a ledger of the
-//! periods that went in, so that no reading is ever counted twice. All numbers are on the model's scale
-//! (natural logarithms where the scale is log) and as measured: a stated bias is not taken out.
+//! Putting the handover of a review together from its findings.
 
-use crate::data::{Data, Mark, PeriodData, ReadingRow};
-use crate::data::{Fate, evidence::Evidence};
+use crate::data::evidence::Evidence;
+use crate::data::{Data, PeriodData};
 use crate::findings::{Findings, SeriesFindings};
-use crate::json::{Json, Object};
 use crate::posterior::{Piece, Posterior};
-use crate::prior::{LevelPrior, Model};
-use crate::quantity::{Period, Scale};
+use crate::prior::LevelPrior;
+use crate::prior::handover::{Handed, HandedPiece, Handover, LedgerLine, sorted_values};
+use crate::quantity::Period;
 use crate::source::sha256_hex;
-use crate::stamp::handover_model::{evidence_json, model_json};
-
-pub const FORMAT: &str = "reassay-handover/1";
-
-/// All that a handover holds.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Handover {
-    /// The id of the review that left it.
-    pub review: String,
-    /// The period that it reviewed.
-    pub period: Period,
-    pub quantity: String,
-    pub unit: String,
-    pub scale: Scale,
-    pub series: Vec<Handed>,
-}
-
-/// What is handed over of one series.
-#[derive(Debug, Clone, PartialEq)]
-pub struct Handed {
-    pub name: String,
-    /// Without the reviewed period; or why there is none.
-    pub model: Result<Model, String>,
-    /// What the reviewed period said.
-    pub readings: Evidence,
-    pub pieces: Vec<HandedPiece>,
-    /// In order of time, the reviewed period last.
-    pub ledger: Vec<LedgerLine>,
-}
-
-/// One piece of the posterior; pairs are mean and variance.
-#[derive(Debug, Clone, Copy, PartialEq)]
-pub struct HandedPiece {
-    pub weight: f64,
-    /// `None` where the prior is no model of periods.
-    pub next_level: Option<(f64, f64)>,
-    pub level: (f64, f64),
-    pub long_run_mean: Option<(f64, f64)>,
-    pub between_sd: Option<f64>,
-    pub reading_sd: f64,
-}
-
-/// A period whose readings went in.
-#[derive(Debug, Clone, PartialEq)]
-pub struct LedgerLine {
-    pub period: Period,
-    pub evidence: Evidence,
-    /// The number of readings used; `None` where only a mean and its uncertainty are known.
-    pub n: Option<u64>,
-    /// SHA-256 of [`sorted_values`]; `None` where single readings are not held.
-    pub sha256: Option<String>,
-}
 
 /// The handover of a review. Only final reviews leave one; the caller sees to that.
 pub fn handover(findings: &Findings) -> Handover {
@@ -86,6 +29,7 @@ fn handed(series: &SeriesFindings, findings: &Findings) -> Handed {
         model: posterior.map(|posterior| posterior.model.clone()).map_err(|absent| absent.reason.clone()),
         readings: posterior.map_or(Evidence::Nothing, |posterior| posterior.readings.clone()),
         pieces: posterior.map_or(Vec::new(), |posterior| posterior.pieces.iter().map(handed_piece).collect()),
+        part_weights: posterior.map_or(Vec::new(), Posterior::part_weights),
         ledger: posterior.map_or(Vec::new(), |posterior| ledger(series, posterior, findings)),
     }
 }
@@ -104,24 +48,25 @@ fn handed_piece(piece: &Piece) -> HandedPiece {
     }
 }
 
-/// The periods of the model's history and the one under review, with the hashes of their readings.
+/// The periods that went in, with the hashes of their readings: those of a handover that the prior was
+/// carried from, those of the model's history, and the one under review.
 fn ledger(series: &SeriesFindings, posterior: &Posterior, findings: &Findings) -> Vec<LedgerLine> {
+    let mut lines = series.carried_ledger.clone();
     let mut periods = Vec::new();
     periods_of(&posterior.model.level, &mut periods);
     let reviewed = &findings.plan.review.period;
     if !posterior.readings.is_nothing() {
         periods.push((reviewed.clone(), posterior.readings.clone()));
     }
-    periods
-        .into_iter()
-        .map(|(period, evidence)| {
-            let data = period_data(&findings.data, &series.name, &period);
-            let n = data.map_or(evidence.n(), |data| Some(data.facts.n)).filter(|n| *n > 0);
-            let sha256 =
-                data.and_then(|data| sorted_values(&data.readings)).map(|text| sha256_hex(text.as_bytes()));
-            LedgerLine { period, evidence, n, sha256 }
-        })
-        .collect()
+    periods.retain(|(period, _)| !lines.iter().any(|line| line.period == *period));
+    lines.extend(periods.into_iter().map(|(period, evidence)| {
+        let data = period_data(&findings.data, &series.name, &period);
+        let n = data.map_or(evidence.n(), |data| Some(data.facts.n)).filter(|n| *n > 0);
+        let sha256 =
+            data.and_then(|data| sorted_values(&data.readings)).map(|text| sha256_hex(text.as_bytes()));
+        LedgerLine { period, evidence, n, sha256 }
+    }));
+    lines
 }
 
 fn period_data<'a>(data: &'a Data, series: &str, period: &Period) -> Option<&'a PeriodData> {
@@ -145,102 +90,5 @@ fn periods_of(prior: &LevelPrior, found: &mut Vec<(Period, Evidence)>) {
         | LevelPrior::Stated { .. }
         | LevelPrior::Worth { .. }
         | LevelPrior::LongRun { .. } => {}
-    }
-}
-
-/// The used readings of a period as text: one line each, mark and value in shortest form, then a space
-/// and the reading's own uncertainty where it has one; sorted by value, mark, uncertainty; LF after
-/// every line. `None` where no single reading is held.
-pub fn sorted_values(rows: &[ReadingRow]) -> Option<String> {
-    let mut used: Vec<(f64, &str, f64)> = rows
-        .iter()
-        .filter(|row| row.fate == Fate::Used)
-        .filter_map(|row| {
-            let mark = match row.mark {
-                Mark::None => "",
-                Mark::Below => "<",
-                Mark::Above => ">",
-            };
-            row.value.map(|value| (value, mark, row.uncertainty.unwrap_or(0.0)))
-        })
-        .collect();
-    used.sort_by(|a, b| a.0.total_cmp(&b.0).then(a.1.cmp(b.1)).then(a.2.total_cmp(&b.2)));
-    let line = |(value, mark, uncertainty): &(f64, &str, f64)| {
-        if *uncertainty > 0.0 {
-            format!("{mark}{value:?} {uncertainty:?}\n")
-        } else {
-            format!("{mark}{value:?}\n")
-        }
-    };
-    (!used.is_empty()).then(|| used.iter().map(line).collect())
-}
-
-impl Handover {
-    /// The whole of handover.json.
-    pub fn to_json(&self) -> Json {
-        let quantity = Object::new()
-            .text("name", self.quantity.as_str())
-            .text("unit", self.unit.as_str())
-            .text("scale", self.scale.word());
-        Object::new()
-            .text("format", FORMAT)
-            .text("review", self.review.as_str())
-            .text("period", self.period.as_str())
-            .put("quantity", quantity.done())
-            .put("series", Json::List(self.series.iter().map(Handed::to_json).collect()))
-            .done()
-    }
-}
-
-impl Handed {
-    fn to_json(&self) -> Json {
-        let object = Object::new().text("name", self.name.as_str());
-        let mut object = match &self.model {
-            Ok(model) => object.put("model", model_json(model)),
-            Err(reason) => object.absent("model", reason.as_str()),
-        };
-        if self.model.is_ok() && self.pieces.is_empty() {
-            object.because("pieces", "the level is held as a density; the model builds it again");
-        } else if self.pieces.iter().any(|piece| piece.next_level.is_none()) {
-            object.because(
-                "next_level",
-                "the prior is no model of periods: take it from the history, or state between_sd",
-            );
-        }
-        object
-            .put("readings", evidence_json(&self.readings))
-            .put("pieces", Json::List(self.pieces.iter().copied().map(HandedPiece::to_json).collect()))
-            .put("ledger", Json::List(self.ledger.iter().map(LedgerLine::to_json).collect()))
-            .done()
-    }
-}
-
-impl HandedPiece {
-    fn to_json(self) -> Json {
-        let pair =
-            |(mean, variance): (f64, f64)| Json::List(vec![Json::number(mean), Json::number(variance)]);
-        Object::new()
-            .put("weight", Json::number(self.weight))
-            .put("next_level", self.next_level.map_or(Json::Null, pair))
-            .put("level", pair(self.level))
-            .put("long_run_mean", self.long_run_mean.map_or(Json::Null, pair))
-            .put("between_sd", self.between_sd.map_or(Json::Null, Json::number))
-            .put("reading_sd", Json::number(self.reading_sd))
-            .done()
-    }
-}
-
-impl LedgerLine {
-    fn to_json(&self) -> Json {
-        let object = Object::new().text("period", self.period.as_str());
-        let object = match self.n {
-            Some(n) => object.whole("n", n),
-            None => object.absent("n", "not counted"),
-        };
-        let object = match &self.sha256 {
-            Some(sha256) => object.text("sha256", sha256.as_str()),
-            None => object.absent("sha256", "single readings are not held"),
-        };
-        object.put("evidence", evidence_json(&self.evidence)).done()
     }
 }

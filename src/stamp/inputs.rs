@@ -3,7 +3,7 @@
 
 use crate::diagnostics::{Fault, Faults, Outcome};
 use crate::findings::Findings;
-use crate::plan::{FileRef, Plan, TemplateChoice};
+use crate::plan::{FileRef, FoundFile, Plan, TemplateChoice};
 use crate::source::{self, Hashed, sha256_hex};
 use crate::stamp::made::{Content, INPUTS};
 use std::path::{Path, PathBuf};
@@ -11,7 +11,7 @@ use std::path::{Path, PathBuf};
 /// One file that went in.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Input {
-    /// base, data, overrides or template.
+    /// base, data; stamp, answers or handover of another review; overrides or template.
     pub role: &'static str,
     /// As the spec names it.
     pub written: String,
@@ -31,7 +31,7 @@ impl Input {
     }
 }
 
-/// All inputs, in the order base, data, overrides, template; a file named twice stands once.
+/// All inputs, in the order base, data, other reviews, overrides, template; a file named twice stands once.
 pub fn of(findings: &Findings) -> Outcome<Vec<Input>> {
     let plan = &findings.plan;
     let mut inputs: Vec<Input> = Vec::new();
@@ -52,6 +52,10 @@ pub fn of(findings: &Findings) -> Outcome<Vec<Input>> {
         let hashed = Hashed { sha256: file.sha256.clone(), bytes: file.bytes };
         add(input("data", file.written.clone(), file.path.clone(), hashed));
     }
+    for (role, file, found) in linked(plan) {
+        let hashed = Hashed { sha256: found.sha256.clone(), bytes: found.bytes.len() as u64 };
+        add(input(role, file.written.clone(), file.path.clone(), hashed));
+    }
     for (role, file) in others(plan) {
         let hashed = source::stream(&file.path, &file.written, "hashing the input", |_| {})?;
         add(input(role, file.written.clone(), file.path.clone(), hashed));
@@ -64,6 +68,18 @@ pub fn of(findings: &Findings) -> Outcome<Vec<Input>> {
 
 fn input(role: &'static str, written: String, path: PathBuf, hashed: Hashed) -> Input {
     Input { role, written, path, sha256: hashed.sha256, bytes: hashed.bytes, kept: None }
+}
+
+/// What is read of other reviews.
+fn linked(plan: &Plan) -> Vec<(&'static str, &FileRef, &FoundFile)> {
+    let mut files = Vec::new();
+    for linked in &plan.linked {
+        let Some(found) = &linked.found else { continue };
+        files.push(("stamp", &linked.stamp_json, &found.stamp_json));
+        files.push(("answers", &linked.answers, &found.answers));
+        files.extend(found.handover.as_ref().map(|handover| ("handover", &linked.handover, handover)));
+    }
+    files
 }
 
 /// Inputs whose bytes the data does not hash.
@@ -88,7 +104,7 @@ pub fn written_from(plan: &Plan, path: &Path) -> String {
 fn name_copies(inputs: &mut [Input]) {
     let mut taken: Vec<String> = Vec::new();
     for input in inputs {
-        let own = harmless(input.written.rsplit('/').next().unwrap_or(&input.written));
+        let own = harmless(&own_name(input));
         let mut name = own.clone();
         let mut number = 2;
         while taken.contains(&name.to_lowercase()) {
@@ -100,6 +116,16 @@ fn name_copies(inputs: &mut [Input]) {
         }
         taken.push(name.to_lowercase());
         input.kept = Some(format!("{INPUTS}{name}"));
+    }
+}
+
+/// The last part of its path; a file of another review has that review's folder before it.
+fn own_name(input: &Input) -> String {
+    let mut parts = input.written.rsplit('/');
+    let name = parts.next().unwrap_or(&input.written);
+    match parts.next() {
+        Some(folder) if matches!(input.role, "stamp" | "answers" | "handover") => format!("{folder}-{name}"),
+        _ => name.to_string(),
     }
 }
 

@@ -9,8 +9,6 @@ mod laws;
 pub mod answers_csv;
 pub mod answers_json;
 pub mod handover;
-mod handover_model;
-mod handover_read;
 pub mod inputs;
 pub mod stamp_json;
 pub mod run_json;

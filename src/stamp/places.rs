@@ -25,6 +25,9 @@ impl Places {
                 files.iter_mut().for_each(lead);
             }
         }
+        for linked in &mut plan.linked {
+            [&mut linked.stamp_json, &mut linked.answers, &mut linked.handover].into_iter().for_each(lead);
+        }
         if let Some(overrides) = &mut plan.overrides {
             lead(&mut overrides.file);
         }

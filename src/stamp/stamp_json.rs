@@ -65,8 +65,8 @@ pub fn stamp_json(plan: &Plan, spec: &[u8], inputs: &[Input], left: &[Left]) -> 
         .text("format", FORMAT)
         .put("program", Object::new().text("name", PROGRAM).text("version", VERSION).done())
         .put("review", review)
-        .put("previous", link(plan.review.previous.as_ref()))
-        .put("supersedes", link(plan.review.supersedes.as_ref()))
+        .put("previous", link(plan, plan.review.previous.as_ref()))
+        .put("supersedes", link(plan, plan.review.supersedes.as_ref()))
         .put("spec", spec)
         .text("template", template)
         .put("inputs", Json::List(inputs.iter().map(input).collect()))
@@ -75,13 +75,12 @@ pub fn stamp_json(plan: &Plan, spec: &[u8], inputs: &[Input], left: &[Left]) -> 
         .to_file()
 }
 
-fn link(link: Option<&Link>) -> Json {
-    match link {
-        None => Json::Null,
-        Some(link) => {
-            Object::new().text("review", link.written.as_str()).text_if("stamp", link.stamp.as_deref()).done()
-        }
-    }
+/// Another review, with the stamp that it was found to have: the reviews form a chain.
+fn link(plan: &Plan, link: Option<&Link>) -> Json {
+    let Some(link) = link else { return Json::Null };
+    let found = plan.linked(&link.written).and_then(|linked| linked.found.as_ref());
+    let stamp = found.map(|found| found.stamp.as_str()).or(link.stamp.as_deref());
+    Object::new().text("review", link.written.as_str()).text_if("stamp", stamp).done()
 }
 
 fn input(input: &Input) -> Json {

@@ -1,11 +1,11 @@
 //! Reading handover.json back, for a prior that is carried from one period to the next.
 
+use super::model::{read_evidence, read_model, read_scale};
+use super::{FORMAT, Handed, HandedPiece, Handover, LedgerLine};
 use crate::diagnostics::Fault;
 use crate::json::At;
 use crate::json::Json;
 use crate::quantity::Period;
-use crate::stamp::handover::{FORMAT, Handed, HandedPiece, Handover, LedgerLine};
-use crate::stamp::handover_model::{read_evidence, read_model, read_scale};
 
 impl Handover {
     /// Reads the bytes of a handover.json that the user knows as `name`.
@@ -46,6 +46,7 @@ fn handed(at: &At<'_>) -> Result<Handed, String> {
         model,
         readings: read_evidence(&at.key("readings")?)?,
         pieces: at.each("pieces", piece)?,
+        part_weights: at.each("part_weights", At::as_number)?,
         ledger: at.each("ledger", ledger_line)?,
     })
 }
@@ -178,12 +179,20 @@ mod tests {
             |(evidence, n, sha256)| LedgerLine { period: Period::new("2024"), evidence, n, sha256 },
         );
         let model = prop_oneof![model().prop_map(Ok), ".{0,12}".prop_map(Err)];
-        (".{1,8}", model, evidence(), prop::collection::vec(piece, 0..4), prop::collection::vec(line, 0..3))
-            .prop_map(|(name, model, readings, pieces, ledger)| Handed {
+        (
+            ".{1,8}",
+            model,
+            evidence(),
+            prop::collection::vec(piece, 0..4),
+            prop::collection::vec(number(), 0..3),
+            prop::collection::vec(line, 0..3),
+        )
+            .prop_map(|(name, model, readings, pieces, part_weights, ledger)| Handed {
                 name,
                 model,
                 readings,
                 pieces,
+                part_weights,
                 ledger,
             })
     }
