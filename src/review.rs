@@ -214,11 +214,37 @@ pub fn review(prepared: Prepared, data: Data, jobs: usize) -> Outcome<Findings> 
         cautions.extend(question.cautions(&prepared.plan).into_iter().map(of_question));
     }
     let (series, faults) = keep_exact(series);
-    let mut findings =
-        Findings { plan: prepared.plan, data, series, not_reviewed, across, cautions, quadrature_error };
+    let settings = settings_of(&prepared);
+    let mut findings = Findings {
+        plan: prepared.plan,
+        data,
+        series,
+        not_reviewed,
+        across,
+        cautions,
+        compared: Vec::new(),
+        settings,
+        quadrature_error,
+    };
+    findings.compared = findings::compared::of(&findings)?;
     let following = crate::findings::cautions::of(&findings);
     findings.cautions.extend(following);
     faults.or(findings)
+}
+
+/// The keys of priors and within sds with their defaults, by the path of their table.
+fn settings_of(prepared: &Prepared) -> Vec<(String, Vec<(&'static str, String)>)> {
+    let general = std::iter::once((String::new(), &prepared.general));
+    let own = prepared.own.iter().map(|(name, settings)| (format!("series.{name}."), settings));
+    general
+        .chain(own)
+        .flat_map(|(path, settings)| {
+            [
+                (format!("{path}prior"), settings.source.settings()),
+                (format!("{path}within"), settings.within.settings()),
+            ]
+        })
+        .collect()
 }
 
 fn nothing_to_review(plan: &Plan, data: &Data) -> Fault {

@@ -240,6 +240,57 @@ fn a_stated_long_run_is_carried_in_closed_form() {
     let mean: f64 = variance * (42.0 / 9.0 + 45.0 / 5.0);
     assert!((level["mean"].as_f64().unwrap() - mean).abs() < 1e-12 * mean, "{level}");
     assert!((level["sd"].as_f64().unwrap() - (variance + 4.0_f64).sqrt()).abs() < 1e-12, "{level}");
+
+    // The mean of one reading was foretold as N(43.93, 3.214 + 4 + 4); Φ and its quantile by mpmath.
+    let foretold = desk.answers("b")["previous"]["series"][0]["predictions"][0].clone();
+    let number = |field: &str| foretold[field].as_f64().unwrap();
+    assert!((number("cdf") - 0.4490829482547055).abs() < 1e-12, "{foretold}");
+    assert!((number("lower") - 37.365095461149366).abs() < 1e-10, "{foretold}");
+    assert_eq!((number("outcome"), number("inside")), (43.5, 1.0));
+}
+
+/// What changed since the previous review is said: answers, limits, questions and actions.
+#[test]
+fn the_previous_review_is_compared_with() {
+    let desk = Desk::new("compared");
+    fs::write(desk.0.join("first.csv"), csv(2019..=2024, &["A", "B"])).unwrap();
+    fs::write(desk.0.join("2025.csv"), csv(2025..=2025, &["A", "C"])).unwrap();
+    let limit = |value: &str| {
+        format!(
+            "[limit.g]\nvalue = {value}\nbasis = \"made up\"\napplies_to = \"level\"\n[[question]]\nid = \"limit\"\nask = \"level chance\"\nabove = \"g\"\n"
+        )
+    };
+    let action = "[[action]]\nwhat = \"check the pump\"\nstate = \"open\"\n";
+    let then = spec("carried-2024", 2024, "first.csv", "history", &[]) + &limit("22.5") + action;
+    let now = (spec("next", 2025, "2025.csv", "carried", &[]) + &limit("23"))
+        .replace("from = \"carried\"", "from = \"carried\"\notherwise = { from = \"flat\" }")
+        .replace("above = 22.5", "above = 21.5");
+    let (status, said) = desk.report("carried-2024", &then);
+    assert_eq!(status, 0, "{said}");
+    let (status, said) = desk.report("next", &now);
+    assert_eq!(status, 0, "{said}");
+    let answers = desk.answers("next");
+    let before = desk.answers("carried-2024");
+    let previous = &answers["previous"];
+    assert_eq!(previous["limits"][0]["then"][0], 22.5);
+    assert_eq!(previous["lost_actions"][0], "check the pump");
+    assert_eq!(
+        previous["series"][0]["answers"][0]["estimate"]["then"],
+        before["series"][0]["answers"][0]["estimate"]
+    );
+    assert_eq!(
+        previous["series"][0]["answers"][0]["estimate"]["now"],
+        answers["series"][0]["answers"][0]["estimate"]
+    );
+    assert_eq!(previous["series"][0]["answers"][2]["asked_differently"][0], "above");
+    assert_eq!(previous["series"][1]["why"]["answers"], "that review did not hold this series");
+    let codes: Vec<&str> =
+        answers["cautions"].as_array().unwrap().iter().map(|own| own["code"].as_str().unwrap()).collect();
+    for code in ["open-action-missing", "limit-differs", "asked-differently", "prior-otherwise"] {
+        assert!(codes.contains(&code), "{code} {codes:?}");
+    }
+    let (status, said) = desk.run(&["audit", "reviews/next"]);
+    assert_eq!(status, 0, "{said}");
 }
 
 /// A final review of 2024 with the years before it, and one of 2025 carried from it, changed by `change`.

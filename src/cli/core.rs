@@ -47,14 +47,17 @@ pub fn make(again: &Again, shown: &str, jobs: usize) -> Outcome<(Findings, Made)
     Ok((findings, made))
 }
 
-/// The questions' keys with their defaults, for plan.toml.
+/// The keys of priors, within sds and questions with their defaults, for plan.toml.
 fn filled(findings: &Findings) -> Vec<(String, Vec<(String, String)>)> {
-    let mut filled: Vec<(String, Vec<(String, String)>)> = Vec::new();
+    let owned = |keys: &[(&'static str, String)]| -> Vec<(String, String)> {
+        keys.iter().map(|(key, value)| (key.to_string(), value.clone())).collect()
+    };
+    let mut filled: Vec<(String, Vec<(String, String)>)> =
+        findings.settings.iter().map(|(path, keys)| (path.clone(), owned(keys))).collect();
     for answer in findings.series.iter().flat_map(|series| &series.answers) {
         let table = format!("question.{}", answer.id);
         if !filled.iter().any(|(known, _)| *known == table) {
-            let keys = answer.settings.iter().map(|(key, value)| (key.to_string(), value.clone()));
-            filled.push((table, keys.collect()));
+            filled.push((table, owned(&answer.settings)));
         }
     }
     filled

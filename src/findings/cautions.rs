@@ -24,16 +24,45 @@ pub fn of(findings: &Findings) -> Vec<Caution> {
             "No allowance for a bias common to all readings was given: the intervals cover random variation only.",
         ));
     }
-    if plan.review.previous.is_some() {
-        all.push(Caution::new(
-            "previous-not-compared",
-            "The previous review is named, but this version neither compares with it nor scores its predictions.",
-        ));
-    }
+    all.extend(of_other_reviews(findings));
     for series in &findings.series {
         all.extend(of_series(findings, series));
     }
     all
+}
+
+/// Open actions that fell out of sight, limits that moved, and a period that was not the one before.
+fn of_other_reviews(findings: &Findings) -> Vec<Caution> {
+    let mut cautions = Vec::new();
+    for other in &findings.compared {
+        for action in &other.lost_actions {
+            cautions.push(Caution::new(
+                "open-action-missing",
+                format!("The action \"{action}\" was open in the review {} and is not named here.", other.id),
+            ));
+        }
+        for (name, ..) in &other.limits {
+            cautions.push(Caution::new(
+                "limit-differs",
+                format!("The limit \"{name}\" was another in the review {}: probabilities against it cannot be compared.", other.id),
+            ));
+        }
+        let differently: Vec<&str> = findings
+            .plan
+            .questions
+            .iter()
+            .map(|question| question.id.as_str())
+            .filter(|id| {
+                let changes = other.series.iter().flat_map(|series| &series.changes);
+                changes.into_iter().any(|change| change.id == *id && !change.asked_differently.is_empty())
+            })
+            .collect();
+        for id in differently {
+            let text = format!("This question was asked differently in the review {}.", other.id);
+            cautions.push(Caution::new("asked-differently", text).of_question(id));
+        }
+    }
+    cautions
 }
 
 fn of_rules(findings: &Findings) -> Vec<Caution> {

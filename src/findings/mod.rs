@@ -1,6 +1,7 @@
 //! What the review found: the one value that the report and the stamp see.
 
 pub mod cautions;
+pub mod compared;
 
 use crate::checks::Check;
 use crate::data::Data;
@@ -24,6 +25,10 @@ pub struct Findings {
     pub not_reviewed: Vec<(String, String)>,
     pub across: Vec<AcrossFindings>,
     pub cautions: Vec<Caution>,
+    /// The reviews that the spec names, held against this one.
+    pub compared: Vec<compared::Compared>,
+    /// Keys of `prior` and `within` with their defaults, by the table's path, as TOML values.
+    pub settings: Vec<(String, Vec<(&'static str, String)>)>,
     /// Largest error reached by any quadrature.
     pub quadrature_error: f64,
 }

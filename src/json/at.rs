@@ -40,6 +40,11 @@ impl<'a> At<'a> {
         Some(At { value, way: self.way_to(key) })
     }
 
+    /// The value as it stands, on one line.
+    pub fn as_written(&self) -> String {
+        self.value.to_line()
+    }
+
     pub fn as_text(&self) -> Result<&'a str, String> {
         self.value.as_text().ok_or_else(|| self.fault("a text"))
     }

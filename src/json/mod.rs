@@ -5,11 +5,13 @@
 //! undefined is never written. [`Object`] turns an absent figure into null and says why in its `why`.
 
 mod at;
+mod toml;
 
 use crate::quantity::Figure;
 pub use at::At;
 use serde::de::{Deserialize, Deserializer, Error, MapAccess, SeqAccess, Visitor};
 use std::fmt;
+pub use toml::of_toml;
 
 /// Columns up to which a list or an object stays on one line.
 const LINE_COLUMNS: usize = 110;

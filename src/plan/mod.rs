@@ -169,6 +169,16 @@ pub enum Bounds {
     Range(f64, f64),
 }
 
+impl Bounds {
+    /// The value, or the lower and the upper bound.
+    pub fn ends(self) -> Vec<f64> {
+        match self {
+            Bounds::Value(value) => vec![value],
+            Bounds::Range(lower, upper) => vec![lower, upper],
+        }
+    }
+}
+
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub enum AppliesTo {
     EachReading,

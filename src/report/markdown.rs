@@ -34,6 +34,7 @@ pub const SECTIONS: &[(&str, &str)] = sections![
     "series.md",
     "one-series.md",
     "cautions.md",
+    "compared.md",
     "opinion.md",
     "reproduction.md",
     "sign-off.md",

@@ -182,6 +182,8 @@ fn findings(names: &[&str]) -> Findings {
         }],
     };
     Findings {
+        compared: Vec::new(),
+        settings: Vec::new(),
         plan: plan(),
         data: Data {
             series: names.iter().map(data_of).collect(),

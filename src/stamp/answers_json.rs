@@ -1,15 +1,15 @@
 //! answers.json: every figure in full precision, in the order of the contract.
 
 use crate::data::Data;
+use crate::findings::compared::{Changed, Foretold, Prediction, Relation, SeriesThen};
 use crate::findings::{AcrossFindings, Answer, Findings, SeriesFindings, UnderAlternative};
-use crate::json::{Json, Object, reason_against};
-use crate::plan::Plan;
+use crate::json::{Json, Object, of_toml, reason_against};
+use crate::plan::{Action, Limit, Plan};
 use crate::posterior::Posterior;
 use crate::quantity::Absent;
 use crate::questions::figures::{Figures, Item};
 use crate::questions::rule::Given;
 use crate::stamp::laws::{self, LawFigures};
-use toml::de::{DeTable, DeValue};
 
 pub const FORMAT: &str = "reassay-answers/1";
 
@@ -30,9 +30,12 @@ pub fn answers_json(findings: &Findings) -> Json {
         .put("review", review(plan))
         .put("quantity", quantity(plan))
         .put("series", Json::List(series))
+        .put("limits", limits(plan))
+        .put("actions", Json::List(plan.actions.iter().map(action).collect()))
         .put("across", Json::List(findings.across.iter().map(across).collect()))
         .put("cautions", Json::List(cautions.collect()))
-        .put("previous", Object::new().done())
+        .put("previous", beside(findings, Relation::Previous))
+        .put("supersedes", beside(findings, Relation::Amended))
         .put("numerics", Object::new().number("quadrature_error", findings.quadrature_error).done())
         .done()
 }
@@ -53,6 +56,94 @@ fn quantity(plan: &Plan) -> Json {
         .text("name", plan.quantity.name.as_str())
         .text("unit", plan.quantity.unit.as_str())
         .text("scale", plan.quantity.scale.word())
+        .done()
+}
+
+/// Every limit by its name: a value, or its lower and upper bound.
+fn limits(plan: &Plan) -> Json {
+    let ends = |limit: &Limit| Json::List(limit.bounds.ends().into_iter().map(Json::number).collect());
+    plan.limits.iter().fold(Object::new(), |object, limit| object.put(&limit.name, ends(limit))).done()
+}
+
+fn action(action: &Action) -> Json {
+    Object::new()
+        .text("what", action.what.as_str())
+        .text_if("owner", action.owner.as_deref())
+        .text_if("due", action.due.map(|due| due.to_string()).as_deref())
+        .text("state", action.state.as_str())
+        .text_if("set_by", action.set_by.as_deref())
+        .done()
+}
+
+/// This review beside another: empty where the spec names none.
+fn beside(findings: &Findings, relation: Relation) -> Json {
+    let Some(other) = findings.compared.iter().find(|other| other.relation == relation) else {
+        return Object::new().done();
+    };
+    let differing = other.limits.iter().map(|(name, then, now)| {
+        let ends = |ends: &[f64]| Json::List(ends.iter().copied().map(Json::number).collect());
+        Object::new().text("name", name.as_str()).put("then", ends(then)).put("now", ends(now)).done()
+    });
+    let lost = other.lost_actions.iter().map(Json::text);
+    Object::new()
+        .text("review", other.id.as_str())
+        .text("stamp", other.stamp.as_str())
+        .text("period", other.period.as_str())
+        .put("limits", Json::List(differing.collect()))
+        .put("lost_actions", Json::List(lost.collect()))
+        .put("series", Json::List(other.series.iter().map(series_then).collect()))
+        .done()
+}
+
+fn series_then(then: &SeriesThen) -> Json {
+    let mut object = Object::new().text("name", then.name.as_str());
+    if let Some(why) = &then.why {
+        return object.absent("answers", why.as_str()).done();
+    }
+    if let Some(why) = &then.not_scored {
+        object.because("predictions", why.as_str());
+    }
+    object
+        .put("answers", Json::List(then.changes.iter().map(changed).collect()))
+        .put("predictions", Json::List(then.predictions.iter().map(prediction).collect()))
+        .done()
+}
+
+fn changed(changed: &Changed) -> Json {
+    let number = |value: Option<f64>| value.map_or(Json::Null, Json::number);
+    let object = Object::new().text("id", changed.id.as_str()).text("ask", changed.ask.as_str());
+    let mut object = changed.figures.iter().fold(object, |object, (field, then, now)| {
+        object.put(field, Object::new().put("then", number(*then)).put("now", number(*now)).done())
+    });
+    if changed.verdict_then.is_some() || changed.verdict_now.is_some() {
+        let verdicts = Object::new()
+            .text_if("then", changed.verdict_then.as_deref())
+            .text_if("now", changed.verdict_now.as_deref());
+        object = object.put("verdict", verdicts.done());
+    }
+    let differently = changed.asked_differently.iter().map(Json::text);
+    object.put("asked_differently", Json::List(differently.collect())).done()
+}
+
+fn prediction(prediction: &Prediction) -> Json {
+    let number = |value: Option<f64>| value.map_or(Json::Null, Json::number);
+    Object::new()
+        .text_if("id", prediction.question.as_deref())
+        .text(
+            "of",
+            match prediction.of {
+                Foretold::Mean => "mean of the readings",
+                Foretold::EachReading => "each reading",
+                Foretold::Level => "level",
+            },
+        )
+        .number("probability", prediction.probability)
+        .put("lower", number(prediction.lower))
+        .put("upper", number(prediction.upper))
+        .put("outcome", number(prediction.outcome))
+        .whole("inside", prediction.inside)
+        .whole("outcomes", prediction.outcomes)
+        .figure("cdf", &prediction.cdf)
         .done()
 }
 
@@ -140,7 +231,7 @@ fn answer(answer: &Answer) -> Json {
     for (key, value) in &answer.settings {
         // A setting that has the name of a figure would hide it; the plan holds it too.
         if answer.figures.get(key).is_none() && !object.has(key) {
-            object = object.put(key, setting(value));
+            object = object.put(key, of_toml(value));
         }
     }
     object = put_figures(object, &answer.figures);
@@ -228,60 +319,11 @@ fn across(across: &AcrossFindings) -> Json {
     put_verdict(object, across.verdict.as_ref()).done()
 }
 
-/// A setting, given as a TOML value; what is none is kept as its text.
-fn setting(written: &str) -> Json {
-    let line = format!("x = {written}");
-    match DeTable::parse(&line) {
-        Ok(table) => {
-            let value = table.get_ref().iter().find(|(key, _)| key.get_ref() == "x");
-            value.map_or_else(|| Json::text(written), |(_, value)| from_toml(value.get_ref()))
-        }
-        Err(_) => Json::text(written),
-    }
-}
-
-fn from_toml(value: &DeValue<'_>) -> Json {
-    match value {
-        DeValue::String(text) => Json::text(text.as_ref()),
-        DeValue::Boolean(flag) => Json::Flag(*flag),
-        DeValue::Integer(whole) => {
-            let digits = whole.as_str().replace('_', "");
-            match u64::from_str_radix(&digits, whole.radix()) {
-                Ok(whole) => Json::Whole(whole),
-                Err(_) => digits.parse().map_or(Json::Null, Json::number),
-            }
-        }
-        DeValue::Float(float) => {
-            let number = float.as_str().replace('_', "").parse().unwrap_or(f64::NAN);
-            // A spec may say `inf`, JSON may not.
-            if f64::is_finite(number) { Json::number(number) } else { Json::text(float.as_str()) }
-        }
-        DeValue::Datetime(date) => Json::text(date.to_string()),
-        DeValue::Array(items) => Json::List(items.iter().map(|item| from_toml(item.get_ref())).collect()),
-        DeValue::Table(table) => {
-            let field = |key: &str, value| (key.to_string(), from_toml(value));
-            Json::Object(table.iter().map(|(key, value)| field(key.get_ref(), value.get_ref())).collect())
-        }
-    }
-}
-
 #[cfg(test)]
 mod tests {
     use super::*;
     use crate::questions::figures::Meaning;
     use proptest::prelude::*;
-
-    #[test]
-    fn settings_become_json_values() {
-        assert_eq!(setting("0.95").to_line(), "0.95");
-        assert_eq!(setting("12").to_line(), "12");
-        assert_eq!(setting("-3").to_line(), "-3.0");
-        assert_eq!(setting("\"central\"").to_line(), "\"central\"");
-        assert_eq!(setting("[25.0, 50.0]").to_line(), "[25.0, 50.0]");
-        assert_eq!(setting("true").to_line(), "true");
-        assert_eq!(setting("inf").to_line(), "\"inf\"");
-        assert_eq!(setting("not a value").to_line(), "\"not a value\"");
-    }
 
     #[test]
     fn an_absent_figure_is_null_with_its_reason() {

@@ -86,6 +86,8 @@ fn make(again: &Again) -> Outcome<Made> {
         cautions: Vec::new(),
     };
     let findings = Findings {
+        compared: Vec::new(),
+        settings: Vec::new(),
         plan,
         data,
         series: Vec::new(),

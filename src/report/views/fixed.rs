@@ -6,6 +6,10 @@ use super::table::{Column, TableView, code, plain};
 /// What a caution's code stands for, whatever its text.
 pub const CODES: &[(&str, &str)] = &[
     (
+        "asked-differently",
+        "A question's settings are not those of the review that this one is compared with.",
+    ),
+    (
         "check-flagged",
         "A check of an assumption is flagged (p below 0.01, or a fact that puts answers in doubt).",
     ),
@@ -15,6 +19,8 @@ pub const CODES: &[(&str, &str)] = &[
         "ids-not-compared",
         "Rows bear no id, so the same reading found twice could not be told from two equal readings.",
     ),
+    ("ledger-differs", "Readings of an earlier period are not those that went into the handover."),
+    ("limit-differs", "A limit is not that of the review that this one is compared with."),
     ("limit-applies-to-other", "A limit is held against something other than what its basis sets it for."),
     ("limit-for-something-else", "A limit is held against something other than what its basis sets it for."),
     ("many-excluded", "More than one reading in ten is excluded."),
@@ -36,7 +42,7 @@ pub const CODES: &[(&str, &str)] = &[
         "No uncertainty common to all readings was given; intervals cover random variation only.",
     ),
     ("no-readings", "The period under review has no readings."),
-    ("previous-not-compared", "The previous review is named, but not compared with and not scored."),
+    ("open-action-missing", "An action that was open in the previous review is not named in this one."),
     ("plug-in", "An estimated between sd is used as if it were known."),
     ("prior-alone-decides", "The prior alone would give the verdict."),
     ("prior-nearly-decides", "The prior alone nearly meets what the rule asks."),

@@ -2,6 +2,7 @@
 //! Nothing here is a raw number, so a template cannot print a doubtful digit.
 
 pub mod answers;
+pub mod compared;
 pub mod data;
 pub mod drawings;
 pub mod fixed;
@@ -15,9 +16,11 @@ pub mod table;
 use super::{StampText, escape, text};
 use crate::checks::FLAG_BELOW;
 use crate::findings::Findings;
+use crate::findings::compared::Relation;
 use crate::plan::{AppliesTo, Detail, Status};
 use crate::quantity::Scale;
 use answers::AcrossView;
+use compared::ComparedView;
 use data::DataView;
 use drawings::{Drawings, FigureView};
 use head::SummaryView;
@@ -47,7 +50,10 @@ pub struct ReportView {
     pub log_scale: bool,
     pub particulars: Vec<(String, String)>,
     pub supersedes: Option<LinkView>,
-    pub previous: Option<LinkView>,
+    /// The previous review beside this one.
+    pub before: Option<ComparedView>,
+    /// The review that this one amends, beside it.
+    pub superseded: Option<ComparedView>,
     pub stamp: String,
     pub stamp_label: String,
     pub program: String,
@@ -136,7 +142,8 @@ pub fn build(findings: &Findings, stamp: &StampText) -> (ReportView, Drawings) {
         log_scale: plan.quantity.scale == Scale::Log,
         particulars: review.particulars.clone(),
         supersedes: review.supersedes.as_ref().map(link),
-        previous: review.previous.as_ref().map(link),
+        before: compared::view(findings, Relation::Previous),
+        superseded: compared::view(findings, Relation::Amended),
         stamp: stamp.whole.clone(),
         stamp_label: stamp.label.clone(),
         program: stamp.program.clone(),
