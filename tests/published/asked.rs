@@ -1,6 +1,6 @@
 //! A spec from a few lines, and the program's answers to it.
 
-use reassay::stamp::json::Json;
+use reassay::json::Json;
 use std::fs;
 use std::path::Path;
 use std::process::Command;

@@ -15,7 +15,7 @@ mod predicted;
 mod textbook;
 mod updated;
 
-use reassay::stamp::json::Json;
+use reassay::json::Json;
 use std::path::Path;
 use std::sync::OnceLock;
 
