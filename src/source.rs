@@ -5,9 +5,9 @@
 
 use crate::diagnostics::{Fault, Place};
 use sha2::{Digest, Sha256};
-use std::fs::File;
+use std::fs::{self, File};
 use std::io::{ErrorKind, Read, Write};
-use std::path::Path;
+use std::path::{Path, PathBuf};
 use std::sync::Arc;
 use std::sync::mpsc::{SyncSender, sync_channel};
 
@@ -43,6 +43,14 @@ pub fn whole(path: &Path, name: &str, doing: &str) -> Result<Vec<u8>, Fault> {
     let mut bytes = Vec::new();
     file.read_to_end(&mut bytes).map_err(|error| unreadable(name, doing, &error))?;
     Ok(bytes)
+}
+
+/// What lies in a folder, sorted; nothing where it cannot be listed.
+pub fn listed(folder: &Path) -> Vec<PathBuf> {
+    let mut found: Vec<PathBuf> =
+        fs::read_dir(folder).map(|all| all.flatten().map(|entry| entry.path()).collect()).unwrap_or_default();
+    found.sort();
+    found
 }
 
 /// The text of a file's bytes: strict UTF-8, a leading byte order mark left out.

@@ -70,15 +70,9 @@ const LINEAR: &[(&str, &str, &str)] = &[
     ),
     (
         "pooled",
-        "prior = { from = \"history\", between = \"half-normal\", between_scale = 1.5, basis = \"made up\" }\nwithin = { from = \"history\" }",
+        "prior = { from = \"history\", between_sd = 0.9, basis = \"made up\" }\nwithin = { from = \"history\" }",
         "within = { from = \"carried\" }",
     ),
-    (
-        "mixed",
-        "prior = { from = \"mixture\", parts = [ { weight = 0.7, from = \"history\", between_sd = 0.9, basis = \"made up\" }, { weight = 0.3, from = \"history\", between = \"none\" } ] }",
-        "",
-    ),
-    ("marked", "prior = { from = \"history\", between_sd = 0.9, basis = \"made up\" }", ""),
 ];
 
 /// Readings of a series in a year: unequal numbers, no two alike.
@@ -215,6 +209,51 @@ fn a_carried_prior_equals_the_history_computed_afresh() {
 fn on_the_log_scale_too() {
     let some: Vec<_> = LINEAR.iter().filter(|own| ["known", "pooled"].contains(&own.0)).copied().collect();
     chain("log", &some);
+}
+
+/// The parts of a mixture weigh in the next year what the readings have left them. By hand: given the between sd τ
+/// (0.9 and 0 here), the levels before 2024 say N(μ̂, τ² + V) of that year's level, methods §3.
+#[test]
+fn the_parts_of_a_mixture_are_carried_with_their_weights() {
+    let desk = Desk::new("mixture");
+    fs::write(desk.0.join("first.csv"), csv(2019..=2024, &["A"])).unwrap();
+    fs::write(desk.0.join("2025.csv"), csv(2025..=2025, &["A"])).unwrap();
+    let prior = "prior = { from = \"mixture\", parts = [ { weight = 0.7, from = \"history\", between_sd = 0.9, basis = \"made up\" }, { weight = 0.3, from = \"history\", between = \"none\" } ] }";
+    let first = spec("carried-2024", 2024, "first.csv", "history", &[("A", prior.to_string())]);
+    let (status, said) = desk.report("carried-2024", &first);
+    assert_eq!(status, 0, "{said}");
+    let (status, said) = desk.report("next", &spec("next", 2025, "2025.csv", "carried", &[]));
+    assert_eq!(status, 0, "{said}");
+
+    let sigma2 = 1.1 * 1.1;
+    let mean = |year: u32| {
+        let values = readings(0, year);
+        (values.iter().sum::<f64>() / values.len() as f64, sigma2 / values.len() as f64)
+    };
+    let about = |tau: f64, last: u32| {
+        let (mut weight, mut weighted) = (0.0, 0.0);
+        for (mean, error) in (2019..=last).map(mean) {
+            let own = 1.0 / (tau * tau + error);
+            weight += own;
+            weighted += own * mean;
+        }
+        (weighted / weight, 1.0 / weight)
+    };
+    let (came, error) = mean(2024);
+    let shares = [(0.7, 0.9), (0.3, 0.0)].map(|(before, tau)| {
+        let (centre, long) = about(tau, 2023);
+        let variance = tau * tau + long + error;
+        (
+            before * reassay::math::fm::exp(-(came - centre) * (came - centre) / (2.0 * variance))
+                / variance.sqrt(),
+            tau,
+        )
+    });
+    let all: f64 = shares.iter().map(|(share, _)| share).sum();
+    let wanted: f64 = shares.iter().map(|(share, tau)| share / all * about(*tau, 2024).0).sum();
+    let got = desk.answers("next")["series"][0]["prior"]["level"]["mean"].as_f64().unwrap();
+    assert!((got - wanted).abs() < 1e-10 * wanted, "{got} {wanted}");
+    assert!((shares[0].0 / all - 0.7).abs() > 0.005, "the readings have moved the weights: {shares:?}");
 }
 
 /// A stated long run with a known σ: closed form, by hand on the page of `carried`.

@@ -3,8 +3,7 @@
 use crate::diagnostics::{Fault, Faults, Outcome};
 use crate::json::{At, Json};
 use crate::plan::{FileRef, FoundFile, FoundReview, LinkedReview, Plan};
-use crate::source::{sha256_hex, whole};
-use std::fs;
+use crate::source::{listed, sha256_hex, whole};
 use std::path::Path;
 
 /// Reads every review that the spec names into the plan.
@@ -103,10 +102,8 @@ fn unread(file: &FileRef, why: &str) -> Fault {
 /// reads the copies, which have no neighbours: it finds none, and need not.
 fn superseded_by(stamp_json: &Path, stamp: &str) -> Option<String> {
     let beside = stamp_json.parent()?.parent()?;
-    let mut folders: Vec<_> = fs::read_dir(beside).ok()?.filter_map(Result::ok).map(|e| e.path()).collect();
-    folders.sort();
-    folders.iter().find_map(|folder| {
-        let bytes = fs::read(folder.join("stamp.json")).ok()?;
+    listed(beside).iter().find_map(|folder| {
+        let bytes = whole(&folder.join("stamp.json"), "stamp.json", "reading another review").ok()?;
         let json = Json::read(&bytes).ok()?;
         let amended = json.get("supersedes")?.get("stamp")?.as_text()?;
         (amended == stamp).then(|| json.get("review")?.get("id")?.as_text().map(str::to_string))?

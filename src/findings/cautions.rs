@@ -41,10 +41,10 @@ fn of_other_reviews(findings: &Findings) -> Vec<Caution> {
                 format!("The action \"{action}\" was open in the review {} and is not named here.", other.id),
             ));
         }
-        for (name, ..) in &other.limits {
+        for limit in &other.limits {
             cautions.push(Caution::new(
                 "limit-differs",
-                format!("The limit \"{name}\" was another in the review {}: probabilities against it cannot be compared.", other.id),
+                format!("The limit \"{}\" was another in the review {}: probabilities against it cannot be compared.", limit.name, other.id),
             ));
         }
         let differently: Vec<&str> = findings

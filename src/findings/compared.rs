@@ -28,8 +28,8 @@ pub struct Compared {
     pub relation: Relation,
     /// Per series of this review.
     pub series: Vec<SeriesThen>,
-    /// Limits that were others then, with that value or those bounds: name, then, now.
-    pub limits: Vec<(String, Vec<f64>, Vec<f64>)>,
+    /// Limits that were others then.
+    pub limits: Vec<LimitThen>,
     /// Actions that were open there and are not named here.
     pub lost_actions: Vec<String>,
 }
@@ -40,6 +40,14 @@ pub enum Relation {
     Previous,
     /// The review that this one amends.
     Amended,
+}
+
+/// A limit that has moved: its value, or its two bounds, then and now.
+#[derive(Debug, Clone, PartialEq)]
+pub struct LimitThen {
+    pub name: String,
+    pub then: Vec<f64>,
+    pub now: Vec<f64>,
 }
 
 #[derive(Debug, Clone, PartialEq)]
@@ -238,7 +246,7 @@ impl Then<'_> {
         })
     }
 
-    fn limits(&self, plan: &Plan) -> Result<Vec<(String, Vec<f64>, Vec<f64>)>, String> {
+    fn limits(&self, plan: &Plan) -> Result<Vec<LimitThen>, String> {
         let Some(limits) = self.at.maybe("limits") else { return Ok(Vec::new()) };
         let mut differ = Vec::new();
         for limit in &plan.limits {
@@ -248,7 +256,7 @@ impl Then<'_> {
             let then = limits.each(&limit.name, At::as_number)?;
             let now = limit.bounds.ends();
             if then != now {
-                differ.push((limit.name.clone(), then, now));
+                differ.push(LimitThen { name: limit.name.clone(), then, now });
             }
         }
         Ok(differ)

@@ -80,9 +80,13 @@ fn beside(findings: &Findings, relation: Relation) -> Json {
     let Some(other) = findings.compared.iter().find(|other| other.relation == relation) else {
         return Object::new().done();
     };
-    let differing = other.limits.iter().map(|(name, then, now)| {
+    let differing = other.limits.iter().map(|limit| {
         let ends = |ends: &[f64]| Json::List(ends.iter().copied().map(Json::number).collect());
-        Object::new().text("name", name.as_str()).put("then", ends(then)).put("now", ends(now)).done()
+        Object::new()
+            .text("name", limit.name.as_str())
+            .put("then", ends(&limit.then))
+            .put("now", ends(&limit.now))
+            .done()
     });
     let lost = other.lost_actions.iter().map(Json::text);
     Object::new()

@@ -4,7 +4,7 @@ use super::answers::question_words;
 use super::numbers::{NOTHING, Numbers};
 use super::series::{numbers_of, title};
 use super::table::{Column, TableView, plain};
-use crate::findings::compared::{Changed, Compared, FIELDS, Foretold, Prediction, Relation};
+use crate::findings::compared::{Changed, Compared, FIELDS, Foretold, LimitThen, Prediction, Relation};
 use crate::findings::{Answer, Findings, SeriesFindings};
 use crate::questions::figures::{Figures, Item, Meaning};
 use crate::report::text;
@@ -52,7 +52,7 @@ pub fn view(findings: &Findings, relation: Relation) -> Option<ComparedView> {
         predictions,
         predictions_rest,
         not_done: not_done(other),
-        limits: other.limits.iter().map(|(name, then, now)| limit(name, then, now)).collect(),
+        limits: other.limits.iter().map(limit).collect(),
         lost_actions: other.lost_actions.clone(),
     })
 }
@@ -274,7 +274,7 @@ fn not_done(other: &Compared) -> Vec<String> {
     reasons.into_iter().map(|(reason, names)| format!("{}: {reason}.", names.join(", "))).collect()
 }
 
-fn limit(name: &str, then: &[f64], now: &[f64]) -> String {
+fn limit(limit: &LimitThen) -> String {
     let said = |ends: &[f64]| ends.iter().map(|end| text::record(*end)).collect::<Vec<_>>().join(" to ");
-    format!("The limit “{name}” was {} then and is {} now.", said(then), said(now))
+    format!("The limit “{}” was {} then and is {} now.", limit.name, said(&limit.then), said(&limit.now))
 }
