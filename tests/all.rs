@@ -7,5 +7,6 @@ mod cases;
 mod carried;
 mod checks_of_demos;
 mod tidiness;
+mod other_scales;
 mod reference;
 mod published;

@@ -25,6 +25,11 @@ pub const SOURCE: &str = "Sheppard 1898; levels common practice, no source";
 
 const STATISTIC: &str = "step / within sd";
 
+/// Where the step is stated and each reading counts as all that rounds to it, there is nothing to warn of.
+pub fn counted() -> Check {
+    Check::not_made(ID, STATISTIC, "the step is stated, and each reading counts as all that rounds to it")
+}
+
 /// Checks the step of readings as printed in the source against the within sd, in the unit of the
 /// readings. On the log scale give the sd of readings in their own unit (about level times log sd).
 pub fn check(texts: &[&str], within_sd: f64) -> Check {

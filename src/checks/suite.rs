@@ -10,7 +10,7 @@ use super::{
     predictive_extremes, predictive_skew, predictive_spread, prior_predictive, rounding, runs, season,
     serial_correlation, trend, unit_jump, von_neumann, within_sd, within_sd_worth,
 };
-use crate::data::evidence::Evidence;
+use crate::data::evidence::{Evidence, Seen};
 use crate::data::{Fate, Mark, PeriodData, ReadingRow};
 use crate::math::fm;
 use crate::posterior::{Posterior, When};
@@ -41,7 +41,8 @@ pub fn all(subject: &Subject<'_>) -> Vec<Check> {
     let dated = dated(&values);
     let mut checks: Vec<Check> = of_spread(subject).into_iter().collect();
     checks.extend(of_prior(subject, &plain));
-    if subject.period.facts.n > 0 && !has_marks(subject.period) {
+    // Readings known by their bounds have no plain values for these (methods §1).
+    if subject.period.facts.n > 0 && !has_marks(subject.period) && !are_ranges(subject.readings) {
         if !plain.is_empty() {
             checks.push(normality::check(&plain));
             checks.push(outliers::check(&plain).check);
@@ -61,6 +62,12 @@ pub fn all(subject: &Subject<'_>) -> Vec<Check> {
 
 fn has_marks(period: &PeriodData) -> bool {
     period.facts.marked_below + period.facts.marked_above > 0
+}
+
+/// Whether readings count as all that rounds to them.
+fn are_ranges(readings: &Evidence) -> bool {
+    let Evidence::Singles(singles) = readings else { return false };
+    singles.iter().any(|single| matches!(single.seen, Seen::Rounded { .. }))
 }
 
 fn used(period: &PeriodData) -> impl Iterator<Item = &ReadingRow> {
@@ -245,7 +252,10 @@ fn of_print(subject: &Subject<'_>) -> Vec<Check> {
     if subject.model.scale == Scale::Linear
         && let Some(sd) = reading_sd(subject)
     {
-        checks.push(rounding::check(&texts, sd));
+        checks.push(match are_ranges(subject.readings) {
+            true => rounding::counted(),
+            false => rounding::check(&texts, sd),
+        });
         checks.push(last_digits::check(&texts, sd));
     }
     let dates: Vec<String> =

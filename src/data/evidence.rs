@@ -40,6 +40,24 @@ pub enum Seen {
 }
 
 impl Evidence {
+    /// Single readings, in an order in which that of the rows does not show, not even in a last digit.
+    pub fn of_singles(mut singles: Vec<Single>) -> Evidence {
+        if singles.is_empty() {
+            return Evidence::Nothing;
+        }
+        let rank = |seen: &Seen| match seen {
+            Seen::At(at) => (0, *at),
+            Seen::Rounded { at, .. } => (1, *at),
+            Seen::Below(at) => (2, *at),
+            Seen::Above(at) => (3, *at),
+        };
+        singles.sort_by(|a, b| {
+            let ((rank_a, at_a), (rank_b, at_b)) = (rank(&a.seen), rank(&b.seen));
+            rank_a.cmp(&rank_b).then(at_a.total_cmp(&at_b)).then(a.uncertainty.total_cmp(&b.uncertainty))
+        });
+        Evidence::Singles(singles)
+    }
+
     /// The number of readings, where they were counted.
     pub fn n(&self) -> Option<u64> {
         match self {

@@ -83,13 +83,7 @@ fn evidence(view: &View<'_>, scale: Scale) -> Evidence {
         let mut singles: Vec<Single> =
             values.iter().map(|value| single(&datum(&plain(value), scale))).collect();
         singles.extend(view.data.iter().map(single));
-        // The order of the rows must not show, not even in a last digit.
-        singles.sort_by(|a, b| {
-            let (rank_a, at_a) = rank(&a.seen);
-            let (rank_b, at_b) = rank(&b.seen);
-            rank_a.cmp(&rank_b).then(at_a.total_cmp(&at_b)).then(a.uncertainty.total_cmp(&b.uncertainty))
-        });
-        return Evidence::Singles(singles);
+        return Evidence::of_singles(singles);
     }
     let mut moments = match scale {
         Scale::Linear => view.sums.unit.clone(),
@@ -116,15 +110,6 @@ fn single(datum: &Datum) -> Single {
         Mark::Above => Seen::Above(datum.model),
     };
     Single { seen, uncertainty: datum.uncertainty }
-}
-
-fn rank(seen: &Seen) -> (u8, f64) {
-    match seen {
-        Seen::At(at) => (0, *at),
-        Seen::Rounded { at, .. } => (1, *at),
-        Seen::Below(at) => (2, *at),
-        Seen::Above(at) => (3, *at),
-    }
 }
 
 /// One period of one series as later stages see it.

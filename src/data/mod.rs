@@ -17,6 +17,7 @@ mod order;
 mod overrides;
 mod read;
 mod record;
+mod rounded;
 mod rows_csv;
 mod screen;
 mod summaries;
@@ -24,6 +25,7 @@ mod summaries;
 pub use linked::read_linked;
 pub use overrides::read_overrides;
 pub use read::read;
+pub use rounded::widen_rounded;
 pub use rows_csv::rows_csv;
 
 use crate::diagnostics::Caution;

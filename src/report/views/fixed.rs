@@ -49,6 +49,11 @@ pub const CODES: &[(&str, &str)] = &[
     ("prior-otherwise", "The history is too short, and another prior took its place."),
     ("prior-outweighs-readings", "The prior carries more weight than the readings of the period."),
     ("quantiles-misfit", "The stated quantiles do not fit the shape of the prior exactly."),
+    (
+        "rounded-widely",
+        "Readings are rounded to a step above half the within sd; each counts as all that rounds to it.",
+    ),
+    ("rounding-not-counted", "A wide rounding step could not be counted where single readings are not held."),
     ("rule-after-readings", "The rule was agreed after the first reading was taken."),
     ("rule-without-date", "The rule states no date on which it was agreed."),
     ("uncertainty-on-log-scale", "Standard uncertainties were taken over to the scale of the logarithms."),

@@ -1,43 +1,27 @@
 //! The whole way in one function: [`run`]. Spec and data go in, findings come out; nothing is written.
 
+mod exact;
+mod prepare;
+
+pub use prepare::{Prepared, prepare, prepare_by};
+
 use crate::checks::{Check, Concern, suite};
 use crate::data::evidence::Evidence;
 use crate::data::{self, Data, PeriodData, SeriesData};
 use crate::diagnostics::{Caution, Fault, Faults, Outcome};
 use crate::findings::{self, AcrossFindings, Answer, Findings, Influence, SeriesFindings, UnderAlternative};
-use crate::plan::{self, Plan, QuestionPlan, ReadBytes};
+use crate::plan::{Plan, QuestionPlan};
 use crate::posterior::{self, Basis, Posterior};
 use crate::prior::ground::Ground;
 use crate::prior::spread::spread_of_means;
-use crate::prior::within::{self, WithinRead};
-use crate::prior::{self, Built, LevelPrior, Model, Refusal, Source};
-use crate::quantity::{Absent, Scale, natural_order};
-use crate::questions::figures::{Figures, Item};
-use crate::questions::{self, Question, Subject, acceptance, rule};
-use crate::sensitivity::{self, Base, OwnAlternative};
-use crate::source;
-use crate::spec::reader::not_served;
-use std::collections::{BTreeMap, BTreeSet};
+use crate::prior::within::WithinRead;
+use crate::prior::{Built, LevelPrior, Model, Refusal, Source};
+use crate::quantity::Absent;
+use crate::questions::figures::Figures;
+use crate::questions::{Question, Subject, acceptance, rule};
+use crate::sensitivity::{self, Base};
+use exact::keep_exact;
 use std::path::Path;
-
-/// A spec read to its end: the plan, and every table that a later stage owns.
-#[derive(Debug)]
-pub struct Prepared {
-    pub plan: Plan,
-    /// With its index in the plan's questions.
-    pub questions: Vec<(usize, Box<dyn Question>)>,
-    general: Settings,
-    /// For series whose spec replaces the prior or the within sd.
-    own: BTreeMap<String, Settings>,
-    otherwise: Option<Box<dyn Source>>,
-    alternatives: Vec<OwnAlternative>,
-}
-
-#[derive(Debug)]
-struct Settings {
-    source: Box<dyn Source>,
-    within: WithinRead,
-}
 
 /// The whole way, up to the findings.
 ///
@@ -47,127 +31,6 @@ pub fn run(spec: &Path, shown: &str, jobs: usize) -> Outcome<Findings> {
     let prepared = prepare(spec, shown)?;
     let data = data::read(&prepared.plan)?;
     review(prepared, data, jobs)
-}
-
-/// Spec and plan, with every table read; computes nothing.
-pub fn prepare(spec: &Path, shown: &str) -> Outcome<Prepared> {
-    prepare_by(spec, shown, &|path| source::whole(path, &path.to_string_lossy(), "the spec"), &|_| ())
-}
-
-/// [`prepare`], where `read` gives the bytes of the spec and of its base, and `lead` leads the files that the
-/// plan names to their places: an audit takes all of them from the review's folder.
-pub fn prepare_by(
-    spec: &Path,
-    shown: &str,
-    read: &ReadBytes<'_>,
-    lead: &dyn Fn(&mut Plan),
-) -> Outcome<Prepared> {
-    let mut plan = plan::load(spec, shown, read)?;
-    lead(&mut plan);
-    // The overrides belong to the series' settings, so they are read before these.
-    data::read_overrides(&mut plan)?;
-    data::read_linked(&mut plan)?;
-    let mut faults = Faults::default();
-    let questions = questions::read_all(&plan, &mut faults);
-    let scale = plan.quantity.scale;
-    let read_settings =
-        |prior: &crate::spec::table::Table, spread: &crate::spec::table::Table, faults: &mut Faults| {
-            let source = prior::read(prior, scale, &plan, faults);
-            let within = within::read(spread, scale, &plan, faults);
-            Some(Settings { source: source?, within: within? })
-        };
-    let general = read_settings(&plan.prior, &plan.within, &mut faults);
-    let mut own = BTreeMap::new();
-    for (name, overrides) in &plan.series {
-        if overrides.prior.is_some() || overrides.within.is_some() {
-            let settings = read_settings(&plan.prior_table(name), &plan.within_table(name), &mut faults);
-            own.extend(settings.map(|settings| (name.clone(), settings)));
-        }
-    }
-    let otherwise = plan.otherwise.as_ref().and_then(|table| prior::read(table, scale, &plan, &mut faults));
-    let alternatives = plan
-        .alternatives
-        .iter()
-        .map(|alternative| OwnAlternative {
-            id: alternative.id.clone(),
-            source: alternative
-                .prior
-                .as_ref()
-                .and_then(|table| prior::read(table, scale, &plan, &mut faults)),
-            within: alternative
-                .within
-                .as_ref()
-                .and_then(|table| within::read(table, scale, &plan, &mut faults)),
-        })
-        .collect();
-    refuse_what_is_not_served(&plan, general.iter().chain(own.values()), &mut faults);
-    match general {
-        Some(general) if faults.is_empty() => {
-            Ok(Prepared { plan, questions, general, own, otherwise, alternatives })
-        }
-        _ => Err(faults),
-    }
-}
-
-/// What the language has and this version would leave out of the computation: refused, never ignored.
-fn refuse_what_is_not_served<'a>(
-    plan: &Plan,
-    settings: impl Iterator<Item = &'a Settings>,
-    faults: &mut Faults,
-) {
-    for alternative in &plan.alternatives {
-        if alternative.scale.is_some_and(|scale| scale != plan.quantity.scale) {
-            faults.push(not_served(
-                &format!("another scale in the alternative \"{}\"", alternative.id),
-                &alternative.span,
-            ));
-        }
-    }
-    let Some(step) = plan.quantity.step else { return };
-    // Rounding to a step of at most half the within sd changes nothing that is printed.
-    let coarse = |settings: &Settings| match (settings.within.stated_sd(), plan.quantity.scale) {
-        (Ok(sd), Scale::Linear) => step.get() > 0.5 * sd,
-        _ => true,
-    };
-    if settings.filter(|settings| coarse(settings)).count() > 0 {
-        faults.push(
-            Fault::wrong(
-                "not-served-yet",
-                format!(
-                    "readings rounded to a step ({}) above half the within sd, or beside one that is not stated, are not served yet by this version",
-                    step.get()
-                ),
-            )
-            .expected("a step of at most half a stated within sd")
-            .repair("leave `step` out of [quantity] if the readings shall count as printed"),
-        );
-    }
-}
-
-impl Prepared {
-    fn settings(&self, series: &str) -> &Settings {
-        self.own.get(series).unwrap_or(&self.general)
-    }
-
-    /// The names of the reviewed series, and of the others with their last period.
-    pub fn reviewed(&self, data: &Data) -> (Vec<String>, Vec<(String, String)>) {
-        let period = &self.plan.review.period;
-        let named: BTreeSet<&str> = self.plan.series.keys().map(String::as_str).collect();
-        let mut reviewed: Vec<String> = named.iter().map(|name| name.to_string()).collect();
-        let mut others = Vec::new();
-        for series in &data.series {
-            if named.contains(series.name.as_str()) {
-                continue;
-            }
-            if series.period(period).is_some() {
-                reviewed.push(series.name.clone());
-            } else if let Some(last) = series.periods.last() {
-                others.push((series.name.clone(), last.period.to_string()));
-            }
-        }
-        reviewed.sort_by(|a, b| natural_order(a, b));
-        (reviewed, others)
-    }
 }
 
 /// Everything of one series that stays alive while answers are computed.
@@ -188,13 +51,16 @@ struct Worked<'a> {
 }
 
 /// Priors, posteriors, answers, checks and sensitivity for every reviewed series.
-pub fn review(prepared: Prepared, data: Data, jobs: usize) -> Outcome<Findings> {
+pub fn review(prepared: Prepared, mut data: Data, jobs: usize) -> Outcome<Findings> {
+    widen_rounded(&prepared, &mut data);
+    let others: Vec<OtherScale<'_>> =
+        prepared.on_another_scale.iter().map(|(id, prepared)| OtherScale::new(id, prepared)).collect();
     let (names, not_reviewed) = prepared.reviewed(&data);
     if names.is_empty() {
         return Err(nothing_to_review(&prepared.plan, &data).into());
     }
     let worked = in_parallel(&names, jobs, |name| work(&prepared, &data, name))?;
-    let series = in_parallel(&worked, jobs, |worked| findings_of(&prepared, &data, worked))?;
+    let series = in_parallel(&worked, jobs, |worked| findings_of(&prepared, &data, &others, worked))?;
     let across = across(&prepared, &worked);
     let mut cautions: Vec<Caution> = data.cautions.clone();
     let mut quadrature_error = 0.0f64;
@@ -230,6 +96,75 @@ pub fn review(prepared: Prepared, data: Data, jobs: usize) -> Outcome<Findings> 
     let following = crate::findings::cautions::of(&findings);
     findings.cautions.extend(following);
     faults.or(findings)
+}
+
+/// Where readings are rounded to a wide step, each counts as all that rounds to it.
+fn widen_rounded(prepared: &Prepared, data: &mut Data) {
+    let quantity = &prepared.plan.quantity;
+    if let Some(step) = quantity.step {
+        let stated = |series: &str| prepared.settings(series).within.stated_sd().ok();
+        data::widen_rounded(data, step.get(), quantity.scale, &stated);
+    }
+}
+
+/// An alternative on another scale: the spec read for it, and the data read on it.
+struct OtherScale<'a> {
+    id: &'a str,
+    prepared: &'a Prepared,
+    /// Or why the data cannot stand on it, such as a reading of 0 on the log scale.
+    data: Result<Data, String>,
+}
+
+impl<'a> OtherScale<'a> {
+    fn new(id: &'a str, prepared: &'a Prepared) -> OtherScale<'a> {
+        let data = data::read(&prepared.plan).map_err(|faults| why(&faults)).map(|mut data| {
+            widen_rounded(prepared, &mut data);
+            data
+        });
+        OtherScale { id, prepared, data }
+    }
+
+    /// All answers of one series on this scale.
+    fn answers(&self, worked: &Worked<'_>, flagged: &[&str]) -> UnderAlternative {
+        let plan = &self.prepared.plan;
+        let there = self
+            .data
+            .as_ref()
+            .map_err(String::clone)
+            .and_then(|data| work(self.prepared, data, worked.name).map_err(|faults| why(&faults)));
+        let there = match there {
+            Ok(there) => there,
+            Err(why) => {
+                return UnderAlternative {
+                    alternative: self.id.to_string(),
+                    answers: Vec::new(),
+                    why: Some(why),
+                };
+            }
+        };
+        let subject = there.subject(plan, Basis::Both);
+        let why = there.posterior.as_ref().err().map(|absent| absent.reason.clone());
+        let answers = self
+            .prepared
+            .questions
+            .iter()
+            .map(|(index, question)| (&plan.questions[*index], question))
+            .filter(|(asked, question)| asked_of(asked, worked.name) && question.in_sensitivity())
+            .map(|(asked, question)| {
+                let figures = question.answer(&subject);
+                let verdict = there.verdict(plan, asked, &figures, flagged);
+                (asked.id.clone(), figures, verdict)
+            });
+        UnderAlternative {
+            alternative: self.id.to_string(),
+            answers: if why.is_none() { answers.collect() } else { Vec::new() },
+            why,
+        }
+    }
+}
+
+fn why(faults: &Faults) -> String {
+    faults.0.first().map_or_else(String::new, |fault| fault.message.clone())
 }
 
 /// The keys of priors and within sds with their defaults, by the path of their table.
@@ -401,7 +336,12 @@ fn asked_of(question: &QuestionPlan, series: &str) -> bool {
 }
 
 /// Answers, checks and sensitivity of one series.
-fn findings_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Outcome<SeriesFindings> {
+fn findings_of(
+    prepared: &Prepared,
+    data: &Data,
+    others: &[OtherScale<'_>],
+    worked: &Worked<'_>,
+) -> Outcome<SeriesFindings> {
     let plan = &prepared.plan;
     let checks = checks_of(prepared, data, worked);
     let flagged = flagged(&checks);
@@ -441,7 +381,8 @@ fn findings_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Outcome
             figures,
         });
     }
-    let sensitivity = sensitivity_of(prepared, data, worked, &asked, &flagged);
+    let mut sensitivity = sensitivity_of(prepared, data, worked, &asked, &flagged);
+    sensitivity.extend(others.iter().map(|other| other.answers(worked, &flagged)));
     let posterior = worked.posterior.as_ref().map_err(Absent::clone);
     Ok(SeriesFindings {
         name: worked.name.to_string(),
@@ -549,50 +490,5 @@ fn checks_of(prepared: &Prepared, data: &Data, worked: &Worked<'_>) -> Vec<Check
         planned: findings::cautions::planned(plan, worked.name),
         prior_only: worked.prior.as_ref(),
         posterior: worked.posterior.as_ref(),
-    })
-}
-
-/// A figure of the review's own answers that could not be computed to the promised accuracy is an error, never
-/// a doubtful digit; under an alternative it is left out with its reason.
-fn keep_exact(series: Vec<SeriesFindings>) -> (Vec<SeriesFindings>, Faults) {
-    let mut faults = Faults::default();
-    let mut note = |series: &str, what: &str, reason: &str| {
-        faults.push(
-            Fault::wrong(
-                "not-exact",
-                format!("{series}: {what} could not be computed to the promised accuracy: {reason}"),
-            )
-            .expected("data and priors of ordinary size")
-            .repair("look at the within sd, the units and the values of this series"),
-        );
-    };
-    for found in &series {
-        for (what, posterior) in [
-            ("the prior", &found.prior),
-            ("the readings alone", &found.readings_only),
-            ("the posterior", &found.posterior),
-        ] {
-            if let Err(absent) = posterior
-                && absent.failed
-            {
-                note(&found.name, what, &absent.reason);
-            }
-        }
-        for answer in &found.answers {
-            for figures in [&answer.figures, &answer.prior_only, &answer.readings_only, &answer.rule_figures]
-            {
-                for reason in failures(figures) {
-                    note(&found.name, &format!("the answer \"{}\"", answer.id), reason);
-                }
-            }
-        }
-    }
-    (series, faults)
-}
-
-fn failures(figures: &Figures) -> impl Iterator<Item = &str> {
-    figures.0.iter().filter_map(|(_, item)| match item {
-        Item::Number(Err(absent), _) if absent.failed => Some(absent.reason.as_str()),
-        _ => None,
     })
 }
