@@ -22,6 +22,9 @@ pub const ID: &str = "many series";
 /// Where the method was published.
 pub const SOURCE: &str = "Benjamini & Hochberg 1995";
 
+/// The share of wrong ones among those that stand out is at most this.
+pub const STANDS_OUT: f64 = 0.05;
+
 const STATISTIC: &str = "flags";
 
 /// Adjusted p-values, in the order of the input: the least q at which each stands out.
@@ -65,7 +68,7 @@ pub fn check(kind: &str, p_values: &[f64]) -> Check {
     let flags = p_values.iter().filter(|&&p| p < FLAG_BELOW).count();
     let findings = p_values.iter().filter(|&&p| p < REMARK_BELOW).count();
     let adjusted = adjusted(p_values);
-    let standing = adjusted.iter().filter(|&&p| p <= REMARK_BELOW).count();
+    let standing = adjusted.iter().filter(|&&p| p <= STANDS_OUT).count();
     let strong = adjusted.iter().filter(|&&p| p <= FLAG_BELOW).count();
     let expected_flags = expected_by_chance(m, FLAG_BELOW);
     let expected_findings = expected_by_chance(m, REMARK_BELOW);

@@ -2,6 +2,7 @@
 
 pub mod cautions;
 pub mod compared;
+pub mod many;
 
 use crate::checks::Check;
 use crate::data::Data;
@@ -25,6 +26,8 @@ pub struct Findings {
     pub not_reviewed: Vec<(String, String)>,
     pub across: Vec<AcrossFindings>,
     pub cautions: Vec<Caution>,
+    /// Each kind of check over all series.
+    pub checks_over_series: Vec<many::OverSeries>,
     /// The reviews that the spec names, held against this one.
     pub compared: Vec<compared::Compared>,
     /// Keys of `prior` and `within` with their defaults, by the table's path, as TOML values.

@@ -183,6 +183,7 @@ fn findings(names: &[&str]) -> Findings {
     };
     Findings {
         compared: Vec::new(),
+        checks_over_series: Vec::new(),
         settings: Vec::new(),
         plan: plan(),
         data: Data {

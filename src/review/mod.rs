@@ -79,7 +79,8 @@ pub fn review(prepared: Prepared, mut data: Data, jobs: usize) -> Outcome<Findin
         let of_question = |caution: Caution| caution.of_question(&asked.id);
         cautions.extend(question.cautions(&prepared.plan).into_iter().map(of_question));
     }
-    let (series, faults) = keep_exact(series);
+    let (mut series, faults) = keep_exact(series);
+    let checks_over_series = findings::many::over_series(&mut series);
     let settings = settings_of(&prepared);
     let mut findings = Findings {
         plan: prepared.plan,
@@ -89,6 +90,7 @@ pub fn review(prepared: Prepared, mut data: Data, jobs: usize) -> Outcome<Findin
         across,
         cautions,
         compared: Vec::new(),
+        checks_over_series,
         settings,
         quadrature_error,
     };

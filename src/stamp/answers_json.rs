@@ -2,6 +2,7 @@
 
 use crate::data::Data;
 use crate::findings::compared::{Changed, Foretold, Prediction, Relation, SeriesThen};
+use crate::findings::many::{self, OverSeries, WrongVerdicts};
 use crate::findings::{AcrossFindings, Answer, Findings, SeriesFindings, UnderAlternative};
 use crate::json::{Json, Object, of_toml, reason_against};
 use crate::plan::{Action, Limit, Plan};
@@ -32,6 +33,11 @@ pub fn answers_json(findings: &Findings) -> Json {
         .put("series", Json::List(series))
         .put("limits", limits(plan))
         .put("actions", Json::List(plan.actions.iter().map(action).collect()))
+        .put("checks_over_series", Json::List(findings.checks_over_series.iter().map(over_series).collect()))
+        .put(
+            "verdicts_expected_wrong",
+            Json::List(many::wrong_verdicts(findings).iter().map(wrong).collect()),
+        )
         .put("across", Json::List(findings.across.iter().map(across).collect()))
         .put("cautions", Json::List(cautions.collect()))
         .put("previous", beside(findings, Relation::Previous))
@@ -294,6 +300,26 @@ fn check(check: &crate::checks::Check) -> Json {
     }
     let extra = check.extra.iter().fold(Object::new(), |object, (name, value)| object.number(name, *value));
     object.put("figures", extra.done()).done()
+}
+
+fn over_series(over: &OverSeries) -> Json {
+    let figures =
+        over.check.extra.iter().fold(Object::new(), |object, (name, value)| object.number(name, *value));
+    let stand_out = over.stand_out.iter().map(Json::text);
+    Object::new()
+        .text("check", over.kind)
+        .put("flags", over.check.statistic.map_or(Json::Null, Json::number))
+        .put("figures", figures.done())
+        .put("stand_out", Json::List(stand_out.collect()))
+        .done()
+}
+
+fn wrong(wrong: &WrongVerdicts) -> Json {
+    Object::new()
+        .text("id", wrong.question.as_str())
+        .whole("verdicts", wrong.given as u64)
+        .number("expected_wrong", wrong.expected_wrong)
+        .done()
 }
 
 fn under_alternative(under: &UnderAlternative) -> Json {

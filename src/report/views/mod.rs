@@ -15,8 +15,8 @@ pub mod table;
 
 use super::{StampText, escape, text};
 use crate::checks::FLAG_BELOW;
-use crate::findings::Findings;
 use crate::findings::compared::Relation;
+use crate::findings::{Findings, many};
 use crate::plan::{AppliesTo, Detail, Status};
 use crate::quantity::Scale;
 use answers::AcrossView;
@@ -31,6 +31,8 @@ use table::{Column, TableView, code, plain};
 
 /// A longer spec is in spec.toml only.
 const SPEC_LINES_PRINTED: usize = 400;
+/// More names than this are counted.
+const NAMES_LISTED: usize = 8;
 /// From this many question-and-series pairs on, wrong flags by chance alone are to be expected.
 const MANY_EXAMINED: usize = 20;
 
@@ -74,6 +76,8 @@ pub struct ReportView {
     pub pages_left_out: Option<String>,
     pub across: Vec<AcrossView>,
     pub many_examined: Option<String>,
+    pub wrong_verdicts: Vec<String>,
+    pub checks_over_series: Option<TableView>,
     pub cautions: Option<TableView>,
     pub cautions_rest: Option<String>,
     pub opinion: Option<OpinionView>,
@@ -167,6 +171,8 @@ pub fn build(findings: &Findings, stamp: &StampText) -> (ReportView, Drawings) {
         },
         across: findings.across.iter().map(|across| answers::across(across, plan)).collect(),
         many_examined: many_examined(findings),
+        wrong_verdicts: wrong_verdicts(findings),
+        checks_over_series: checks_over_series(findings),
         cautions: head::cautions_of(findings, None),
         cautions_rest: head::cautions_rest(findings),
         opinion: review
@@ -226,6 +232,61 @@ fn many_examined(findings: &Findings) -> Option<String> {
             text::significant(checks as f64 * FLAG_BELOW, 2)
         )
     })
+}
+
+/// One line a question whose verdicts a chance decides, over several series.
+fn wrong_verdicts(findings: &Findings) -> Vec<String> {
+    if findings.series.len() < 2 {
+        return Vec::new();
+    }
+    many::wrong_verdicts(findings)
+        .into_iter()
+        .map(|wrong| {
+            format!(
+                "{}: of {} {}, {} expected to be wrong by the probabilities printed.",
+                wrong.question,
+                text::count(wrong.given as u64),
+                if wrong.given == 1 { "verdict" } else { "verdicts" },
+                text::significant(wrong.expected_wrong, 2)
+            )
+        })
+        .collect()
+}
+
+fn checks_over_series(findings: &Findings) -> Option<TableView> {
+    let mut table = TableView::new(
+        "Each kind of check over all series",
+        &[
+            ("check", Column::Head),
+            ("series", Column::Number),
+            ("flags", Column::Number),
+            ("expected by chance", Column::Number),
+            ("p below 0.05", Column::Number),
+            ("expected by chance", Column::Number),
+            ("stand out at q = 0.05", Column::Text),
+        ],
+    );
+    for over in &findings.checks_over_series {
+        let figure = |wanted: &str| {
+            over.check.extra.iter().find(|(name, _)| *name == wanted).map_or(f64::NAN, |(_, value)| *value)
+        };
+        let number = |value: f64| plain(text::significant(value, 3));
+        let whole = |value: f64| plain(text::count(value as u64));
+        table.row(vec![
+            plain(over.kind),
+            whole(figure("series")),
+            whole(over.check.statistic.unwrap_or(f64::NAN)),
+            number(figure("expected flags")),
+            whole(figure("findings below 0.05")),
+            number(figure("expected findings below 0.05")),
+            plain(match over.stand_out.as_slice() {
+                [] => "none".to_string(),
+                few if few.len() <= NAMES_LISTED => few.join(", "),
+                many => format!("{} series", text::count(many.len() as u64)),
+            }),
+        ]);
+    }
+    table.some()
 }
 
 fn inputs(stamp: &StampText) -> TableView {
