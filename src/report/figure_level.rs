@@ -40,6 +40,8 @@ pub struct LevelFigure {
     /// Shaded under the posterior and bracketed below it.
     pub interval: Option<Interval>,
     pub limits: Vec<Mark>,
+    /// Single values, each a short upright on the axis, and their name.
+    pub ticks: Option<(Vec<f64>, String)>,
 }
 
 /// Draws the figure of a level. Limits far outside the curves widen the axis only up to three times the range of
@@ -58,7 +60,8 @@ pub fn level(figure: &LevelFigure) -> Result<String, FigureError> {
     let reach = (high - low).abs();
     let near = |mark: &&Mark| mark.value >= low - reach && mark.value <= high + reach;
     let shown = figure.limits.iter().filter(near).map(|mark| mark.value);
-    let x = Axis::covering(all().map(|(x, _)| x).chain(shown), 0.03, 7, &figure.value_title)?;
+    let ticks = figure.ticks.iter().flat_map(|(values, _)| values.iter().copied());
+    let x = Axis::covering(all().map(|(x, _)| x).chain(shown).chain(ticks), 0.03, 7, &figure.value_title)?;
     let y = Axis::heights(all().map(|(_, y)| y), &figure.height_title)?;
     let rows = rows_above(&figure.limits, &x);
     let frame = Frame::new(x, y, HEIGHT, rows);
@@ -101,6 +104,9 @@ pub fn level(figure: &LevelFigure) -> Result<String, FigureError> {
     if let Some(interval) = &figure.interval {
         legend.insert(0, Entry { sample: Sample::Area(Ink::Shade), text: interval.label.clone() });
     }
+    if let Some((_, name)) = &figure.ticks {
+        legend.push(Entry { sample: Sample::Line(Ink::Text), text: name.clone() });
+    }
 
     frame.draw(&figure.about, &labels.placed, &legend, |painter| {
         if let Some(interval) = &figure.interval {
@@ -121,6 +127,9 @@ pub fn level(figure: &LevelFigure) -> Result<String, FigureError> {
         }
         for (curve, ink) in &curves {
             painter.line(&curve.points, *ink)?;
+        }
+        for value in figure.ticks.iter().flat_map(|(values, _)| values) {
+            painter.line(&[(*value, 0.0), (*value, 0.045 * frame.y.high)], Ink::Text)?;
         }
         Ok(())
     })

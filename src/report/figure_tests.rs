@@ -31,6 +31,7 @@ fn bell(centre: f64, width: f64, label: &str) -> Curve {
 
 pub(super) fn level_example() -> LevelFigure {
     LevelFigure {
+        ticks: None,
         about: about("level-SF-01", "Level of nitrate at SF-01"),
         value_title: "nitrate, mg/L".into(),
         height_title: "probability density".into(),

@@ -163,6 +163,7 @@ pub fn level(
     let without = series.without_readings;
     let name = format!("{slug}-level");
     let figure = LevelFigure {
+        ticks: None,
         about: About {
             name: name.clone(),
             title: title.clone(),
@@ -216,6 +217,58 @@ fn points(law: &Law, window: (f64, f64), scale: Scale) -> Vec<(f64, f64)> {
         })
         .filter(|(x, height)| x.is_finite() && height.is_finite())
         .collect()
+}
+
+/// A reading as foretold before and after the readings came, and the readings.
+pub fn foretold(
+    drawings: &mut Drawings,
+    series: &SeriesFindings,
+    period: &PeriodData,
+    numbers: &Numbers<'_>,
+    slug: &str,
+) -> Option<FigureView> {
+    let plan = numbers.plan;
+    let law =
+        |posterior: &Result<Posterior, Absent>| posterior.as_ref().ok()?.reading(When::This, 1, None).ok();
+    let (prior, both) = (law(&series.prior), law(&series.posterior)?);
+    let averaged = period.readings.iter().any(|row| row.replicate.is_some());
+    let used = period.readings.iter().filter(|row| row.fate == Fate::Used && row.mark == Marked::None);
+    let values: Vec<f64> = used.filter_map(|row| row.value).collect();
+    if values.is_empty() || averaged || values.len() > DOTS_AT_MOST {
+        return None;
+    }
+    let core = reach(&both, 0.0005)?;
+    let room = PRIOR_REACHES * (core.1 - core.0);
+    let window = match prior.as_ref().and_then(|law| reach(law, 0.005)) {
+        Some(wide) => (core.0.min(wide.0.max(core.0 - room)), core.1.max(wide.1.min(core.1 + room))),
+        None => core,
+    };
+    let curve = |law: &Law, label: &str| Curve {
+        label: label.to_string(),
+        points: points(law, window, numbers.scale),
+    };
+    let title = format!("Readings of {} of {}, {}", plan.quantity.name, plan.review.period, series.name);
+    let name = format!("{slug}-readings");
+    let figure = LevelFigure {
+        about: About {
+            name: name.clone(),
+            title: title.clone(),
+            description: "Probability densities of a single reading, and the readings.".to_string(),
+        },
+        value_title: value_title(plan),
+        height_title: "probability density".to_string(),
+        prior: prior.as_ref().map(|law| curve(law, "before the readings")),
+        readings: None,
+        posterior: curve(&both, "after the readings"),
+        interval: None,
+        limits: limits(plan, &series.name),
+        ticks: Some((values, format!("readings of {}", plan.review.period))),
+    };
+    let before = if prior.is_some() { "as expected before the readings (dashed) and " } else { "" };
+    let caption = format!(
+        "{title}: a single reading {before}as the fitted model makes it (solid); every reading is an upright on the axis. Readings far outside the dashed curve speak against the prior, a pattern unlike the solid one against the model."
+    );
+    drawings.add(&name, &title, &caption, figure_level::level(&figure))
 }
 
 /// The periods in time.

@@ -47,6 +47,7 @@ pub struct SeriesView {
     pub checks_words: String,
     /// Checks that could not be made, with the reason.
     pub checks_not_made: Vec<String>,
+    pub readings_figure: Option<FigureView>,
     pub quantiles_figure: Option<FigureView>,
     pub sensitivity: Option<SensitivityView>,
     pub sensitivity_figure: Option<FigureView>,
@@ -143,6 +144,8 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
             .iter()
             .filter_map(|check| Some(format!("{}: {}", check.id, check.why.as_ref()?)))
             .collect(),
+        readings_figure: period
+            .and_then(|period| drawings::foretold(drawings, series, period, &numbers, slug)),
         quantiles_figure: period
             .and_then(|period| drawings::quantiles(drawings, &series.name, period, &numbers, slug)),
         sensitivity: sensitivity::view(series, &numbers),
