@@ -6,6 +6,7 @@ mod command_line;
 mod cases;
 mod carried;
 mod checks_of_demos;
+mod coverage;
 mod tidiness;
 mod other_scales;
 mod reference;

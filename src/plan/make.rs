@@ -160,7 +160,7 @@ pub fn plan(root: &Table, mut ground: Ground, files: Vec<SpecFile>) -> Outcome<P
 
 /// The spec's faults before the base's, each from the top down. Of several at one place the first
 /// found is kept: the others follow from it.
-fn in_order_of_text(faults: &mut Faults, files: &[SpecFile]) {
+pub fn in_order_of_text(faults: &mut Faults, files: &[SpecFile]) {
     let rank = |fault: &Fault| {
         let place = fault.place.as_ref();
         let file = place.and_then(|place| files.iter().position(|file| file.name == place.file));

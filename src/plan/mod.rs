@@ -19,6 +19,7 @@ mod written;
 pub use about::BUILT_IN_TEMPLATES;
 pub use linked::{FoundFile, FoundReview, LinkedReview};
 pub use load::{ReadBytes, load};
+pub use make::in_order_of_text;
 pub use series::{OverrideCell, STANDING_ALTERNATIVES};
 pub use written::{Filled, plan_toml};
 

@@ -53,6 +53,7 @@ pub fn prepare_by(
     data::read_overrides(&mut plan)?;
     data::read_linked(&mut plan)?;
     let mut faults = Faults::default();
+    let spec_files = plan.spec_files.clone();
     let on_another_scale: Vec<(String, Option<Prepared>)> = plan
         .alternatives
         .iter()
@@ -68,7 +69,10 @@ pub fn prepare_by(
     });
     match prepared {
         Some(prepared) if faults.is_empty() => Ok(prepared),
-        _ => Err(faults),
+        _ => {
+            plan::in_order_of_text(&mut faults, &spec_files);
+            Err(faults)
+        }
     }
 }
 

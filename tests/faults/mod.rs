@@ -8,7 +8,7 @@ mod hostile;
 
 use reassay::diagnostics::render::{Look, render};
 use reassay::diagnostics::{Fault, Faults};
-use reassay::{data, plan, source};
+use reassay::{data, review, source};
 use std::collections::BTreeSet;
 use std::fs;
 use std::path::{Path, PathBuf};
@@ -33,9 +33,8 @@ fn faults_of(spec: &Path) -> Result<(), Faults> {
         let name = path.file_name().unwrap_or_default().to_string_lossy().into_owned();
         source::whole(path, &name, "reading the spec")
     };
-    let mut plan = plan::load(spec, "spec.toml", &read)?;
-    data::read_overrides(&mut plan)?;
-    data::read(&plan)?;
+    let prepared = review::prepare_by(spec, "spec.toml", &read, &|_| ())?;
+    data::read(&prepared.plan)?;
     Ok(())
 }
 
