@@ -265,8 +265,13 @@ pub fn foretold(
         ticks: Some((values, format!("readings of {}", plan.review.period))),
     };
     let before = if prior.is_some() { "as expected before the readings (dashed) and " } else { "" };
+    let against_prior = if prior.is_some() {
+        "Readings far outside the dashed curve speak against the prior; a"
+    } else {
+        "A"
+    };
     let caption = format!(
-        "{title}: a single reading {before}as the fitted model makes it (solid); every reading is an upright on the axis. Readings far outside the dashed curve speak against the prior, a pattern unlike the solid one against the model."
+        "{title}: a single reading {before}as the fitted model makes it (solid); every reading is an upright on the axis. {against_prior} pattern unlike the solid curve speaks against the model."
     );
     drawings.add(&name, &title, &caption, figure_level::level(&figure))
 }

@@ -2,6 +2,7 @@
 
 use super::numbers::{NOTHING, Numbers};
 use super::table::{Column, TableView, plain};
+use crate::data::evidence::{Evidence, Seen, Single};
 use crate::findings::SeriesFindings;
 use crate::posterior::{Law, Posterior, When};
 use crate::prior::{Between, LevelPrior, Model, Pattern, Periods, Within};
@@ -10,13 +11,20 @@ use crate::questions::terms;
 use crate::report::text;
 
 /// The equations of a model, one a line.
-pub fn equations(model: &Model) -> Vec<String> {
+pub fn equations(model: &Model, readings: &Evidence) -> Vec<String> {
+    let singles = match readings {
+        Evidence::Singles(singles) => singles.as_slice(),
+        _ => &[],
+    };
+    let any = |is: &dyn Fn(&Single) -> bool| singles.iter().any(is);
+    let own = any(&|single| single.uncertainty > 0.0);
     let x = match model.scale {
         Scale::Linear => "x_i",
         Scale::Log => "ln x_i",
     };
     let spread = match model.within {
         Within::None => "u_i²",
+        _ if own => "σ² + u_i²",
         _ => "σ²",
     };
     let mut lines = vec![format!("{x} | θ, σ ~ N(θ, {spread})    readings of the period under review")];
@@ -25,6 +33,29 @@ pub fn equations(model: &Model) -> Vec<String> {
             format!("{x} | θ, b, σ ~ N(θ + b, {spread})    readings of the period under review"),
             format!("b ~ N(0, {}²)    bias common to all readings", text::record(model.bias_sd)),
         ];
+    }
+    let sd = match spread {
+        "u_i²" => "u_i",
+        "σ²" => "σ",
+        _ => "√(σ² + u_i²)",
+    };
+    let (less, plus) = if model.bias_sd > 0.0 { ("θ − b", "θ + b") } else { ("θ", "θ") };
+    let c = if model.scale == Scale::Log { "ln c" } else { "c" };
+    if any(&|single| matches!(single.seen, Seen::Below(_))) {
+        lines.push(format!("a reading marked below c counts as P(x_i < c) = Φ(({c} − {less})/{sd})"));
+    }
+    if any(&|single| matches!(single.seen, Seen::Above(_))) {
+        lines.push(format!("a reading marked above c counts as P(x_i > c) = Φ(({plus} − {c})/{sd})"));
+    }
+    if any(&|single| matches!(single.seen, Seen::Rounded { .. })) {
+        let ends = if model.scale == Scale::Log { ["ln a", "ln b"] } else { ["a", "b"] };
+        let [a, b] = ends.map(|end| format!("Φ(({end} − {less})/{sd})"));
+        lines.push(format!(
+            "a rounded reading counts as P(a < x_i < b) = {b} − {a}, a and b half a step about it"
+        ));
+    }
+    if own && model.within != Within::None {
+        lines.push("u_i: each reading’s own standard uncertainty".to_string());
     }
     lines.extend(within(&model.within));
     lines.extend(level(&model.level, "θ"));

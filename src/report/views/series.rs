@@ -8,6 +8,7 @@ use super::sensitivity::{self, SensitivityView};
 use super::table::{Column, TableView, plain};
 use super::{data, model};
 use crate::checks::Concern;
+use crate::data::evidence::Evidence;
 use crate::findings::{Findings, SeriesFindings, cautions};
 use crate::posterior::When;
 use crate::quantity::Scale;
@@ -110,7 +111,8 @@ pub fn view(findings: &Findings, series: &SeriesFindings, slug: &str, drawings: 
         view.rule_figure = drawings::rule(drawings, series, answer, plan, &name);
     }
     let (results, results_missing) = model::results(series, &numbers);
-    let equations = model.map(model::equations).unwrap_or_default();
+    let evidence = series.posterior.as_ref().map_or(&Evidence::Nothing, |posterior| &posterior.readings);
+    let equations = model.map(|model| model::equations(model, evidence)).unwrap_or_default();
     let view = SeriesView {
         name: series.name.clone(),
         title: title(series),
