@@ -3,6 +3,7 @@
 //! common bias where a prior speaks of the true level. Else it cancels.
 
 use super::build::{build, build_in, units};
+use super::change::settled_about_zero;
 use super::grid::{self, Place, Weighted};
 use super::law::Law;
 use super::plane::{Level, Node, Plane, Sd};
@@ -11,7 +12,7 @@ use super::shapes::{OnPanels, panels_of};
 use super::solve::solve;
 use super::told::{SdSums, Told, is_marked, told};
 use super::units::Units;
-use super::weighing::{Weighed, weigh};
+use super::weighing::{FLOOR, Weighed, weigh};
 use super::{Basis, When, mixture};
 use crate::data::evidence::{Evidence, Seen, Single};
 use crate::math::fm;
@@ -193,18 +194,28 @@ fn peers_difference(a: &Member<'_>, b: &Member<'_>) -> Result<Law, Absent> {
     let plane = single_plane(built.parts.first().map(|p| &p.plane))?;
     let weighed = weigh(plane)?;
     let (other, _) = told(b.readings, &built.units, known(a.model, &built.units))?;
-    let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
-    let mut parts = Vec::with_capacity(weighed.nodes.len());
-    for node in &weighed.nodes {
-        let (left, right) = (pull(&plane.readings, node), pull(&other, node));
-        let slope = left.1 - right.1;
-        let mean = left.0 - right.0 + slope * node.long_mean;
-        let var = left.2 + right.2 + slope * slope * node.long_var;
-        let weight = fm::exp(node.ln_weight - top);
-        parts.push((weight, built.units.sd_out(mean), built.units.square_out(var)));
-    }
     let bound = built.parts.first().map_or(0.0, |p| p.bounds.level);
-    mixture(parts, bound, "the difference")
+    settled_about_zero(weighed.frame.dims == 0, &|factor, offset| {
+        let fresh;
+        let nodes = if factor == 1.0 {
+            &weighed.nodes
+        } else {
+            let f = |place: &Place| plane.node(place);
+            fresh = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, FLOOR)?;
+            &fresh
+        };
+        let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
+        let mut parts = Vec::with_capacity(nodes.len());
+        for node in nodes {
+            let (left, right) = (pull(&plane.readings, node), pull(&other, node));
+            let slope = left.1 - right.1;
+            let mean = left.0 - right.0 + slope * node.long_mean;
+            let var = left.2 + right.2 + slope * slope * node.long_var;
+            let weight = fm::exp(node.ln_weight - top);
+            parts.push((weight, built.units.sd_out(mean), built.units.square_out(var)));
+        }
+        mixture(parts, bound, "the difference")
+    })
 }
 
 pub(super) fn single_plane(plane: Option<&Plane>) -> Result<&Plane, Absent> {

@@ -64,6 +64,27 @@ const PANEL_CAP: usize = 2000;
 impl Panels {
     /// `density` on `edges` (increasing), each panel halved until its series has died out.
     pub fn new(density: &dyn Fn(f64) -> f64, edges: &[f64]) -> Result<Panels, Absent> {
+        // The tails keep their own relative accuracy as far as rounding allows.
+        Panels::until(density, edges, &|last, size, highest| {
+            last <= (1e-12 * size).max(RESOLVED * 1e-3 * highest)
+        })
+    }
+
+    /// The same for a density that is exact in its far tails, which moments and small chances need: they are
+    /// resolved to 1e−8 of themselves however low they are.
+    pub fn with_tails(density: &dyn Fn(f64) -> f64, edges: &[f64]) -> Result<Panels, Absent> {
+        Panels::until(density, edges, &|last, size, highest| {
+            last <= (1e-12 * size).max((RESOLVED * 1e-3 * highest).min(1e-8 * size))
+        })
+    }
+
+    /// `resolved` says of the last terms of a panel's series, its largest term and the largest of all whether
+    /// the series has died out.
+    fn until(
+        density: &dyn Fn(f64) -> f64,
+        edges: &[f64],
+        resolved: &dyn Fn(f64, f64, f64) -> bool,
+    ) -> Result<Panels, Absent> {
         let mut panels = Vec::new();
         let mut waiting: Vec<(f64, f64, u32)> =
             edges.windows(2).rev().map(|pair| (pair[0], pair[1], 0)).collect();
@@ -76,10 +97,9 @@ impl Panels {
             if made > PANEL_CAP {
                 return Err(Absent::failed("a density is not resolved by its panels"));
             }
-            // The tails keep their own relative accuracy as far as rounding allows.
             let size = panel.series.iter().fold(0.0_f64, |m, c| m.max(c.abs()));
             let last = panel.series[POINTS - 1].abs() + panel.series[POINTS - 2].abs();
-            if last <= (1e-12 * size).max(RESOLVED * 1e-3 * highest) || last <= 1e-40 * highest {
+            if resolved(last, size, highest) || last <= 1e-40 * highest {
                 panels.push(panel);
             } else if depth < 30 {
                 let middle = 0.5 * (lo + hi);

@@ -9,8 +9,9 @@ use super::weighing::Weighed;
 use crate::math::{fm, roots};
 use crate::quantity::Absent;
 
-/// How far below its top the marginal density is followed: 1e-19.
-const DEPTH: f64 = 44.0;
+/// How far below its top the marginal density is followed: 5e−32, for the second moment of a tail as heavy as a
+/// few periods leave it lies far out.
+const DEPTH: f64 = 72.0;
 
 /// A part with its nodes and its share of the whole.
 pub(super) struct Weighted<'a> {
@@ -122,7 +123,7 @@ pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate) -> Result<Panel
     let mut edges: Vec<f64> = edge(-1.5 * mode.left).into_iter().rev().collect();
     edges.push(mode.x);
     edges.extend(edge(1.5 * mode.right));
-    let made = Panels::new(&|x| fm::exp(ln_all(x)), &edges);
+    let made = Panels::with_tails(&|x| fm::exp(ln_all(x)), &edges);
     if let Some(e) = trouble.borrow_mut().take() {
         return Err(e);
     }

@@ -4,15 +4,19 @@
 use super::build::build;
 use super::grid::{self, Place};
 use super::joint::{Member, Parts, Sharing, known, pull, refuse_marked, shared, sharing, single_plane};
-use super::law::Law;
 use super::legendre::Panels;
-use super::shapes::panels_of;
+use super::shapes::{panels_of, panels_with_tails};
 use super::solve::solve;
 use super::told::told;
 use super::weighing::weigh;
 use super::{Basis, When, mixture};
 use crate::math::{fm, normal};
 use crate::quantity::Absent;
+
+/// How many sds out a level is followed: a chance of 1e−12 keeps its digits.
+const REACH: f64 = 12.0;
+/// ln of the share of the heaviest node below which a node cannot be seen in such a chance.
+const NODES: f64 = 50.0;
 
 /// The chance that a level is the highest (or lowest) of all, and its expected rank (1 is first).
 #[derive(Debug, Clone, Copy, PartialEq)]
@@ -46,7 +50,15 @@ pub fn ranking(
                         let mean = (posterior.origin() - origin) + piece.level_apart;
                         Level::Normal { mean, sd: piece.level_var.sqrt() }
                     }
-                    _ => Level::of_law(&posterior.level(When::This)?.moved(-origin))?,
+                    _ => {
+                        let law = posterior.level(When::This)?.moved(-origin);
+                        // Marked readings leave a density that is known down to its top's last digits only.
+                        Level::Panels(if posterior.is_marked() {
+                            panels_of(&law)?
+                        } else {
+                            panels_with_tails(&law)?
+                        })
+                    }
                 });
             }
             given(&levels, highest)?
@@ -55,7 +67,7 @@ pub fn ranking(
             let nodes = shared(members, basis, sd, bias)?;
             let top = nodes.iter().map(|g| g.ln_weight).fold(f64::NEG_INFINITY, f64::max);
             let mut sum = Sum::new(members.len());
-            for node in nodes.iter().filter(|g| g.ln_weight > top - 28.0) {
+            for node in nodes.iter().filter(|g| g.ln_weight > top - NODES) {
                 let mut levels = Vec::with_capacity(members.len());
                 for parts in &node.levels {
                     levels.push(Level::of_parts(parts)?);
@@ -111,12 +123,11 @@ fn of_peers(members: &[Member<'_>], highest: bool) -> Result<Vec<Rank>, Absent> 
         readings.push(told(member.readings, &built.units, known(first.model, &built.units))?.0);
     }
     let weighed = weigh(plane)?;
-    // Chances are wanted to 1e-9, not to 1e-21: nodes above 1e-12 do.
     let nodes = if weighed.frame.dims == 0 {
         weighed.nodes
     } else {
         let f = |place: &Place| plane.node(place);
-        grid::sweep(&f, &weighed.frame, weighed.factor, 0.0, 28.0)?
+        grid::sweep(&f, &weighed.frame, weighed.factor, 0.0, NODES)?
     };
     let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
     let mut sum = Sum::new(members.len());
@@ -142,7 +153,7 @@ fn of_peers(members: &[Member<'_>], highest: bool) -> Result<Vec<Rank>, Absent> 
             }
         }
         let mut whole = 0.0;
-        for k in -15..=15 {
+        for k in -21..=21 {
             let z = 0.5 * f64::from(k);
             let mu = node.long_mean + spread * z;
             let at_mu = fm::exp(-0.5 * z * z);
@@ -174,7 +185,6 @@ struct Work {
 impl Work {
     /// ∫ f_i Π_{j≠i} F_j for all i at once, by the trapezoid rule on one grid as fine as the narrowest level.
     fn chances(&mut self, levels: &[(f64, f64)], highest: bool) -> Result<(), Absent> {
-        const REACH: f64 = 8.0;
         const POINTS_CAP: f64 = 200_000.0;
         let narrowest = levels.iter().map(|l| l.1).fold(f64::INFINITY, f64::min);
         let lo = levels.iter().map(|l| l.0 - REACH * l.1).fold(f64::INFINITY, f64::min);
@@ -225,11 +235,7 @@ impl Level {
         if let [(_, mean, var)] = parts[..] {
             return Ok(Level::Normal { mean, sd: var.sqrt() });
         }
-        Level::of_law(&mixture(parts.clone(), 0.0, "a level")?)
-    }
-
-    fn of_law(law: &Law) -> Result<Level, Absent> {
-        Ok(Level::Panels(panels_of(law)?))
+        Ok(Level::Panels(panels_with_tails(&mixture(parts.clone(), 0.0, "a level")?)?))
     }
 
     fn cdf(&self, t: f64) -> f64 {
@@ -251,7 +257,7 @@ impl Level {
         match self {
             Level::Panels(panels) => panels.expect(g),
             Level::Normal { mean, sd } => {
-                let half = (8.0 / step) as i32;
+                let half = (REACH / step) as i32;
                 let mut total = 0.0;
                 for i in -half..=half {
                     let z = step * f64::from(i);

@@ -104,16 +104,26 @@ impl Continuous for OnPanels {
 
 /// The density of a law on panels, from its 1e-16 quantile to its upper one.
 pub(super) fn panels_of(law: &Law) -> Result<Panels, Absent> {
+    Panels::new(&|t| law.density(t), &edges_of(law, 16)?)
+}
+
+/// The same for a law that is exact in its far tails, from its 1e-24 quantile.
+pub(super) fn panels_with_tails(law: &Law) -> Result<Panels, Absent> {
+    Panels::with_tails(&|t| law.density(t), &edges_of(law, 24)?)
+}
+
+/// Quantiles by decades of both tails, down to 1e-`decades`.
+fn edges_of(law: &Law, decades: i32) -> Result<Vec<f64>, Absent> {
     let mut edges = Vec::new();
-    for k in (1..=16).rev() {
+    for k in (1..=decades).rev() {
         edges.push(law.quantile(fm::pow(10.0, -f64::from(k)))?);
     }
     for p in [0.25, 0.5, 0.75] {
         edges.push(law.quantile(p)?);
     }
-    for k in 1..=16 {
+    for k in 1..=decades {
         edges.push(law.upper_quantile(fm::pow(10.0, -f64::from(k)))?);
     }
     edges.dedup();
-    Panels::new(&|t| law.density(t), &edges)
+    Ok(edges)
 }

@@ -138,6 +138,9 @@ impl ReadingInterval {
     fn all(&self, posterior: &Posterior, law: &Law, own: f64) -> Result<(Figure, Figure), Absent> {
         let m = self.readings as f64;
         let allowed = 1.0 - self.probability;
+        // All is measured from the posterior's origin, where no digit of the ends is lost.
+        let origin = posterior.origin();
+        let law = law.clone().moved(-origin);
         let interval_at = |outside: f64| -> Result<(f64, f64), Absent> {
             let ends = match self.interval {
                 Interval::LowerBound => (law.quantile(outside)?, f64::INFINITY),
@@ -150,7 +153,6 @@ impl ReadingInterval {
         // The chance that at least one lies outside, less what is allowed, against ln of one reading's own.
         let excess = |ln_outside: f64| -> f64 {
             let missed = interval_at(fm::exp(ln_outside)).and_then(|(lower, upper)| {
-                let (lower, upper) = (lower - posterior.origin(), upper - posterior.origin());
                 posterior.expect(self.when, &|theta, sigma| {
                     let sd = (sigma * sigma + own * own).sqrt();
                     let (out, within) = outside_split(theta, sd, lower, upper);
@@ -180,7 +182,7 @@ impl ReadingInterval {
         };
         let (lower, upper) = interval_at(fm::exp(found))?;
         let end = |value: f64| {
-            if value.is_finite() { Ok(value) } else { terms::no_other_end(self.interval) }
+            if value.is_finite() { Ok(origin + value) } else { terms::no_other_end(self.interval) }
         };
         Ok((end(lower), end(upper)))
     }

@@ -5,7 +5,7 @@ pub mod sums;
 mod listing;
 
 // What a review leaves.
-mod laws;
+pub mod laws;
 pub mod answers_csv;
 pub mod answers_json;
 pub mod handover;
