@@ -4,9 +4,10 @@
 //! max(|end|, a quarter of the interval it belongs to, an sd where the law is normal and the interval holds 95 %).
 
 use reassay::findings::Findings;
-use reassay::quantity::Scale;
+use reassay::quantity::{Absent, Scale};
 use reassay::questions::figures::{Figures, Item};
 use reassay::spec::table::{Kind, Table};
+use reassay::stamp::laws::{self, LawFigures};
 use serde_json::Value;
 use std::collections::{BTreeMap, BTreeSet};
 use std::fs;
@@ -20,7 +21,7 @@ const OF_END: f64 = 1e-10;
 /// Specs that take more than a few seconds without optimisation: two or three unknown spreads under a dozen
 /// alternatives, or shares and percentiles over them. `cargo test --release reference_answers -- --include-ignored`
 /// runs them too.
-const LONG: [&str; 16] = [
+const LONG: [&str; 18] = [
     "09-history-uniform-known",
     "10-history-uniform-history",
     "11-history-half-normal",
@@ -36,7 +37,9 @@ const LONG: [&str; 16] = [
     "28-values-near-a-million",
     "38-peers-uniform-within-peers",
     "43-log-history",
+    "44-two-sigmas",
     "47-stated-df-history",
+    "53-narrow-far-known",
 ];
 
 fn folder() -> PathBuf {
@@ -60,8 +63,17 @@ fn number(figures: &Figures, name: &str) -> Result<f64, String> {
     }
 }
 
+/// The laws of every series' posterior, as answers.json has them; made once, for they take their time.
+type Laws = BTreeMap<String, Vec<(&'static str, Result<LawFigures, Absent>)>>;
+
 /// What the program gives for one figure; a question over several series has no series of its own.
-fn given(findings: &Findings, series: &str, question: &str, name: &str) -> Result<f64, String> {
+fn given(
+    findings: &Findings,
+    of_series: &mut Laws,
+    series: &str,
+    question: &str,
+    name: &str,
+) -> Result<f64, String> {
     if series.is_empty() {
         let across = findings.across.iter().find(|across| across.id == question).ok_or("not asked")?;
         let (member, name) = name.split_once(':').unwrap_or(("", name));
@@ -69,19 +81,44 @@ fn given(findings: &Findings, series: &str, question: &str, name: &str) -> Resul
         return number(&of.1, name);
     }
     let found = findings.series.iter().find(|found| found.name == series).ok_or("no such series")?;
+    if let Some(law) = question.strip_prefix("posterior.") {
+        let posterior = found.posterior.as_ref().map_err(|absent| absent.reason.clone())?;
+        let made = || laws::of_posterior(posterior);
+        return of_law(of_series.entry(series.to_string()).or_insert_with(made), law, name);
+    }
     if question == "prior_weight" {
         return found.influence.prior_weight.clone().map_err(|absent| absent.reason);
     }
-    let answer = found.answers.iter().find(|answer| answer.id == question).ok_or("not asked")?;
-    number(&answer.figures, name)
+    let (id, basis) = question.split_once('.').unwrap_or((question, ""));
+    let answer = found.answers.iter().find(|answer| answer.id == id).ok_or("not asked")?;
+    match basis {
+        "prior_only" => number(&answer.prior_only, name),
+        "readings_only" => number(&answer.readings_only, name),
+        _ => number(&answer.figures, name),
+    }
+}
+
+/// A law of the posterior as answers.json has it: mean, sd (of the logarithm on the log scale) and quantiles.
+fn of_law(laws: &[(&'static str, Result<LawFigures, Absent>)], law: &str, name: &str) -> Result<f64, String> {
+    let (_, figures) = laws.iter().find(|(own, _)| *own == law).ok_or("no such law")?;
+    let figures = figures.as_ref().map_err(|absent| absent.reason.clone())?;
+    let figure = match (name, &figures.logs) {
+        ("mean", _) => &figures.mean,
+        ("sd", _) => &figures.sd,
+        ("log_mean", Some((mean, _))) => mean,
+        ("log_sd", Some((_, sd))) => sd,
+        _ => &figures.quantiles.iter().find(|(tail, _)| *tail == name).ok_or("no such quantile")?.1,
+    };
+    figure.clone().map_err(|absent| absent.reason)
 }
 
 fn asked(findings: &Findings, question: &str) -> String {
+    let (id, basis) = question.split_once('.').unwrap_or((question, ""));
     let answers = findings.series.iter().flat_map(|series| &series.answers);
-    let own = answers.filter(|answer| answer.id == question).map(|answer| answer.ask.clone()).next();
-    let across =
-        || findings.across.iter().find(|across| across.id == question).map(|across| across.ask.clone());
-    own.or_else(across).unwrap_or_else(|| question.replace('_', " "))
+    let own = answers.filter(|answer| answer.id == id).map(|answer| answer.ask.clone()).next();
+    let across = || findings.across.iter().find(|across| across.id == id).map(|across| across.ask.clone());
+    let ask = own.or_else(across).unwrap_or_else(|| id.to_string());
+    format!("{ask} {basis}").trim_end().replace('_', " ")
 }
 
 /// The error in units of what is promised.
@@ -90,6 +127,7 @@ fn error_in_promises(kind: &str, got: f64, wanted: f64, spread: f64) -> f64 {
     let allowed = match kind {
         "chance" if wanted < SMALLEST_RELATIVE => ABSOLUTE_OF_CHANCE,
         "chance" | "count" => RELATIVE_OF_CHANCE * wanted,
+        "sd" => OF_END * wanted,
         _ => OF_END * wanted.abs().max(spread),
     };
     // A figure that is no number must fail.
@@ -166,20 +204,22 @@ fn compare(wanted: impl Fn(&str) -> bool, at_least: usize) {
         };
         println!("{spec}: {:.1} s", began.elapsed().as_secs_f64());
         let model = model_of(&findings);
+        let mut of_series = Laws::new();
         for (series, questions) in expected["series"].as_object().expect("series") {
             for (question, figures) in questions.as_object().expect("questions") {
                 let ask = asked(&findings, question);
                 let figures = figures.as_object().expect("figures");
-                let spread = match (figures.get("lower"), figures.get("upper")) {
-                    (Some(lower), Some(upper)) => (value(upper) - value(lower)) / 4.0,
-                    _ => 0.0,
+                let ends = figures.get("lower").zip(figures.get("upper"));
+                let spread = match ends.or(figures.get("0.025").zip(figures.get("0.975"))) {
+                    Some((lower, upper)) => (value(upper) - value(lower)) / 4.0,
+                    None => 0.0,
                 };
                 for (name, figure) in figures {
                     compared += 1;
                     let wanted = value(figure);
                     let kind = figure["kind"].as_str().expect("a kind");
                     let place = format!("{spec} {series} {question} ({ask}) {name}");
-                    match given(&findings, series, question, name) {
+                    match given(&findings, &mut of_series, series, question, name) {
                         Err(why) => wrong.push(format!("{place}: expected {wanted}, there is none: {why}")),
                         Ok(got) => {
                             let error = error_in_promises(kind, got, wanted, spread);

@@ -13,6 +13,15 @@ def power(s, df, ss):
     return -df * (s - at) - df * np.expm1(-2 * (s - at)) / 2, -df * at - df / LD(2)
 
 
+def joined(several):
+    """Laws of several chunks of nodes in one."""
+    def join(values):
+        if isinstance(values[0], tuple):
+            return tuple(join(v) for v in zip(*values))
+        return values[0] if values[0] is None or np.ndim(values[0]) == 0 else np.concatenate(values)
+    return {k: join([laws[k] for laws in several]) for k in several[0]}
+
+
 class Model:
     """ln weight and the normal law of each level at given sigma, tau; see `at`."""
 
@@ -24,6 +33,7 @@ class Model:
         self.present = own.get(now)
         self.shares = any(q['ask'] in ('share beyond', 'percentile', 'count beyond') or 'at_least' in q or q.get('of') == 'all'
                           for q in spec['question'])
+        self.changes = any(q['ask'] in ('change', 'difference') for q in spec['question'])
         earlier = sorted((p for p in own if int(p) < int(now)), key=int)
         self.shift = shift
         P = self.prior
@@ -102,6 +112,18 @@ class Model:
             zb, qb = mp.fsum(zs) / len(zs), mp.fsum(qs) / len(qs)
             s = mp.fsum((z - zb) * (q - qb) for z, q in zip(zs, qs)) / mp.fsum((z - zb) ** 2 for z in zs)
             self.m0, self.v0 = ld(qb - s * zb - shift), ld(s * s)
+        # Tails t^-a of ln sigma and ln tau: what is cut off must not be seen in moments either.
+        self.cut = CUT
+        n = self.present.n or (len(self.present.xs) if self.present.xs else 0) if self.present else 0
+        heavy = [self.df + (0 if self.kind == 'flat' else 1)] if self.sd is None and not self.own_uniform else []
+        if self.own_uniform:
+            heavy.append(n - (2 if self.kind == 'flat' else 1))
+        if self.has_tau and self.between != 'half-normal':
+            heavy.append(len(self.hist) + (1 if self.present else 0) - (2 if self.between == 'uniform' else 0))
+        for a in heavy:
+            for k in (1, 2):
+                if a > k:
+                    self.cut = max(self.cut, min(150, 36 / (1 - k / a)))
         self.axes = (['s'] if self.sd is None else []) + (['h'] if self.two_sigmas else []) + (['t'] if self.has_tau else [])
 
     # plug-ins, sigma known
@@ -342,7 +364,7 @@ class Model:
         bounds, steps = [], []
         for d in range(k):
             prof = v.max(axis=tuple(j for j in range(k) if j != d))
-            inside = np.where(prof > peak - CUT)[0]
+            inside = np.where(prof > peak - self.cut)[0]
             lo, hi = max(inside[0] - 1, 0), min(inside[-1] + 1, len(offs) - 1)
             assert inside[0] > 0 and inside[-1] < len(offs) - 1, ("box", self.axes, d, prof[0] - peak, prof[-1] - peak)
             bounds.append((x[d] + offs[lo], x[d] + offs[hi]))
@@ -353,7 +375,9 @@ class Model:
                                  if 0.1 < peak - prof[i] < 3) if any(0.1 < peak - prof[i] < 3 for i in range(len(offs))) else width)
             # Shares and percentiles at c sds: as functions of ln sigma they turn within 1/(c sqrt(n)).
             steep = self.axes[d] == 's' and self.shares
-            steps.append(min(0.08 if steep else 0.10, min(width, curv) / (3.2 if steep else 2.0)))
+            steps.append(min((0.04 if k == 1 else 0.08) if steep else 0.10, min(width, curv) / (3.2 if steep else 2.0)))
+        if k == 3:       # coarser, or there are too many nodes; two steps are compared all the same
+            steps = [h * {'t': 1.3, 's': 1.0, 'h': 1.25}[a] for a, h in zip(self.axes, steps)]
         return bounds, steps
 
     def nodes(self, fine, present=True):
@@ -375,32 +399,37 @@ class Model:
         hs = np.prod([LD(s * (2 / 3 if fine else 1)) for s in steps])
         # pruned first, so that the laws are only formed where they count
         chunk = 200000
-        lws = []
-        for i in range(0, len(pts[0]), chunk):
-            lws.append(self.at(**{a: p[i:i + chunk] for a, p in zip(self.axes, pts)}, present=present)[0])
-        lw = np.concatenate(lws)
+        part = lambda i: {a: p[i:i + chunk] for a, p in zip(self.axes, pts)}
+        lw = np.concatenate([self.at(**part(i), present=present)[0] for i in range(0, len(pts[0]), chunk)])
         peak = lw.max()
-        ok = lw > peak - CUT + 4
+        ok = lw > peak - self.cut + (4 if len(self.axes) < 3 else 10)
         pts = [p[ok] for p in pts]
-        lw, laws = self.at(**dict(zip(self.axes, pts)), present=present)
+        lws, several = [], []
+        for i in range(0, len(pts[0]), chunk):
+            lw, laws = self.at(**part(i), present=present)
+            lws.append(lw)
+            several.append({k: v for k, v in laws.items() if self.changes or not k.startswith('change')})
+        lw, laws = np.concatenate(lws), joined(several)
         w = np.exp(lw - peak)
         total = w.sum()
         return w / total, laws, peak + np.log(total * hs) + laws.pop('constant')
 
 
 class Posterior:
-    def __init__(self, spec, data, series, now, log, fine):
+    def __init__(self, spec, data, series, now, log, fine, present=True, models=None):
+        """`present` false leaves this period's readings out."""
+        self.present = present
         first = data[series].get(now) or list(data[series].values())[-1]
         self.shift = mp.mpf(first.mean)
         self.log, self.spec, self.series = log, spec, series
         P = spec['prior']
         mk = lambda prior=None: Model(spec, data, series, now, log, prior, self.shift)
-        cache = spec.setdefault('_models', {})
+        cache = spec.setdefault('_models', {}) if models is None else models
         if P['from'] == 'mixture':
             parts = []
             for i, part in enumerate(P['parts']):
                 model = cache.setdefault((series, i), mk(part))
-                w, laws, z = model.nodes(fine)
+                w, laws, z = model.nodes(fine, present)
                 z0 = model.nodes(fine, present=False)[2]
                 parts.append((ld(part['weight']), w, laws, z - z0))
             top = max(z for _, _, _, z in parts)
@@ -417,7 +446,7 @@ class Posterior:
             self.model = mk(P['parts'][0])
         else:
             self.model = cache.setdefault(series, mk())
-            self.w, self.laws, _ = self.model.nodes(fine)
+            self.w, self.laws, _ = self.model.nodes(fine, present)
 
     def mix(self, name, extra=0):
         m, v = self.laws[name]
