@@ -1,6 +1,7 @@
 //! The answers: per question its words, symbols, figures on three bases, rule and verdict.
 
 use super::numbers::{NOTHING, Numbers, VerdictView, reasons, rule_words, verdict};
+use super::row_tables;
 use super::table::{Column, TableView, plain};
 use crate::findings::{AcrossFindings, Answer, SeriesFindings};
 use crate::plan::{Plan, QuestionPlan, Rule};
@@ -32,6 +33,10 @@ pub struct AnswerView {
     pub rule_figures: Vec<String>,
     /// The chance of each verdict against the true level.
     pub rule_figure: Option<super::drawings::FigureView>,
+    /// The same as a table.
+    pub characteristic: Option<TableView>,
+    /// Of an answer that is itself a table.
+    pub table: Option<TableView>,
     pub not_decided: bool,
     pub working: Option<TableView>,
 }
@@ -84,6 +89,8 @@ pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> 
         verdict: given,
         rule_figures: rule_figures(&answer.rule_figures, rule, numbers),
         rule_figure: None,
+        characteristic: row_tables::operating_characteristic(&answer.rule_figures, numbers),
+        table: row_tables::readings_needed(&answer.figures, numbers),
         working: working(&answer.working),
     }
 }

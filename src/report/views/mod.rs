@@ -9,6 +9,7 @@ pub mod fixed;
 pub mod head;
 pub mod model;
 pub mod numbers;
+pub mod row_tables;
 pub mod sensitivity;
 pub mod series;
 pub mod table;
