@@ -315,6 +315,7 @@ impl Builder<'_> {
                 &level,
                 Level::LongRun { .. }
                     | Level::AboutMean { .. }
+                    | Level::AboutMeanMarked(_)
                     | Level::Walk(_)
                     | Level::PerReading { periods: true, .. }
             );

@@ -189,6 +189,64 @@ proptest! {
     }
 }
 
+/// A mark that says nothing, in an earlier period: all laws are as without it, those of other periods too.
+#[test]
+fn a_mark_far_away_in_the_history_says_nothing() {
+    let first = [0.3, 1.1, -0.4];
+    let mean = first.iter().sum::<f64>() / 3.0;
+    let ss = first.iter().map(|x| (x - mean) * (x - mean)).sum();
+    let single = |seen: Seen| Single { seen, uncertainty: 0.0 };
+    let mut open: Vec<Single> = first.iter().map(|x| single(Seen::At(*x))).collect();
+    open.push(single(Seen::Below(1e6)));
+    let others = [sums(4, 1.2, 2.0), sums(2, -0.6, 0.5)];
+    let of = |first: Evidence| {
+        let periods = [first].into_iter().chain(others.clone()).collect();
+        let history = LevelPrior::Periods(about_mean(Between::Known(0.7), periods));
+        solve(&model(Within::Known(0.8), history), &sums(3, 0.9, 1.0), Basis::Both).unwrap()
+    };
+    let (open, exact) = (of(Evidence::Singles(open)), of(sums(3, mean, ss)));
+    for when in [When::This, When::Next, When::LongRun] {
+        same(&open.level(when).unwrap(), &exact.level(when).unwrap());
+    }
+}
+
+/// A change so large that no change at all lies beyond every promise: the law is still given, and is the integral
+/// over τ of methods §4, taken here by a plain trapezoid rule in ln τ.
+#[test]
+fn a_change_far_from_none() {
+    let (scale, sigma2) = (0.7, 1.0);
+    let means = [(3.0, 10.053), (2.0, 15.828), (5.0, 6.929), (2.0, 2.061)];
+    let periods: Vec<Evidence> = means.iter().map(|(n, mean)| sums(*n as u64, *mean, 1.0)).collect();
+    let history = about_mean(Between::HalfCauchy(scale), periods[..3].to_vec());
+    let against = history.periods[1].0.clone();
+    let posterior =
+        solve(&model(Within::Known(1.0), LevelPrior::Periods(history)), &periods[3], Basis::Both).unwrap();
+    let law = posterior.change(&against, &periods[1]).unwrap();
+    let given = |tau2: f64| {
+        let of = |(n, mean): (f64, f64)| (mean, sigma2 / n, 1.0 / (tau2 + sigma2 / n));
+        let all = means.map(of);
+        let v = 1.0 / all.iter().map(|p| p.2).sum::<f64>();
+        let mu = v * all.iter().map(|p| p.2 * p.0).sum::<f64>();
+        let ln_weight = all.iter().map(|p| 0.5 * (fm::ln(p.2) - p.2 * (p.0 - mu) * (p.0 - mu))).sum::<f64>();
+        let pulled = |p: (f64, f64, f64)| (tau2 * p.2, p.0, tau2 * p.2 * p.1);
+        let (now, then) = (pulled(all[3]), pulled(all[1]));
+        let rest = then.0 - now.0;
+        let mean = now.0 * now.1 - then.0 * then.1 + rest * mu;
+        (ln_weight + 0.5 * fm::ln(v), mean, now.2 + then.2 + rest * rest * v)
+    };
+    for t in [-18.0, -14.5, -13.0, -11.0, -8.0] {
+        let (mut whole, mut below) = (0.0, 0.0);
+        for i in -6000..=6000 {
+            let tau = fm::exp(f64::from(i) * 0.005);
+            let (ln_weight, mean, var) = given(tau * tau);
+            let weight = tau * fm::exp(ln_weight) / (1.0 + tau * tau / (scale * scale));
+            whole += weight;
+            below += weight * crate::math::normal::cdf((t - mean) / var.sqrt());
+        }
+        near(law.cdf(t), below / whole, 1e-9);
+    }
+}
+
 /// Histories that are hard on a quadrature: an answer that moves with its unit or a clear failure, never a
 /// silent wrong one.
 #[test]
