@@ -33,7 +33,7 @@ pub enum Cause {
 /// One thing that stops a run.
 #[derive(Debug, Clone, PartialEq, Eq)]
 pub struct Fault {
-    /// Stable, hyphenated words, e.g. `unknown-key`; `reassay explain` knows them.
+    /// Stable, hyphenated words, e.g. `unknown-key`.
     pub code: &'static str,
     pub cause: Cause,
     /// What is wrong, one sentence, with the offending text.

@@ -4,8 +4,9 @@
 
 use super::{Answer, Findings, SeriesFindings};
 use crate::checks::Concern;
+use crate::data::{Fate, Mark};
 use crate::diagnostics::Caution;
-use crate::plan::Plan;
+use crate::plan::{Limit, Plan};
 use crate::questions::rule;
 use jiff::civil::Date;
 
@@ -13,6 +14,9 @@ use jiff::civil::Date;
 const MANY_EXCLUDED: f64 = 0.10;
 const MANY_MARKED: f64 = 0.50;
 const MOST_MARKED: f64 = 0.80;
+/// The probability beyond 8 standard deviations of a normal law.
+const BEYOND_EIGHT_SDS: f64 = 6.2e-16;
+
 /// All cautions of the findings, in a fixed order: the plan's, then series by series.
 pub fn of(findings: &Findings) -> Vec<Caution> {
     let plan = &findings.plan;
@@ -119,6 +123,8 @@ fn of_series(findings: &Findings, series: &SeriesFindings) -> Vec<Caution> {
     let mut cautions = of_data(findings, series);
     cautions.extend(of_influence(findings, series));
     cautions.extend(of_checks(series));
+    cautions.extend(marks_beyond_limits(findings, series));
+    cautions.extend(limits_far_off(series));
     for answer in &series.answers {
         cautions.extend(of_answer(findings, answer));
     }
@@ -203,6 +209,47 @@ fn of_influence(findings: &Findings, series: &SeriesFindings) -> Option<Caution>
             ),
         )
     })
+}
+
+/// Readings known only to lie below a value that is itself beyond a limit cannot tell on which side they lie.
+fn marks_beyond_limits(findings: &Findings, series: &SeriesFindings) -> Vec<Caution> {
+    let plan = &findings.plan;
+    let data = findings.data.series.iter().find(|data| data.name == series.name);
+    let Some(period) = data.and_then(|data| data.period(&plan.review.period)) else { return Vec::new() };
+    let marked: Vec<f64> = period
+        .readings
+        .iter()
+        .filter(|row| row.fate == Fate::Used && row.mark == Mark::Below)
+        .filter_map(|row| row.value)
+        .collect();
+    let of_limit = |limit: &Limit| {
+        let upper = plan.bounds(&limit.name, &series.name)?.ends().into_iter().next_back()?;
+        let beyond = marked.iter().filter(|value| **value > upper).count();
+        (beyond > 0).then(|| {
+            Caution::new(
+                "mark-beyond-limit",
+                format!(
+                    "{beyond} of the readings are known only to lie below a value that is itself above the limit \"{}\": they cannot show that it was kept.",
+                    limit.name
+                ),
+            )
+        })
+    };
+    plan.limits.iter().filter_map(of_limit).collect()
+}
+
+/// A limit more than 8 standard deviations away: the answer is trivial, or a unit is wrong.
+fn limits_far_off(series: &SeriesFindings) -> Vec<Caution> {
+    let far = |answer: &&Answer| {
+        let chance = answer.figures.value("chance");
+        answer.ask == "level chance"
+            && chance.is_some_and(|chance| !(BEYOND_EIGHT_SDS..=1.0 - BEYOND_EIGHT_SDS).contains(&chance))
+    };
+    let caution = |answer: &Answer| {
+        let text = "The limit lies more than 8 standard deviations from the level: the answer is as good as certain if the unit of the limit is that of the readings.";
+        Caution::new("limit-far-off", text).of_question(&answer.id)
+    };
+    series.answers.iter().filter(far).map(caution).collect()
 }
 
 fn of_checks(series: &SeriesFindings) -> Vec<Caution> {

@@ -21,9 +21,10 @@
 
 use super::ground::Ground;
 use super::{Between, Built, LevelPrior, Pattern, Periods, Refusal, Source, SourceKind, basis};
+use crate::data::evidence::Evidence;
 use crate::diagnostics::{Caution, Fault, Faults, Place};
 use crate::plan::Plan;
-use crate::quantity::Scale;
+use crate::quantity::{Period, Scale};
 use crate::spec::keys::{Key, Takes};
 use crate::spec::reader::Reader;
 use crate::spec::table::Table;
@@ -226,6 +227,17 @@ impl BetweenRead {
     }
 }
 
+/// Whole-number periods that are missing between the first and the last, the first few of them.
+fn without_readings(periods: &[(Period, Evidence)]) -> Vec<String> {
+    const LISTED: usize = 12;
+    let numbers: Option<Vec<i64>> = periods.iter().map(|(period, _)| period.number()).collect();
+    let Some((first, last)) = numbers.as_ref().and_then(|all| Some((*all.first()?, *all.last()?))) else {
+        return Vec::new();
+    };
+    let known = |number: &i64| numbers.as_ref().is_some_and(|all| all.contains(number));
+    (first..last).filter(|number| !known(number)).take(LISTED).map(|number| number.to_string()).collect()
+}
+
 impl Source for History {
     fn from(&self) -> &'static str {
         "history"
@@ -257,6 +269,14 @@ impl Source for History {
             },
             self.read.in_words()
         )];
+        let absent = without_readings(&periods);
+        if !absent.is_empty() {
+            notes.push(format!(
+                "Between them, nothing counts of {}{}.",
+                absent.join(", "),
+                if self.random_walk { ": the walk takes these steps unseen" } else { "" }
+            ));
+        }
         if let Some(basis) = &self.read.basis {
             notes.push(format!("Basis: {}.", basis.trim_end_matches('.')));
         }

@@ -100,6 +100,15 @@ fn answers(findings: &Findings, other: &Compared) -> TableView {
     table
 }
 
+/// An answer then in one line, with its verdict.
+pub fn said_then(changed: &Changed, now: &Answer, numbers: &Numbers<'_>) -> String {
+    let said = numbers.line(&one_side(changed, now, 0), None);
+    match &changed.verdict_then {
+        Some(verdict) => format!("{said}: {verdict}"),
+        None => said,
+    }
+}
+
 /// The figures then (0) or now (1), each with the meaning that it has now.
 fn one_side(changed: &Changed, now: &Answer, side: usize) -> Figures {
     let mut figures = Figures::default();

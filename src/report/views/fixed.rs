@@ -21,8 +21,13 @@ pub const CODES: &[(&str, &str)] = &[
     ),
     ("ledger-differs", "Readings of an earlier period are not those that went into the handover."),
     ("limit-differs", "A limit is not that of the review that this one is compared with."),
+    ("limit-far-off", "A limit lies more than 8 standard deviations from the level: is its unit right?"),
     ("limit-applies-to-other", "A limit is held against something other than what its basis sets it for."),
     ("limit-for-something-else", "A limit is held against something other than what its basis sets it for."),
+    (
+        "mark-beyond-limit",
+        "Readings known only to lie below a value beyond the limit cannot show that it was kept.",
+    ),
     ("many-excluded", "More than one reading in ten is excluded."),
     ("many-readings-marked", "More than half of the readings are known only to lie below or above a value."),
     (

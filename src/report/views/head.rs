@@ -1,12 +1,14 @@
 //! The first page: what was asked, what was found, how far the prior drives it, and the cautions.
 
 use super::answers::{agreed, question_words, rule_of, with_minus};
+use super::compared::said_then;
 use super::numbers::{self, NOTHING, Numbers, bounds_words, rule_words, verdict_cell};
 use super::sensitivity::{changes, main_figure};
 use super::series::{flagged, influence, numbers_of};
 use super::table::{Column, TableView, bold, code, plain};
 use crate::checks::Concern;
 use crate::data::Facts;
+use crate::findings::compared::Relation;
 use crate::findings::{Answer, Findings, SeriesFindings};
 use crate::plan::{AppliesTo, Plan, QuestionPlan};
 use crate::questions::figures::Meaning;
@@ -108,6 +110,12 @@ fn single(findings: &Findings, series: &SeriesFindings) -> TableView {
     let numbers = numbers_of(findings, series);
     let ruled = series.answers.iter().any(|answer| answer.verdict.is_some());
     let mut columns = vec![("question", Column::Head), ("answer", Column::Text)];
+    let before = findings.compared.iter().find(|other| other.relation == Relation::Previous);
+    let then = before.and_then(|other| other.series.first()).filter(|then| !then.changes.is_empty());
+    let heading = before.map_or_else(String::new, |other| format!("in the review of {}", other.period));
+    if then.is_some() {
+        columns.push((heading.as_str(), Column::Text));
+    }
     if ruled {
         columns.extend([("verdict", Column::Text), ("by the rule", Column::Text)]);
     }
@@ -116,6 +124,12 @@ fn single(findings: &Findings, series: &SeriesFindings) -> TableView {
         let rule = rule_of(plan, &answer.id);
         let mut cells =
             vec![plain(question_words(answer.say.as_deref(), &answer.words)), plain(said(answer, &numbers))];
+        if let Some(then) = then {
+            let changed = then.changes.iter().find(|changed| changed.id == answer.id);
+            cells.push(plain(
+                changed.map_or_else(|| NOTHING.to_string(), |changed| said_then(changed, answer, &numbers)),
+            ));
+        }
         if ruled {
             cells.push(verdict_cell(answer.verdict.as_ref(), rule));
             cells.push(plain(
@@ -127,6 +141,9 @@ fn single(findings: &Findings, series: &SeriesFindings) -> TableView {
     for across in &findings.across {
         let found = super::answers::across(across, plan);
         let mut cells = vec![plain(&found.question), plain("see “Answers across series”")];
+        if then.is_some() {
+            cells.push(plain(NOTHING));
+        }
         if ruled {
             cells.push(found.verdict.clone().unwrap_or_else(|| plain(NOTHING)));
             cells.push(plain(NOTHING));
