@@ -11,3 +11,4 @@ mod tidiness;
 mod other_scales;
 mod reference;
 mod published;
+mod calibration;
