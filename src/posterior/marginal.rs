@@ -9,9 +9,11 @@ use super::weighing::Weighed;
 use crate::math::{fm, roots};
 use crate::quantity::Absent;
 
-/// How far below its top the marginal density is followed: 5e−32, for the second moment of a tail as heavy as a
-/// few periods leave it lies far out.
-const DEPTH: f64 = 72.0;
+/// How far below its top the marginal density is followed: 1e-19.
+const DEPTH: f64 = 44.0;
+/// The same for a tail so heavy that moments up to `HEAVY` only exist: the second may lie far out (5e−32).
+const DEPTH_OF_HEAVY: f64 = 72.0;
+const HEAVY: f64 = 6.0;
 
 /// A part with its nodes and its share of the whole.
 pub(super) struct Weighted<'a> {
@@ -65,8 +67,9 @@ fn ln_density(weighted: &Weighted<'_>, wanted: Coordinate, x: f64) -> Result<f64
     Ok(ln - fm::ln(slope) - weighted.weighed.ln_integral)
 }
 
-/// The density of x = ln spread over all parts, on panels.
-pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate) -> Result<Panels, Absent> {
+/// The density of x = ln spread over all parts, on panels. Moments of the spread exist below `bound`.
+pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate, bound: f64) -> Result<Panels, Absent> {
+    let depth = if bound <= HEAVY { DEPTH_OF_HEAVY } else { DEPTH };
     let trouble = std::cell::RefCell::new(None);
     let ln_all = |x: f64| {
         let mut total = f64::NEG_INFINITY;
@@ -113,7 +116,7 @@ pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate) -> Result<Panel
             x += step;
             edges.push(x);
             let ln = ln_all(x);
-            if ln.is_nan() || ln <= mode.ln_height - DEPTH {
+            if ln.is_nan() || ln <= mode.ln_height - depth {
                 break;
             }
             step *= 1.3;
@@ -123,7 +126,9 @@ pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate) -> Result<Panel
     let mut edges: Vec<f64> = edge(-1.5 * mode.left).into_iter().rev().collect();
     edges.push(mode.x);
     edges.extend(edge(1.5 * mode.right));
-    let made = Panels::with_tails(&|x| fm::exp(ln_all(x)), &edges);
+    let density = |x: f64| fm::exp(ln_all(x));
+    let made =
+        if bound <= HEAVY { Panels::with_tails(&density, &edges) } else { Panels::new(&density, &edges) };
     if let Some(e) = trouble.borrow_mut().take() {
         return Err(e);
     }

@@ -173,7 +173,7 @@ fn pieces_agree_with_the_closed_form() {
             }
         }
         let closed = posterior.within_sd().unwrap();
-        let panels = marginal::panels(&posterior.inner.weighted(), plane::Coordinate::Sd).unwrap();
+        let panels = marginal::panels(&posterior.inner.weighted(), plane::Coordinate::Sd, 4.0).unwrap();
         let scale = posterior.inner.units.scale;
         for p in [0.001, 0.025, 0.5, 0.9, 0.999] {
             near(scale * fm::exp(panels.quantile(p).unwrap()), closed.quantile(p).unwrap(), 1e-10);

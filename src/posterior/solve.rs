@@ -231,7 +231,7 @@ impl Inner {
         if let Some(conjugate) = &self.conjugate {
             return Ok(conjugate.within_sd(self.bounds.sd));
         }
-        let panels = marginal::panels(&self.weighted(), Coordinate::Sd)?;
+        let panels = marginal::panels(&self.weighted(), Coordinate::Sd, self.bounds.sd)?;
         self.spread(panels, self.bounds.sd, "the within sd")
     }
 
@@ -242,7 +242,7 @@ impl Inner {
         if self.parts.iter().any(|p| matches!(p.0.plane.between, BetweenSd::Fixed(_))) {
             return Err(Absent::because("not every part of the prior has an unknown between sd"));
         }
-        let panels = marginal::panels(&self.weighted(), Coordinate::Between)?;
+        let panels = marginal::panels(&self.weighted(), Coordinate::Between, self.bounds.between)?;
         self.spread(panels, self.bounds.between, "the between sd")
     }
 

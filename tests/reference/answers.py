@@ -106,17 +106,19 @@ def sd_law(post, which):
         return e.sum(axis=1) if two else e
     probe, _ = marginal(np.linspace(lo, hi, 400))
     peak[0] = probe.max()
+    near = np.exp(LD(model.guess(axis)))     # squares from a place nearby keep their digits
     def panel(a, b):
         ys = (a + b) / 2 + (b - a) / 2 * nodes
         f = dens(ys)
-        return [np.sum(weights * f * np.exp(k * ys)) * (b - a) / 2 for k in (0, 1, 2)]
+        x = np.exp(ys)
+        return [np.sum(weights * f * g) * (b - a) / 2 for g in (1, x, (x - near) ** 2)]
     each = [panel(a, b) for a, b in zip(edges[:-1], edges[1:])]
     mass = np.array([e[0] for e in each], dtype=LD)
     total = mass.sum()
     below = np.concatenate([[LD(0)], np.cumsum(mass)])
     above = np.concatenate([np.cumsum(mass[::-1])[::-1], [LD(0)]])
     mean, square = (sum(e[k] for e in each) / total for k in (1, 2))
-    sd = np.sqrt(square - mean * mean)
+    sd = np.sqrt(square - (mean - near) ** 2)
     def quantile(p):
         p = mp.mpf(p)
         pl, pu = ld(p) * total, ld(1 - p) * total
