@@ -91,6 +91,7 @@ impl Figures {
         let (centre, sd, uncertainty) = self.on_scale(scale)?;
         let n = match self.n {
             Some(n) if (1.0..1e15).contains(&n) && fm::floor(n) == n => Some(n as u64),
+            Some(n) if n >= 1e15 => return Err(wrong("n is larger than any number of readings")),
             Some(_) => return Err(wrong("n is no whole number of at least 1")),
             None => None,
         };
