@@ -2,14 +2,14 @@
 //! A common bias cancels, so levels are as measured.
 
 use super::build::Part;
-use super::grid::{self, Place};
+use super::grid;
 use super::law::Law;
 use super::marked::{self, Given};
 use super::plane::{BetweenSd, Level, Node};
 use super::solve::NEGLIGIBLE;
 use super::told::{Told, is_marked, told};
 use super::walk::Walk;
-use super::weighing::FLOOR;
+use super::weighing::floor;
 use super::{Basis, Posterior, When, mixture};
 use crate::data::evidence::Evidence;
 use crate::math::fm;
@@ -139,8 +139,14 @@ impl Posterior {
                 let nodes = if factor == 1.0 || weighed.frame.dims == 0 {
                     &weighed.nodes
                 } else {
-                    let f = |place: &Place| part.plane.node(place);
-                    fresh = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, FLOOR)?;
+                    let f = part.plane.nodes();
+                    fresh = grid::sweep(
+                        &f,
+                        &weighed.frame,
+                        weighed.factor * factor,
+                        offset,
+                        floor(weighed.frame.dims),
+                    )?;
                     &fresh
                 };
                 let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);

@@ -41,6 +41,10 @@ impl Weighted for Given {
     fn ln_weight(&self) -> f64 {
         self.ln_weight
     }
+
+    fn enlarge(&mut self, ln_cell: f64) {
+        self.ln_weight += ln_cell;
+    }
 }
 
 /// What the members share.
@@ -376,7 +380,9 @@ fn given(
     let mut parts = Vec::new();
     for (weighed, ln) in all.iter().zip(&ln_parts) {
         for node in &weighed.nodes {
-            let weight = fm::exp(ln - whole + node.ln_weight - weighed.ln_integral + ln_volume(weighed));
+            let weight = fm::exp(
+                ln - whole + node.ln_weight - weighed.ln_integral + weighed.frame.ln_volume(weighed.factor),
+            );
             if weight > 1e-20 {
                 parts.push((
                     weight,
@@ -387,10 +393,6 @@ fn given(
         }
     }
     Ok((whole, parts))
-}
-
-fn ln_volume(weighed: &Weighed) -> f64 {
-    (0..weighed.frame.dims).map(|d| fm::ln(weighed.factor * weighed.frame.width[d])).sum()
 }
 
 /// The readings with a bias taken out.

@@ -4,7 +4,7 @@
 use super::build::Part;
 use super::grid::{self, MOST, Place};
 use super::legendre::Panels;
-use super::plane::{BetweenSd, Coordinate, Sd};
+use super::plane::{BetweenSd, Coordinate, Node, Sd};
 use super::weighing::Weighed;
 use crate::math::{fm, roots};
 use crate::quantity::Absent;
@@ -23,7 +23,12 @@ pub(super) struct Weighted<'a> {
 }
 
 /// ln density of x = ln spread (inner units) within one part; `None` where the part has no such axis.
-fn ln_density(weighted: &Weighted<'_>, wanted: Coordinate, x: f64) -> Result<f64, Absent> {
+fn ln_density(
+    weighted: &Weighted<'_>,
+    node: &impl Fn(&Place) -> Node,
+    wanted: Coordinate,
+    x: f64,
+) -> Result<f64, Absent> {
     let plane = &weighted.part.plane;
     let frame = &weighted.weighed.frame;
     let coordinates = plane.coordinates();
@@ -47,13 +52,14 @@ fn ln_density(weighted: &Weighted<'_>, wanted: Coordinate, x: f64) -> Result<f64
     for i in d..rest.dims {
         rest.centre[i] = frame.centre[i + 1];
         rest.width[i] = frame.width[i + 1];
+        rest.stretch[i] = frame.stretch[i + 1];
     }
     let f = |place: &Place| {
         let mut whole = [0.0; MOST];
         whole[..d].copy_from_slice(&place[..d]);
         whole[d] = u;
         whole[d + 1..frame.dims].copy_from_slice(&place[d..rest.dims]);
-        plane.node(&whole)
+        node(&whole)
     };
     let ln = if rest.dims == 0 {
         f(&[0.0; MOST]).ln_weight
@@ -71,10 +77,11 @@ fn ln_density(weighted: &Weighted<'_>, wanted: Coordinate, x: f64) -> Result<f64
 pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate, bound: f64) -> Result<Panels, Absent> {
     let depth = if bound <= HEAVY { DEPTH_OF_HEAVY } else { DEPTH };
     let trouble = std::cell::RefCell::new(None);
+    let nodes: Vec<_> = parts.iter().map(|w| w.part.plane.nodes()).collect();
     let ln_all = |x: f64| {
         let mut total = f64::NEG_INFINITY;
-        for weighted in parts.iter().filter(|w| w.share > 0.0) {
-            match ln_density(weighted, wanted, x) {
+        for (weighted, node) in parts.iter().zip(&nodes).filter(|(w, _)| w.share > 0.0) {
+            match ln_density(weighted, node, wanted, x) {
                 Ok(ln) => total = fm::ln_add_exp(total, fm::ln(weighted.share) + ln),
                 Err(e) => {
                     trouble.borrow_mut().get_or_insert(e);

@@ -12,10 +12,11 @@ use super::moments::moment;
 use super::plane::{Coordinate, Level, Node};
 use super::shapes::OnPanels;
 use super::solve::Inner;
-use super::weighing::FLOOR;
+use super::weighing::floor;
 use crate::math::{fm, normal};
 use crate::quantity::Absent;
 use std::collections::BTreeMap;
+use std::rc::Rc;
 use std::sync::Arc;
 
 /// X | y ~ N(constant + slope · y, var), X in outer units from the posterior's origin; y in inner units.
@@ -29,8 +30,11 @@ pub(super) struct Given {
 /// What X is at a node, for the line through it.
 pub(super) type AtNode<'a> = dyn Fn(&Part, &Node) -> Given + 'a;
 
+/// A plane's nodes by their places.
+type NodeAt<'a> = dyn Fn(&Place) -> Node + 'a;
+
 struct Line<'a> {
-    part: &'a Part,
+    nodes_at: Rc<NodeAt<'a>>,
     /// Any node of it.
     node: Node,
     /// Which coordinate runs along it, and how y stands to it.
@@ -49,7 +53,7 @@ impl Line<'_> {
     fn density(&self, y: f64) -> f64 {
         let mut place = self.node.place;
         place[self.along] = (y - self.line.0) / self.line.1;
-        let ln = self.part.plane.node(&place).ln_weight - fm::ln(self.line.1);
+        let ln = (self.nodes_at)(&place).ln_weight + self.node.ln_cell - fm::ln(self.line.1);
         fm::exp(ln + self.ln_scale)
     }
 
@@ -150,8 +154,9 @@ fn all_lines<'a>(
         if factor == 1.0 {
             lines.extend(lines_of(part, &weighed.nodes, *share, along, step, at));
         } else {
-            let f = |place: &Place| part.plane.node(place);
-            let nodes = grid::sweep(&f, &weighed.frame, factor * weighed.factor, 0.29, FLOOR)?;
+            let f = part.plane.nodes();
+            let nodes =
+                grid::sweep(&f, &weighed.frame, factor * weighed.factor, 0.29, floor(weighed.frame.dims))?;
             lines.extend(lines_of(part, &nodes, *share, along, step, at));
         }
     }
@@ -225,6 +230,7 @@ fn lines_of<'a>(
         key[along] = 0;
         by_line.entry(key).or_default().push(node);
     }
+    let nodes_at: Rc<NodeAt<'a>> = Rc::new(part.plane.nodes());
     let mut lines = Vec::new();
     for members in by_line.into_values() {
         let line = |n: &Node| if coordinate == Coordinate::Level { n.level_line } else { n.long_line };
@@ -237,7 +243,7 @@ fn lines_of<'a>(
         // A node stands for a step of its line: its share is the density times that step.
         let ln_scale = fm::ln(share / (whole * step)) - top;
         lines.push(Line {
-            part,
+            nodes_at: Rc::clone(&nodes_at),
             node: **node,
             along,
             line: line(node),

@@ -16,6 +16,7 @@ mod marginal;
 mod marked;
 mod marked_periods;
 mod marks;
+mod memo;
 mod moments;
 mod plane;
 mod predictive;
@@ -133,7 +134,11 @@ impl Posterior {
             mixture(parts.collect(), bound, self.name(when)).map(|law| law.moved(self.origin()))
         };
         let as_held = law(&self.pieces, &self.inner.true_levels)?;
-        if moves_with_sd && self.has_unknown_sd() { self.settled(as_held, &law) } else { Ok(as_held) }
+        if moves_with_sd && self.has_unknown_sd() {
+            self.settled(as_held, 1.0, &|sigma| (shift(sigma), 0.0), &law)
+        } else {
+            Ok(as_held)
+        }
     }
 
     /// The law of o + `factor`·(θ − o) + shift(σ) + N(0, variance(σ)), θ the level as measured in that period and
@@ -183,7 +188,7 @@ impl Posterior {
         let as_held = law(&self.pieces)?;
         let moves_with_sd = shift_and_variance(1.0).0 != shift_and_variance(2.0).0;
         if moves_with_sd && self.has_unknown_sd() {
-            self.settled(as_held, &|pieces, _| law(pieces))
+            self.settled(as_held, factor, shift_and_variance, &|pieces, _| law(pieces))
         } else {
             Ok(as_held)
         }

@@ -6,6 +6,7 @@ use super::axis::{SdAxis, TauAxis};
 use super::grid::{MOST, Place, Weighted};
 use super::marked_periods::MarkedPeriods;
 use super::marks::{self, Mark};
+use super::memo::Memo;
 use super::told::Told;
 use super::walk::Walk;
 use crate::math::fm;
@@ -90,6 +91,8 @@ pub(super) struct Plane {
 #[derive(Debug, Clone, Copy, PartialEq)]
 pub(super) struct Node {
     pub ln_weight: f64,
+    /// What of it is the size of the node's cell in the grid.
+    pub ln_cell: f64,
     pub sigma: f64,
     pub history_sigma: f64,
     pub tau: f64,
@@ -119,6 +122,11 @@ impl Weighted for Node {
     fn ln_weight(&self) -> f64 {
         self.ln_weight
     }
+
+    fn enlarge(&mut self, ln_cell: f64) {
+        self.ln_weight += ln_cell;
+        self.ln_cell += ln_cell;
+    }
 }
 
 impl Node {
@@ -143,13 +151,12 @@ impl Plane {
         let mut all = Vec::with_capacity(MOST);
         match self.history_sd {
             Some(Sd::Unknown(_)) => all.push(Coordinate::HistorySd),
-            None if matches!(self.sd, Sd::Unknown(_)) => all.push(Coordinate::Sd),
             _ => {}
         }
         if matches!(self.between, BetweenSd::Unknown(_)) {
             all.push(Coordinate::Between);
         }
-        if self.history_sd.is_some() && matches!(self.sd, Sd::Unknown(_)) {
+        if matches!(self.sd, Sd::Unknown(_)) {
             all.push(Coordinate::Sd);
         }
         if matches!(self.level, Level::AboutMeanMarked(_)) {
@@ -159,6 +166,12 @@ impl Plane {
             all.push(Coordinate::Level);
         }
         all
+    }
+
+    /// Whether σ (of this period or of the history) has 30 degrees of freedom or more.
+    pub fn sd_is_well_known(&self, which: Coordinate) -> bool {
+        let sd = if which == Coordinate::HistorySd { self.history_sd } else { Some(self.sd) };
+        matches!(sd, Some(Sd::Unknown(axis)) if !axis.uniform && axis.sums.ss > 0.0 && axis.sums.df >= 30.0)
     }
 
     /// Whether a line of the plane is kept as a density rather than as normal pieces.
@@ -184,26 +197,46 @@ impl Plane {
         of(&self.sd) + self.history_sd.as_ref().map_or(0.0, of)
     }
 
+    /// The nodes of a sweep: what neighbours share is computed once.
+    pub fn nodes(&self) -> impl Fn(&Place) -> Node + '_ {
+        let memo = Memo::new();
+        move |place| self.node(place, &memo)
+    }
+
+    /// One node by itself.
+    pub fn node_alone(&self, place: &Place) -> Node {
+        self.node(place, &Memo::new())
+    }
+
     /// The node at these coordinates.
-    pub fn node(&self, place: &Place) -> Node {
+    fn node(&self, place: &Place, memo: &Memo) -> Node {
         let mut next = 0;
         let mut ln_weight = 0.0;
-        let history_sigma = sigma_at(self.history_sd.unwrap_or(self.sd), place, &mut next, &mut ln_weight);
+        let sigma_at = |sd: Sd, next: &mut usize, ln_weight: &mut f64| match sd {
+            Sd::Fixed(sigma) => sigma,
+            Sd::Undefined => f64::NAN,
+            Sd::Unknown(axis) => {
+                let (sigma, ln_density) = memo.spread(*next, place[*next], |u| axis.at(u));
+                *next += 1;
+                *ln_weight += ln_density;
+                sigma
+            }
+        };
+        let of_history = self.history_sd.map(|sd| sigma_at(sd, &mut next, &mut ln_weight));
         let tau = match self.between {
             BetweenSd::Fixed(tau) => tau,
             BetweenSd::Unknown(axis) => {
-                let (tau, ln_density) = axis.at(place[next]);
+                let (tau, ln_density) = memo.spread(next, place[next], |u| axis.at(u));
                 next += 1;
                 ln_weight += ln_density;
                 tau
             }
         };
-        let sigma = match self.history_sd {
-            None => history_sigma,
-            Some(_) => sigma_at(self.sd, place, &mut next, &mut ln_weight),
-        };
+        let sigma = sigma_at(self.sd, &mut next, &mut ln_weight);
+        let history_sigma = of_history.unwrap_or(sigma);
         let mut node = Node {
             ln_weight,
+            ln_cell: 0.0,
             sigma,
             history_sigma,
             tau,
@@ -222,7 +255,7 @@ impl Plane {
             link: 0.0,
         };
         if ln_weight > f64::NEG_INFINITY {
-            self.prior(&mut node, &mut next);
+            self.prior(&mut node, &mut next, memo);
             self.update(&mut node);
             if !self.marks.is_empty() {
                 self.mark(&mut node, next);
@@ -235,7 +268,7 @@ impl Plane {
     }
 
     /// The level before this period's readings.
-    fn prior(&self, node: &mut Node, next: &mut usize) {
+    fn prior(&self, node: &mut Node, next: &mut usize, memo: &Memo) {
         let (sigma2, history2, tau2) =
             (node.sigma * node.sigma, node.history_sigma * node.history_sigma, node.tau * node.tau);
         match &self.level {
@@ -259,7 +292,7 @@ impl Plane {
                 node.var = var + tau2;
             }
             Level::AboutMean { periods, share } => {
-                let long = periods.at(history2, tau2);
+                let long = memo.long_run(history2, tau2, || periods.at(history2, tau2));
                 node.ln_weight += long.ln_weight;
                 node.long_mean = long.mean;
                 node.long_var = long.var / share;
@@ -359,19 +392,5 @@ impl Plane {
 
     pub fn is_walk(&self) -> bool {
         matches!(self.level, Level::Walk(_))
-    }
-}
-
-/// σ, taking a coordinate where it is unknown.
-fn sigma_at(sd: Sd, place: &Place, next: &mut usize, ln_weight: &mut f64) -> f64 {
-    match sd {
-        Sd::Fixed(sigma) => sigma,
-        Sd::Undefined => f64::NAN,
-        Sd::Unknown(axis) => {
-            let (sigma, ln_density) = axis.at(place[*next]);
-            *next += 1;
-            *ln_weight += ln_density;
-            sigma
-        }
     }
 }

@@ -2,7 +2,7 @@
 //! marginals where the series share nothing, else given what they share.
 
 use super::build::build;
-use super::grid::{self, Place};
+use super::grid;
 use super::joint::{Member, Parts, Sharing, known, pull, refuse_marked, shared, sharing, single_plane};
 use super::legendre::Panels;
 use super::shapes::{panels_of, panels_with_tails};
@@ -126,7 +126,7 @@ fn of_peers(members: &[Member<'_>], highest: bool) -> Result<Vec<Rank>, Absent> 
     let nodes = if weighed.frame.dims == 0 {
         weighed.nodes
     } else {
-        let f = |place: &Place| plane.node(place);
+        let f = plane.nodes();
         grid::sweep(&f, &weighed.frame, weighed.factor, 0.0, NODES)?
     };
     let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);

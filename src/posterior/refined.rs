@@ -5,16 +5,24 @@ use super::grid::{self, MOST, Place};
 use super::law::Law;
 use super::plane::{Coordinate, Node, Plane, Sd};
 use super::solve::TrueLevel;
-use super::weighing::FLOOR;
+use super::weighing::floor;
 use super::{Piece, Posterior, solve};
 use crate::math::fm;
 use crate::quantity::{Absent, Figure};
 use std::f64::consts::FRAC_1_SQRT_2;
-use std::sync::{Arc, PoisonError};
 
 /// Two grids must agree to this, relative.
 const AGREED: f64 = 2e-11;
 const ROUNDS: usize = 14;
+/// A line's step along σ is at most so many sds of what it makes of σ. Trapezoid errors go with
+/// exp(−2π²/step²), 1e−6 of what a line so narrow adds.
+const NARROW: f64 = 1.2;
+/// The first grid's steps, in widths.
+const FIRST: f64 = 0.55;
+/// Lighter nodes (ln) of the many on such grids are not seen: 1e-26.
+const FINER_FLOOR: f64 = 60.0;
+/// Lines so much (ln) lighter than the heaviest keep their steps: they cannot be seen at 1e−17 of the whole.
+const LIGHT: f64 = 38.0;
 
 /// Pieces of a finer grid and, with a bias, their true levels.
 #[derive(Debug, Default)]
@@ -32,29 +40,46 @@ impl Posterior {
         self.inner.parts.iter().any(|(part, _, _)| matches!(part.plane.sd, Sd::Unknown(_)))
     }
 
-    /// A law whose centre moves with σ, on finer and finer grids until two agree to 2e−11 in the
-    /// middle and in both tails; `law` makes it from pieces and, with a bias, their true levels.
-    pub(super) fn settled(&self, first: Law, law: &LawOf<'_>) -> Result<Law, Absent> {
-        self.settled_on(first, law).map(|(law, _)| law)
+    /// A law whose centre moves with σ by `shift`, its variance being `factor`² times the level's and more: on
+    /// finer and finer grids until two agree to 2e−11 in the middle and in both tails; `law` makes it from
+    /// pieces and, with a bias, their true levels.
+    pub(super) fn settled(
+        &self,
+        first: Law,
+        factor: f64,
+        shift: &dyn Fn(f64) -> (f64, f64),
+        law: &LawOf<'_>,
+    ) -> Result<Law, Absent> {
+        self.settled_on(first, factor, shift, law).map(|(law, _)| law)
     }
 
     /// The same with the grid on which the law settled.
-    fn settled_on(&self, first: Law, law: &LawOf<'_>) -> Result<(Law, Arc<Finer>), Absent> {
+    fn settled_on(
+        &self,
+        first: Law,
+        factor: f64,
+        shift: &dyn Fn(f64) -> (f64, f64),
+        law: &LawOf<'_>,
+    ) -> Result<(Law, Finer), Absent> {
         let (low, high) = first.central(1.0 - 2e-6)?;
         let (near_low, near_high) = first.central(0.9)?;
         let middle = first.median()?;
         let measure =
             |law: &Law| [law.cdf(low), law.cdf(near_low), law.cdf(middle), law.sf(near_high), law.sf(high)];
-        let mut before = measure(&first);
+        let mut before: Option<[f64; 5]> = None;
+        let mut finer = 1.0;
         for round in 0..ROUNDS {
-            let grid = self.finer(round)?;
-            let finer = law(&grid.pieces, &grid.levels)?;
-            let now = measure(&finer);
-            let worst = before.iter().zip(now).map(|(a, b)| ((a - b) / b).abs()).fold(0.0, f64::max);
-            if worst <= AGREED {
-                return Ok((finer, grid));
+            let grid = self.made_finer(finer, if round % 2 == 0 { 0.29 } else { 0.79 }, factor, shift)?;
+            let made = law(&grid.pieces, &grid.levels)?;
+            let now = measure(&made);
+            if let Some(before) = before {
+                let worst = before.iter().zip(now).map(|(a, b)| ((a - b) / b).abs()).fold(0.0, f64::max);
+                if worst <= AGREED {
+                    return Ok((made, grid));
+                }
             }
-            before = now;
+            before = Some(now);
+            finer *= if round == 0 { 0.9 } else { 0.75 };
         }
         Err(Absent::failed("a law that moves with the within sd did not reach its promised accuracy"))
     }
@@ -71,36 +96,52 @@ impl Posterior {
             super::mixture(parts, self.inner.bounds.level.min(self.inner.bounds.sd), "a percentile")
         };
         let first = law(&self.pieces, &self.inner.true_levels)?;
-        self.settled_on(first, &law).map(|(_, grid)| g(&grid.pieces))
+        self.settled_on(first, 1.0, &|sigma| (z * sigma, 0.0), &law).map(|(_, grid)| g(&grid.pieces))
     }
 
-    /// The pieces (and with a bias their true levels) again, on a grid that begins elsewhere: its steps are
-    /// shorter by √2, and along σ, where such laws turn over fast, by √2 more for each further round. Made
-    /// once and kept: many laws settle on the same grids.
-    fn finer(&self, round: usize) -> Result<Arc<Finer>, Absent> {
-        let mut kept = self.inner.finer.lock().unwrap_or_else(PoisonError::into_inner);
-        while kept.len() <= round {
-            let along_sd = (0..kept.len()).fold(1.0, |factor, _| factor * FRAC_1_SQRT_2);
-            let made = Arc::new(self.made_finer(along_sd)?);
-            kept.push(made);
-        }
-        Ok(Arc::clone(&kept[round]))
-    }
-
-    fn made_finer(&self, along_sd: f64) -> Result<Finer, Absent> {
+    /// The pieces (and with a bias their true levels) again, on a grid that begins elsewhere, its steps shorter
+    /// by `finer`; lines on which the law's centre runs fast along σ have still shorter ones.
+    fn made_finer(
+        &self,
+        finer: f64,
+        offset: f64,
+        factor: f64,
+        shift: &dyn Fn(f64) -> (f64, f64),
+    ) -> Result<Finer, Absent> {
         let mut made = Finer::default();
         let units = &self.inner.units;
         let bias_sd = units.sd_in(self.inner.bias_sd);
         for (part, weighed, share) in &self.inner.parts {
-            let f = |place: &Place| part.plane.node(place);
-            let mut frame = weighed.frame.clone();
-            if let Some(d) = part.plane.coordinates().iter().position(|c| *c == Coordinate::Sd) {
-                frame.width[d] *= along_sd;
-            }
-            let nodes = grid::sweep(&f, &frame, weighed.factor * FRAC_1_SQRT_2, 0.29, FLOOR)?;
+            let f = part.plane.nodes();
+            let frame = &weighed.frame;
+            let last = frame.dims.saturating_sub(1);
+            let step = finer * FIRST;
+            let parts = |node: &Node| {
+                let Sd::Unknown(axis) = &part.plane.sd else { return 1 };
+                let mut most = 0.0f64;
+                // Far out on the line σ runs faster, and there the tails of the law are made.
+                for widths in [-4.0, -2.0, 0.0, 2.0, 4.0, 6.0] {
+                    let mut place = node.place;
+                    place[last] += widths * frame.width[last];
+                    let there = f(&place);
+                    if there.ln_weight.is_nan() || there.ln_weight < frame.ln_top - LIGHT {
+                        continue;
+                    }
+                    let moved = there.sigma * axis.slope(place[last]) * step * frame.width[last];
+                    let (up, down) = (units.sd_out(there.sigma + moved), units.sd_out(there.sigma));
+                    let run = (shift(up).0 - shift(down).0).abs();
+                    let sd = (factor * factor * units.square_out(there.var) + shift(down).1).sqrt();
+                    most = most.max(run / (NARROW * finer * sd));
+                }
+                if most > 1.0 { most.ceil() as usize } else { 1 }
+            };
+            let nodes = grid::sweep_finely(&f, frame, step, offset, FINER_FLOOR, &parts)?;
             let (sum, top) = whole(&nodes);
             for node in &nodes {
                 let weight = share * fm::exp(node.ln_weight - top) / sum;
+                if weight < solve::NEGLIGIBLE {
+                    continue;
+                }
                 made.pieces.push(solve::piece(node, weight, units));
                 if bias_sd > 0.0 {
                     made.levels.push(solve::true_level(node, part, bias_sd, units));
@@ -162,11 +203,13 @@ impl Posterior {
             (least.min(node.sigma), most.max(node.sigma))
         });
         if !(kink > least && kink < most) {
-            let f = |place: &Place| plane.node(place);
-            let nodes = grid::sweep(&f, &weighed.frame, weighed.factor * factor, 0.19, FLOOR)?;
+            let f = plane.nodes();
+            let nodes =
+                grid::sweep(&f, &weighed.frame, weighed.factor * factor, 0.19, floor(weighed.frame.dims))?;
             return Ok(summed(&nodes, 0.0, |node| g(&solve::piece(node, 1.0, units))).ratio());
         }
         let cut = axis.coordinate(kink);
+        let node_at = plane.nodes();
         let mut halves = Vec::with_capacity(2);
         for sign in [-1.0, 1.0] {
             // u = cut ± ln(1 + e^w): near the cut as e^w, far from it as w.
@@ -175,7 +218,7 @@ impl Posterior {
                 let apart = if w > 30.0 { w } else { fm::ln_1p(fm::exp(w)) };
                 let mut moved = *place;
                 moved[d] = cut + sign * apart;
-                let mut node = plane.node(&moved);
+                let mut node = node_at(&moved);
                 node.ln_weight += if w > 30.0 { 0.0 } else { w - apart };
                 node
             };
@@ -184,9 +227,9 @@ impl Posterior {
             let apart = sign * (weighed.frame.centre[d] - cut);
             start[d] = if apart > 1e-3 { fm::ln(fm::exp_m1(apart.min(30.0))) } else { -1.0 };
             let frame = grid::frame(&f, start, weighed.frame.dims)?;
-            let nodes = grid::sweep(&f, &frame, 0.7 * weighed.factor * factor, 0.37, FLOOR)?;
-            let volume: f64 =
-                (0..frame.dims).map(|i| fm::ln(0.7 * weighed.factor * factor * frame.width[i])).sum();
+            let nodes =
+                grid::sweep(&f, &frame, 0.7 * weighed.factor * factor, 0.37, floor(weighed.frame.dims))?;
+            let volume = frame.ln_volume(0.7 * weighed.factor * factor);
             halves.push(summed(&nodes, volume, |node| g(&solve::piece(node, 1.0, units))));
         }
         let top = halves.iter().map(|half| half.ln_scale).fold(f64::NEG_INFINITY, f64::max);

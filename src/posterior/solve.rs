@@ -7,7 +7,6 @@ use super::law::Law;
 use super::marginal::{self, Weighted};
 use super::moments::{Bounds, moment};
 use super::plane::{BetweenSd, Coordinate, Node, Plane, Sd};
-use super::refined::Finer;
 use super::shapes::Spread;
 use super::units::Units;
 use super::weighing::{Weighed, weigh};
@@ -16,7 +15,7 @@ use crate::data::evidence::Evidence;
 use crate::math::fm;
 use crate::prior::{LevelPrior, Model};
 use crate::quantity::Absent;
-use std::sync::{Arc, Mutex};
+use std::sync::Arc;
 
 /// Pieces lighter than this share of the whole are left out.
 pub(super) const NEGLIGIBLE: f64 = 1e-31;
@@ -38,8 +37,6 @@ pub(super) struct Inner {
     pub prior_shares: Vec<f64>,
     /// With a bias: the true levels of every piece.
     pub true_levels: Vec<TrueLevel>,
-    /// Finer grids, made when a law first needs them.
-    pub finer: Mutex<Vec<Arc<Finer>>>,
 }
 
 /// (mean less the origin, variance) of the true levels and of the true long-run mean.
@@ -100,7 +97,6 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
         bias_sd: units.sd_out(built.bias_sd),
         prior_shares,
         true_levels,
-        finer: Mutex::default(),
         parts: built
             .parts
             .into_iter()

@@ -3,16 +3,26 @@
 
 use super::grid::{self, Frame, MOST, Place};
 use super::legendre;
-use super::plane::{Node, Plane};
+use super::plane::{Coordinate, Node, Plane};
 use crate::math::{fm, normal};
 use crate::quantity::Absent;
 
-/// Two grids must agree to this.
+/// Two grids must agree to this in the middle, and in the tails.
 const AGREED: f64 = 2e-11;
+const AGREED_IN_TAILS: f64 = 4e-10;
+/// The first grid's steps, in widths; each further one has shorter ones.
+const FIRST: f64 = 0.46;
+/// How fast the steps of σ grow.
+const STRETCH_OF_SD: f64 = 0.08;
+const RATIO: f64 = 0.85;
+const ROUNDS: usize = 14;
 /// And the second rule to this.
 const CONFIRMED: f64 = 1e-9;
-/// ln of 1e-31: lighter nodes are left out.
-pub(super) const FLOOR: f64 = 72.0;
+/// How much lighter (ln) than the heaviest a node is whose share of the whole is 1e-30: these are left out. The
+/// whole is that of some 5 heaviest nodes for each coordinate.
+pub(super) fn floor(dims: usize) -> f64 {
+    69.1 - 1.6 * dims as f64
+}
 
 /// The nodes of a plane, with ln of the whole weight.
 #[derive(Debug, Clone)]
@@ -24,11 +34,11 @@ pub(super) struct Weighed {
     pub factor: f64,
 }
 
-/// Points where two rules are compared: seven sds out in the lower tail of the level and in the upper tail
-/// of the widest prediction (the next level's reading), and near the middle of the level.
+/// Points where two rules are compared: near the middle of the level; seven sds out in the lower tail of the level
+/// and in the upper tail of the widest prediction (the next level's reading); and in both where 1e-12 is left.
 struct Gauge {
-    low: f64,
-    high: f64,
+    low: [f64; 2],
+    high: [f64; 2],
     middle: f64,
 }
 
@@ -36,13 +46,18 @@ struct Gauge {
 #[derive(Debug, Clone, Copy, PartialEq)]
 struct Measured {
     ln_integral: f64,
-    low: f64,
-    high: f64,
+    low: [f64; 2],
+    high: [f64; 2],
     middle: f64,
 }
 
+/// The chance at which the far tails are compared.
+const FAR: f64 = 1e-12;
+
 /// Lighter nodes, relative to the heaviest, are not seen in the middle.
 const UNSEEN: f64 = 1e-16;
+/// And ln of how much lighter they are where the tails, of 1e-12 or so, do not see them either.
+const UNSEEN_IN_TAILS: f64 = 60.0;
 
 impl Gauge {
     fn new(nodes: &[Node]) -> Gauge {
@@ -53,42 +68,87 @@ impl Gauge {
             }
         }
         let (mean, var) = widest(&top);
-        let sd = (top.var + softness(&top)).sqrt();
-        Gauge { low: top.mean - 7.0 * sd, high: mean + 7.0 * var.sqrt(), middle: top.mean - 0.7 * sd }
+        let (sd, widest_sd) = ((top.var + softness(&top)).sqrt(), var.sqrt());
+        let mut gauge = Gauge {
+            low: [top.mean - 7.0 * sd; 2],
+            high: [mean + 7.0 * widest_sd; 2],
+            middle: top.mean - 0.7 * sd,
+        };
+        // Outward until no more is left than wanted, and not so far that there is nothing.
+        let some: Vec<Node> = nodes.iter().step_by(1 + nodes.len() / 2000).copied().collect();
+        let (mut down, mut up) = (7.0, 7.0);
+        for _ in 0..24 {
+            let now = gauge.measure(&some, 0.0);
+            let (low, high) = (now.low[1] > 2.0 * FAR, now.high[1] > 2.0 * FAR);
+            if !low && !high {
+                break;
+            }
+            if low {
+                down *= 1.0 + 0.03 * fm::ln(now.low[1] / FAR).clamp(1.0, 20.0);
+                gauge.low[1] = top.mean - down * sd;
+            }
+            if high {
+                up *= 1.0 + 0.03 * fm::ln(now.high[1] / FAR).clamp(1.0, 20.0);
+                gauge.high[1] = mean + up * widest_sd;
+            }
+        }
+        gauge
+    }
+
+    /// ln of the integral, and the chance in the middle.
+    fn of_middle(&self, nodes: &[Node], ln_volume: f64) -> (f64, f64) {
+        let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
+        let (mut whole, mut middle) = (0.0, 0.0);
+        for node in nodes.iter().filter(|n| n.ln_weight > top - 37.0) {
+            let w = fm::exp(node.ln_weight - top);
+            whole += w;
+            middle += w * normal::cdf((self.middle - node.mean) / (node.var + softness(node)).sqrt());
+        }
+        (top + fm::ln(whole) + ln_volume, middle / whole)
     }
 
     fn measure(&self, nodes: &[Node], ln_volume: f64) -> Measured {
         let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
-        let (mut whole, mut low, mut high, mut middle) = (0.0, 0.0, 0.0, 0.0);
+        let (mut whole, mut low, mut high, mut middle) = (0.0, [0.0; 2], [0.0; 2], 0.0);
         for node in nodes {
+            if node.ln_weight < top - UNSEEN_IN_TAILS {
+                continue;
+            }
             let w = fm::exp(node.ln_weight - top);
             whole += w;
             let sd = (node.var + softness(node)).sqrt();
-            low += w * normal::cdf((self.low - node.mean) / sd);
             let (mean, var) = widest(node);
-            high += w * normal::sf((self.high - mean) / var.sqrt());
+            let widest_sd = var.sqrt();
+            for k in 0..2 {
+                low[k] += w * normal::cdf((self.low[k] - node.mean) / sd);
+                high[k] += w * normal::sf((self.high[k] - mean) / widest_sd);
+            }
             if w > UNSEEN {
                 middle += w * normal::cdf((self.middle - node.mean) / sd);
             }
         }
         Measured {
             ln_integral: top + fm::ln(whole) + ln_volume,
-            low: low / whole,
-            high: high / whole,
+            low: low.map(|x| x / whole),
+            high: high.map(|x| x / whole),
             middle: middle / whole,
         }
     }
 }
 
 impl Measured {
-    fn difference(&self, other: &Measured) -> f64 {
-        let mut worst = (self.ln_integral - other.ln_integral).abs();
-        for (x, y) in [(self.low, other.low), (self.high, other.high), (self.middle, other.middle)] {
-            if x > 1e-25 || y > 1e-25 {
-                worst = worst.max((x - y).abs() / x.max(y));
-            }
+    /// The largest difference in the middle, and in the tails.
+    fn difference(&self, other: &Measured) -> (f64, f64) {
+        // Down to 1e-12 tails are compared relatively, below absolutely.
+        let apart = |x: f64, y: f64| (x - y).abs() / x.max(y).max(1e-12);
+        let middle = (self.ln_integral - other.ln_integral)
+            .abs()
+            .max((self.middle - other.middle).abs() / self.middle);
+        let mut tails = 0.0f64;
+        for k in 0..2 {
+            tails = tails.max(apart(self.low[k], other.low[k])).max(apart(self.high[k], other.high[k]));
         }
-        if worst.is_nan() { f64::INFINITY } else { worst }
+        if middle.is_nan() || tails.is_nan() { (f64::INFINITY, f64::INFINITY) } else { (middle, tails) }
     }
 }
 
@@ -113,13 +173,19 @@ fn softness(node: &Node) -> f64 {
 /// Weighs a plane.
 pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
     let dims = plane.coordinates().len();
-    let f = |place: &Place| plane.node(place);
+    let f = plane.nodes();
     if dims == 0 {
-        let node = plane.node(&[0.0; MOST]);
+        let node = plane.node_alone(&[0.0; MOST]);
         if node.ln_weight.is_nan() {
             return Err(Absent::failed("the posterior weight is not a number"));
         }
-        let frame = Frame { centre: [0.0; MOST], width: [1.0; MOST], dims, ln_top: node.ln_weight };
+        let frame = Frame {
+            centre: [0.0; MOST],
+            width: [1.0; MOST],
+            stretch: [0.0; MOST],
+            dims,
+            ln_top: node.ln_weight,
+        };
         return Ok(Weighed {
             nodes: vec![node],
             ln_integral: node.ln_weight,
@@ -128,37 +194,46 @@ pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
             factor: 1.0,
         });
     }
-    let frame = grid::frame(&f, plane.start(), dims)?;
-    let mut factor = 0.75;
-    let mut coarse = grid::sweep(&f, &frame, factor, 0.0, FLOOR)?;
+    let mut frame = grid::frame(&f, plane.start(), dims)?;
+    for (d, coordinate) in plane.coordinates().into_iter().enumerate() {
+        match coordinate {
+            // The tails of readings follow σ far out, where steps must not have grown too much.
+            Coordinate::Sd | Coordinate::HistorySd => {
+                frame.stretch[d] = STRETCH_OF_SD;
+                if plane.sd_is_well_known(coordinate) {
+                    frame.width[d] *= 1.4;
+                }
+            }
+            Coordinate::LongRun | Coordinate::Level => frame.stretch[d] = 0.0,
+            Coordinate::Between => {}
+        }
+    }
+    let mut factor = FIRST;
+    let coarse = grid::sweep(&f, &frame, factor, 0.37, floor(dims))?;
     if coarse.is_empty() {
         return Err(Absent::failed("the posterior weight is 0 everywhere"));
     }
     let gauge = Gauge::new(&coarse);
-    let volume = |factor: f64| (0..dims).map(|d| fm::ln(factor * frame.width[d])).sum::<f64>();
-    let mut measured = gauge.measure(&coarse, volume(factor));
-    for _ in 0..12 {
-        let finer = factor * std::f64::consts::FRAC_1_SQRT_2;
-        let fine = grid::sweep(&f, &frame, finer, 0.37, FLOOR)?;
-        let again = gauge.measure(&fine, volume(finer));
-        let error = measured.difference(&again);
-        if error <= AGREED {
-            // Where they agree that well the coarser grid is as good, and cheaper to ask.
-            let keep_coarse = error <= 0.1 * AGREED;
-            let (nodes, factor, result) =
-                if keep_coarse { (coarse, factor, measured) } else { (fine, finer, again) };
-            let confirmed = confirm(plane, &frame, &nodes, &gauge, &result)?;
+    let mut measured = gauge.measure(&coarse, frame.ln_volume(factor));
+    drop(coarse);
+    let mut ratio = 0.93;
+    for _ in 0..ROUNDS {
+        factor *= ratio;
+        ratio = RATIO;
+        let nodes = grid::sweep(&f, &frame, factor, 0.0, floor(dims))?;
+        let again = gauge.measure(&nodes, frame.ln_volume(factor));
+        let (error, in_tails) = measured.difference(&again);
+        measured = again;
+        if error <= AGREED && in_tails <= AGREED_IN_TAILS {
+            let confirmed = confirm(plane, &frame, &nodes, &gauge, &measured)?;
             return Ok(Weighed {
                 nodes,
-                ln_integral: result.ln_integral,
+                ln_integral: measured.ln_integral,
                 error: error.max(confirmed),
                 frame,
                 factor,
             });
         }
-        coarse = fine;
-        measured = again;
-        factor = finer;
     }
     Err(Absent::failed("the quadrature over the within and between sd did not reach its promised accuracy"))
 }
@@ -175,11 +250,34 @@ fn confirm(
     if frame.dims > 2 {
         return Ok(0.0);
     }
-    // Ends of the box: nodes above 1e-15 of the highest.
+    let error = difference_by_panels(plane, frame, nodes, gauge, measured, 5.0)?;
+    if error <= CONFIRMED {
+        return Ok(error);
+    }
+    // Narrower panels, before the rules are said to disagree.
+    let error = difference_by_panels(plane, frame, nodes, gauge, measured, 2.5)?;
+    if error.is_nan() || error > CONFIRMED {
+        return Err(Absent::failed(format!(
+            "two quadrature rules disagree by {error:e} over the within and between sd"
+        )));
+    }
+    Ok(error)
+}
+
+/// The largest difference, with panels `coarse` widths wide.
+fn difference_by_panels(
+    plane: &Plane,
+    frame: &Frame,
+    nodes: &[Node],
+    gauge: &Gauge,
+    measured: &Measured,
+    coarse: f64,
+) -> Result<f64, Absent> {
+    // Ends of the box: nodes above 2e-12 of the highest; beyond them, a width more.
     let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
-    let heavy = || nodes.iter().filter(|n| n.ln_weight > top - 35.0);
+    let heavy = || nodes.iter().filter(|n| n.ln_weight - n.ln_cell > top - 27.0);
     let panels = |d: usize, lo: f64, hi: f64| {
-        let width = (4.0 * frame.width[d]).min(2.0);
+        let width = (coarse * frame.width[d]).min(0.5 * coarse);
         let count = ((hi - lo) / width).ceil().max(1.0);
         (count as usize, (hi - lo) / count)
     };
@@ -189,6 +287,7 @@ fn confirm(
             .filter(close)
             .fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), n| (lo.min(n.place[d]), hi.max(n.place[d])))
     };
+    let node_at = plane.nodes();
     let mut found: Vec<Node> = Vec::new();
     let mut along_last = |place: &mut Place, ln_outer: f64, (lo, hi): (f64, f64)| {
         let d = frame.dims - 1;
@@ -198,7 +297,7 @@ fn confirm(
             let middle = lo + (panel as f64 + 0.5) * size;
             for (x, w) in legendre::rule() {
                 place[d] = middle + 0.5 * size * x;
-                let mut node = plane.node(place);
+                let mut node = node_at(place);
                 node.ln_weight += ln_outer + fm::ln(0.5 * size * w);
                 if node.ln_weight > f64::NEG_INFINITY {
                     found.push(node);
@@ -228,12 +327,6 @@ fn confirm(
     if found.is_empty() {
         return Err(Absent::failed("the second quadrature rule found no mass"));
     }
-    let again = gauge.measure(&found, 0.0);
-    let error = (again.ln_integral - measured.ln_integral).abs().max((again.middle - measured.middle).abs());
-    if error.is_nan() || error > CONFIRMED {
-        return Err(Absent::failed(format!(
-            "two quadrature rules disagree by {error:e} over the within and between sd"
-        )));
-    }
-    Ok(error)
+    let again = gauge.of_middle(&found, 0.0);
+    Ok((again.0 - measured.ln_integral).abs().max((again.1 - measured.middle).abs()))
 }
