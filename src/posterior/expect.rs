@@ -122,6 +122,11 @@ impl Posterior {
         if let Some(reason) = &self.inner.no_sd {
             return Err(reason.clone());
         }
+        if when != When::This && self.inner.marked_level.is_some() {
+            return Err(Absent::because(
+                "with marked readings in this period and in earlier ones, counts and shares of another period are not served",
+            ));
+        }
         let groups = self.by_sigma(when);
         let mut values = vec![0.0; how_many];
         let mut fixed = vec![0.0; how_many];

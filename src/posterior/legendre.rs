@@ -57,16 +57,58 @@ struct Panel {
     above: f64,
 }
 
+/// A smooth function between two ends, as Legendre series on panels.
+#[derive(Debug)]
+pub(super) struct Curve {
+    panels: Vec<Panel>,
+}
+
+impl Curve {
+    /// `None` where it is not resolved to `tolerance` (absolute) by a few hundred panels, or not finite.
+    pub fn new(f: &dyn Fn(f64) -> f64, lo: f64, hi: f64, tolerance: f64) -> Option<Curve> {
+        const FIRST: usize = 4;
+        let edge = |i: usize| lo + (hi - lo) * i as f64 / FIRST as f64;
+        let mut waiting: Vec<(f64, f64)> = (0..FIRST).rev().map(|i| (edge(i), edge(i + 1))).collect();
+        let mut panels: Vec<Panel> = Vec::new();
+        let mut made = 0;
+        while let Some((lo, hi)) = waiting.pop() {
+            let panel = Panel::new(f, lo, hi).ok()?;
+            made += 1;
+            if panel.series[POINTS - 1].abs() + panel.series[POINTS - 2].abs() <= tolerance {
+                panels.push(panel);
+            } else if made < 400 {
+                let middle = 0.5 * (lo + hi);
+                waiting.push((middle, hi));
+                waiting.push((lo, middle));
+            } else {
+                return None;
+            }
+        }
+        Some(Curve { panels })
+    }
+
+    /// The value, `None` beyond the ends.
+    pub fn at(&self, x: f64) -> Option<f64> {
+        let i = self.panels.partition_point(|p| p.hi < x);
+        self.panels.get(i).filter(|p| p.lo <= x).map(|p| p.density(x))
+    }
+}
+
 /// Relative size of the last terms of a panel's series, against the largest of the whole density.
-const RESOLVED: f64 = 1e-14;
+const RESOLVED: f64 = 1e-22;
 const PANEL_CAP: usize = 2000;
 
 impl Panels {
     /// `density` on `edges` (increasing), each panel halved until its series has died out.
     pub fn new(density: &dyn Fn(f64) -> f64, edges: &[f64]) -> Result<Panels, Absent> {
         // The tails keep their own relative accuracy as far as rounding allows.
+        Panels::to(density, edges, 1e-12)
+    }
+
+    /// The same where the density is smooth to `relative` only.
+    pub fn to(density: &dyn Fn(f64) -> f64, edges: &[f64], relative: f64) -> Result<Panels, Absent> {
         Panels::until(density, edges, &|last, size, highest| {
-            last <= (1e-12 * size).max(RESOLVED * 1e-3 * highest)
+            last <= (relative * size).max(RESOLVED * highest)
         })
     }
 
@@ -74,7 +116,7 @@ impl Panels {
     /// resolved to 1e−8 of themselves however low they are.
     pub fn with_tails(density: &dyn Fn(f64) -> f64, edges: &[f64]) -> Result<Panels, Absent> {
         Panels::until(density, edges, &|last, size, highest| {
-            last <= (1e-12 * size).max((RESOLVED * 1e-3 * highest).min(1e-8 * size))
+            last <= (1e-12 * size).max((1e-17 * highest).min(1e-8 * size))
         })
     }
 
@@ -88,7 +130,9 @@ impl Panels {
         let mut panels = Vec::new();
         let mut waiting: Vec<(f64, f64, u32)> =
             edges.windows(2).rev().map(|pair| (pair[0], pair[1], 0)).collect();
-        let mut highest: f64 = 0.0;
+        // Panels are made from the left: without a first look the tail would be held to its own size.
+        let look = edges.iter().map(|t| density(*t)).filter(|d| d.is_finite());
+        let mut highest: f64 = 0.5 * look.fold(0.0, f64::max);
         let mut made = 0;
         while let Some((lo, hi, depth)) = waiting.pop() {
             let panel = Panel::new(density, lo, hi)?;
@@ -153,6 +197,17 @@ impl Panels {
             None if self.panels.first().is_some_and(|p| t < p.lo) => 1.0,
             None => 0.0,
         }
+    }
+
+    /// Gauss points t with w: Σ w f(t) is ∫ f over the panels, in units of this density's whole.
+    pub fn places(&self) -> Vec<(f64, f64)> {
+        let mut places = Vec::with_capacity(POINTS * self.panels.len());
+        for panel in &self.panels {
+            let half = 0.5 * (panel.hi - panel.lo);
+            let middle = 0.5 * (panel.hi + panel.lo);
+            places.extend(rule().iter().map(|(x, w)| (middle + half * x, w * half / self.total)));
+        }
+        places
     }
 
     /// Σ over Gauss points: ∫ g · density / ∫ density.

@@ -7,7 +7,7 @@ use super::When;
 use super::build::{BiasOf, Part};
 use super::grid::{self, MOST, Place};
 use super::law::Law;
-use super::legendre::Panels;
+use super::legendre::{Curve, Panels};
 use super::moments::moment;
 use super::plane::{Coordinate, Level, Node};
 use super::shapes::OnPanels;
@@ -15,6 +15,7 @@ use super::solve::Inner;
 use super::weighing::floor;
 use crate::math::{fm, normal};
 use crate::quantity::Absent;
+use std::cell::OnceCell;
 use std::collections::BTreeMap;
 use std::rc::Rc;
 use std::sync::Arc;
@@ -30,13 +31,16 @@ pub(super) struct Given {
 /// What X is at a node, for the line through it.
 pub(super) type AtNode<'a> = dyn Fn(&Part, &Node) -> Given + 'a;
 
+/// How smooth (relative) densities are that come from curves between the nodes.
+pub(super) const OF_CURVES: f64 = 1e-10;
+
 /// A plane's nodes by their places.
 type NodeAt<'a> = dyn Fn(&Place) -> Node + 'a;
 
-struct Line<'a> {
+pub(super) struct Line<'a> {
     nodes_at: Rc<NodeAt<'a>>,
     /// Any node of it.
-    node: Node,
+    pub(super) node: Node,
     /// Which coordinate runs along it, and how y stands to it.
     along: usize,
     line: (f64, f64),
@@ -46,19 +50,44 @@ struct Line<'a> {
     ln_scale: f64,
     step: f64,
     given: Given,
+    /// ln density of the coordinate between the nodes, made when first asked for.
+    curve: OnceCell<Option<Curve>>,
+    /// Whether this period's marked readings are left out of the density.
+    unmarked: bool,
+    keeps_curve: bool,
 }
 
 impl Line<'_> {
     /// Density of y at a place between the nodes.
     fn density(&self, y: f64) -> f64 {
-        let mut place = self.node.place;
-        place[self.along] = (y - self.line.0) / self.line.1;
-        let ln = (self.nodes_at)(&place).ln_weight + self.node.ln_cell - fm::ln(self.line.1);
-        fm::exp(ln + self.ln_scale)
+        let u = (y - self.line.0) / self.line.1;
+        let ln_at = |u: f64| {
+            let mut place = self.node.place;
+            place[self.along] = u;
+            let node = (self.nodes_at)(&place);
+            if self.unmarked { node.ln_weight - node.ln_marks } else { node.ln_weight }
+        };
+        // Where marks of many periods meet in every value, it pays to keep them as a curve.
+        let curve = self.curve.get_or_init(|| {
+            let (lo, hi) = self.nodes.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), n| {
+                let u = (n.0 - self.line.0) / self.line.1;
+                (lo.min(u), hi.max(u))
+            });
+            let step = self.step / self.line.1;
+            if self.keeps_curve { Curve::new(&ln_at, lo - 4.0 * step, hi + 4.0 * step, 1e-12) } else { None }
+        });
+        let ln = match curve {
+            Some(curve) => match curve.at(u) {
+                Some(ln) => ln,
+                None => return 0.0,
+            },
+            None => ln_at(u),
+        };
+        fm::exp(ln + self.node.ln_cell - fm::ln(self.line.1) + self.ln_scale)
     }
 
     /// Density of X at t.
-    fn of_x(&self, t: f64) -> f64 {
+    pub(super) fn of_x(&self, t: f64) -> f64 {
         let Given { constant, slope, var } = self.given;
         let sd = var.sqrt();
         if sd >= 1.3 * slope.abs() * self.step || slope == 0.0 {
@@ -124,7 +153,8 @@ pub(super) fn law(
         }
     }
     let density = |t: f64| lines.iter().map(|line| line.of_x(t)).sum::<f64>();
-    let panels = spread_out(&density, &lines, mean)?;
+    let smooth = if lines.iter().any(|line| line.keeps_curve) { OF_CURVES } else { 1e-12 };
+    let panels = spread_out(&density, width_of(&lines), mean, smooth)?;
     if (panels.total() - 1.0).abs() > 1e-9 {
         return Err(Absent::failed(format!(
             "the density of {what} integrates to {} by panels, not to 1",
@@ -152,12 +182,12 @@ fn all_lines<'a>(
         };
         let step = factor * weighed.factor * weighed.frame.width[along.0];
         if factor == 1.0 {
-            lines.extend(lines_of(part, &weighed.nodes, *share, along, step, at));
+            lines.extend(lines_of(part, &weighed.nodes, *share, along, step, at, None));
         } else {
             let f = part.plane.nodes();
             let nodes =
                 grid::sweep(&f, &weighed.frame, factor * weighed.factor, 0.29, floor(weighed.frame.dims))?;
-            lines.extend(lines_of(part, &nodes, *share, along, step, at));
+            lines.extend(lines_of(part, &nodes, *share, along, step, at, None));
         }
     }
     Ok(lines)
@@ -181,16 +211,12 @@ fn mean_and_sd(lines: &[Line<'_>]) -> (f64, f64) {
 }
 
 /// Panels from the heaviest place outward until nothing is left (1e−30 of the top).
-fn spread_out(density: &dyn Fn(f64) -> f64, lines: &[Line<'_>], mean: f64) -> Result<Panels, Absent> {
-    let mut width: f64 = 0.0;
-    let mut whole = 0.0;
-    for line in lines {
-        let share: f64 = line.nodes.iter().map(|n| n.1).sum();
-        let own = line.step * line.given.slope.abs() + line.given.var.sqrt();
-        width += share * own;
-        whole += share;
-    }
-    width /= whole;
+pub(super) fn spread_out(
+    density: &dyn Fn(f64) -> f64,
+    width: f64,
+    mean: f64,
+    relative: f64,
+) -> Result<Panels, Absent> {
     let top = density(mean).max(f64::MIN_POSITIVE);
     let edges = |direction: f64| {
         let (mut edges, mut step, mut t, mut low) = (Vec::new(), width, mean, 0);
@@ -211,17 +237,33 @@ fn spread_out(density: &dyn Fn(f64) -> f64, lines: &[Line<'_>], mean: f64) -> Re
     let mut all: Vec<f64> = edges(-1.0).into_iter().rev().collect();
     all.push(mean);
     all.extend(edges(1.0));
-    Panels::new(density, &all)
+    Panels::to(density, &all, relative)
 }
 
-fn lines_of<'a>(
+/// How far apart the first panels' ends may be.
+fn width_of(lines: &[Line<'_>]) -> f64 {
+    let mut width: f64 = 0.0;
+    let mut whole = 0.0;
+    for line in lines {
+        let share: f64 = line.nodes.iter().map(|n| n.1).sum();
+        let own = line.step * line.given.slope.abs() + line.given.var.sqrt();
+        width += share * own;
+        whole += share;
+    }
+    width / whole
+}
+
+pub(super) fn lines_of<'a>(
     part: &'a Part,
     nodes: &[Node],
     share: f64,
     (along, coordinate): (usize, Coordinate),
     step: f64,
     at: &AtNode<'_>,
+    unmarked: Option<f64>,
 ) -> Vec<Line<'a>> {
+    let reference = unmarked.unwrap_or(0.0);
+    let unmarked = unmarked.is_some();
     let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
     let whole: f64 = nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
     let mut by_line: BTreeMap<[u64; MOST], Vec<&Node>> = BTreeMap::new();
@@ -231,17 +273,18 @@ fn lines_of<'a>(
         by_line.entry(key).or_default().push(node);
     }
     let nodes_at: Rc<NodeAt<'a>> = Rc::new(part.plane.nodes());
+    let ln_of = |n: &Node| if unmarked { n.ln_weight - n.ln_marks + reference } else { n.ln_weight };
     let mut lines = Vec::new();
     for members in by_line.into_values() {
         let line = |n: &Node| if coordinate == Coordinate::Level { n.level_line } else { n.long_line };
         let nodes: Vec<(f64, f64)> = members
             .iter()
-            .map(|n| (line(n).0 + line(n).1 * n.place[along], share * fm::exp(n.ln_weight - top) / whole))
+            .map(|n| (line(n).0 + line(n).1 * n.place[along], share * fm::exp(ln_of(n) - top) / whole))
             .filter(|n| n.1 > 1e-32)
             .collect();
         let Some(node) = members.first().filter(|_| !nodes.is_empty()) else { continue };
         // A node stands for a step of its line: its share is the density times that step.
-        let ln_scale = fm::ln(share / (whole * step)) - top;
+        let ln_scale = fm::ln(share / (whole * step)) - top + reference;
         lines.push(Line {
             nodes_at: Rc::clone(&nodes_at),
             node: **node,
@@ -251,6 +294,9 @@ fn lines_of<'a>(
             ln_scale,
             step: step * line(node).1,
             given: at(part, node),
+            curve: OnceCell::new(),
+            unmarked,
+            keeps_curve: matches!(part.plane.level, Level::AboutMeanMarked(_)),
         });
     }
     lines
@@ -315,13 +361,13 @@ impl Inner {
 }
 
 /// A level (or the long-run mean) given y: constant + slope · y and a variance, inner units.
-fn inner_given(part: &Part, node: &Node, when: When) -> (f64, f64, f64) {
+pub(super) fn inner_given(part: &Part, node: &Node, when: When) -> (f64, f64, f64) {
     let plane = &part.plane;
     let tau2 = node.tau * node.tau;
     let stretch = plane.moved.map_or(1.0, |m| m.stretch);
     let by_long_run = matches!(plane.level, Level::AboutMeanMarked(_));
     match when {
-        When::This if !plane.marks.is_empty() => (0.0, 1.0, 0.0),
+        When::This if plane.has_level_coordinate() => (0.0, 1.0, 0.0),
         When::This => {
             let pull = plane
                 .readings

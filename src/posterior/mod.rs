@@ -14,6 +14,7 @@ pub mod law;
 mod legendre;
 mod marginal;
 mod marked;
+mod marked_level;
 mod marked_periods;
 mod marks;
 mod memo;
@@ -150,6 +151,21 @@ impl Posterior {
         shift_and_variance: &dyn Fn(f64) -> (f64, f64),
     ) -> Result<Law, Absent> {
         self.models(when)?;
+        let plain =
+            factor == 1.0 && [0.3, 1.0, 7.0].into_iter().all(|sigma| shift_and_variance(sigma) == (0.0, 0.0));
+        if plain {
+            let kept = &self.inner.levels[when as usize];
+            return kept.get_or_init(|| self.affine_anew(when, factor, shift_and_variance)).clone();
+        }
+        self.affine_anew(when, factor, shift_and_variance)
+    }
+
+    fn affine_anew(
+        &self,
+        when: When,
+        factor: f64,
+        shift_and_variance: &dyn Fn(f64) -> (f64, f64),
+    ) -> Result<Law, Absent> {
         let uses_sd = {
             let size = self.pieces.iter().map(|p| p.reading_sd).find(|s| *s > 0.0).unwrap_or(1.0);
             shift_and_variance(size) != shift_and_variance(2.0 * size)
@@ -170,6 +186,12 @@ impl Posterior {
         }
         if self.inner.is_marked() {
             let what = if uses_sd { "a reading" } else { self.name(when) };
+            if let (When::This, Some(level)) = (when, &self.inner.marked_level) {
+                return self
+                    .inner
+                    .of_marked_level(level, factor, shift_and_variance, bound, what)
+                    .map(|law| law.moved(self.origin()));
+            }
             return marked::law(&self.inner, when == When::This, bound, what, &|part, node| {
                 let (shift, added) = shift_and_variance(self.inner.units.sd_out(node.sigma));
                 self.inner.given(part, node, when, (factor, shift, added))
@@ -261,6 +283,14 @@ impl Posterior {
     /// The true level with marked readings and a bias.
     fn level_marked(&self, when: When, shift: &dyn Fn(f64) -> f64) -> Result<Law, Absent> {
         let bound = self.bound(when);
+        if let (When::This, Some(level)) = (when, &self.inner.marked_level) {
+            // A prior made of periods carries the bias: it is added.
+            let bias2 = self.inner.bias_sd * self.inner.bias_sd;
+            return self
+                .inner
+                .of_marked_level(level, 1.0, &|sd| (shift(sd), bias2), bound, self.name(when))
+                .map(|law| law.moved(self.origin()));
+        }
         marked::law(&self.inner, when == When::This, bound, self.name(when), &|part, node| {
             self.inner.true_given(part, node, when, shift(self.inner.units.sd_out(node.sigma)))
         })

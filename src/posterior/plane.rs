@@ -4,7 +4,7 @@
 use super::about_mean::AboutMean;
 use super::axis::{SdAxis, TauAxis};
 use super::grid::{MOST, Place, Weighted};
-use super::marked_periods::MarkedPeriods;
+use super::marked_periods::{MarkedPeriods, ln_marks};
 use super::marks::{self, Mark};
 use super::memo::Memo;
 use super::told::Told;
@@ -112,6 +112,8 @@ pub(super) struct Node {
     /// The coordinate of the level is (θ − centre)/scale, where it is one; likewise that of μ.
     pub level_line: (f64, f64),
     pub long_line: (f64, f64),
+    /// What of `ln_weight` is this period's marked readings', the level integrated out.
+    pub ln_marks: f64,
     /// μ itself where it is a coordinate, before any move of the prior.
     mu: f64,
     /// Given θ the long-run mean is `long_mean` = constant + link · θ.
@@ -162,7 +164,7 @@ impl Plane {
         if matches!(self.level, Level::AboutMeanMarked(_)) {
             all.push(Coordinate::LongRun);
         }
-        if !self.marks.is_empty() {
+        if self.has_level_coordinate() {
             all.push(Coordinate::Level);
         }
         all
@@ -172,6 +174,11 @@ impl Plane {
     pub fn sd_is_well_known(&self, which: Coordinate) -> bool {
         let sd = if which == Coordinate::HistorySd { self.history_sd } else { Some(self.sd) };
         matches!(sd, Some(Sd::Unknown(axis)) if !axis.uniform && axis.sums.ss > 0.0 && axis.sums.df >= 30.0)
+    }
+
+    /// With marked readings the level is a coordinate, unless μ already is one: then it is integrated out.
+    pub fn has_level_coordinate(&self) -> bool {
+        !self.marks.is_empty() && !matches!(self.level, Level::AboutMeanMarked(_))
     }
 
     /// Whether a line of the plane is kept as a density rather than as normal pieces.
@@ -251,14 +258,18 @@ impl Plane {
             place: *place,
             level_line: (f64::NAN, f64::NAN),
             long_line: (f64::NAN, f64::NAN),
+            ln_marks: 0.0,
             mu: f64::NAN,
             link: 0.0,
         };
         if ln_weight > f64::NEG_INFINITY {
             self.prior(&mut node, &mut next, memo);
             self.update(&mut node);
-            if !self.marks.is_empty() {
+            if self.has_level_coordinate() {
                 self.mark(&mut node, next);
+            } else if !self.marks.is_empty() {
+                node.ln_marks = ln_marks(&self.marks, node.mean, node.var, sigma * sigma);
+                node.ln_weight += node.ln_marks;
             }
             if node.ln_weight.is_nan() && (sigma == 0.0 || history_sigma == 0.0) {
                 node.ln_weight = f64::NEG_INFINITY;
@@ -305,7 +316,11 @@ impl Plane {
                 *next += 1;
                 node.long_line = (centre, scale);
                 node.mu = mu;
-                node.ln_weight += fm::ln(scale) + periods.ln_likelihood(mu, history2, tau2);
+                let likelihood = || periods.ln_likelihood(mu, history2, tau2);
+                // Only beside a σ of this period alone do the same places come again.
+                let apart = self.history_sd.is_some();
+                let ln = if apart { memo.likelihood([mu, history2, tau2], likelihood) } else { likelihood() };
+                node.ln_weight += fm::ln(scale) + ln;
                 node.long_mean = mu;
                 node.long_var = 0.0;
                 node.mean = mu;

@@ -5,6 +5,7 @@ use super::build::{BiasOf, Built, Part, build};
 use super::closed::Conjugate;
 use super::law::Law;
 use super::marginal::{self, Weighted};
+use super::marked_level::{self, MarkedLevel};
 use super::moments::{Bounds, moment};
 use super::plane::{BetweenSd, Coordinate, Node, Plane, Sd};
 use super::shapes::Spread;
@@ -15,7 +16,7 @@ use crate::data::evidence::Evidence;
 use crate::math::fm;
 use crate::prior::{LevelPrior, Model};
 use crate::quantity::Absent;
-use std::sync::Arc;
+use std::sync::{Arc, OnceLock};
 
 /// Pieces lighter than this share of the whole are left out.
 pub(super) const NEGLIGIBLE: f64 = 1e-31;
@@ -29,6 +30,12 @@ pub(super) struct Inner {
     pub bias_sd: f64,
     /// The closed form, where there is one.
     pub conjugate: Option<Conjugate>,
+    /// The level where readings of this period and of earlier ones are marked.
+    pub marked_level: Option<MarkedLevel>,
+    /// The laws of the levels themselves, made when first asked for.
+    pub levels: [OnceLock<Result<Law, Absent>>; 3],
+    /// And those of the within and the between sd.
+    pub spreads: [OnceLock<Result<Law, Absent>>; 2],
     pub has_next: bool,
     pub has_long_run: bool,
     /// Why readings cannot be foretold.
@@ -59,8 +66,28 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
     let mut prior_shares = Vec::new();
     let mut true_levels = Vec::new();
     let mut error: f64 = 0.0;
+    let mut of_marked_level = None;
     for ((part, weighed), share) in built.parts.iter().zip(&weighed.0).zip(&weighed.1) {
         error = error.max(weighed.error);
+        if part.plane.is_marked() && !part.plane.marks.is_empty() && !part.plane.has_level_coordinate() {
+            if built.parts.len() > 1 {
+                return Err(Absent::because(
+                    "a mixture of priors with and without marked readings in their periods is not served",
+                ));
+            }
+            let level = marked_level::level(part, weighed)?;
+            pieces.extend(level.points().filter(|p| p.1 >= NEGLIGIBLE).map(|(theta, weight, sigma)| Piece {
+                weight,
+                level_mean: units.value_out(theta),
+                level_apart: units.sd_out(theta),
+                level_var: 0.0,
+                reading_sd: units.sd_out(sigma),
+                periods: None,
+            }));
+            prior_shares.resize(pieces.len(), 1.0);
+            of_marked_level = Some(level);
+            continue;
+        }
         let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
         let sum: f64 = weighed.nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
         for node in &weighed.nodes {
@@ -89,6 +116,9 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
     };
     let inner = Inner {
         conjugate,
+        marked_level: of_marked_level,
+        levels: Default::default(),
+        spreads: Default::default(),
         has_next: models_periods,
         has_long_run: models_periods && !built.parts.iter().any(|p| p.plane.is_walk()),
         no_sd,
@@ -218,6 +248,14 @@ impl Inner {
     }
 
     pub fn within_sd(&self) -> Result<Law, Absent> {
+        self.spreads[0].get_or_init(|| self.within_sd_anew()).clone()
+    }
+
+    pub fn between_sd(&self) -> Result<Law, Absent> {
+        self.spreads[1].get_or_init(|| self.between_sd_anew()).clone()
+    }
+
+    fn within_sd_anew(&self) -> Result<Law, Absent> {
         if let Some(reason) = &self.no_sd {
             return Err(reason.clone());
         }
@@ -231,7 +269,7 @@ impl Inner {
         self.spread(panels, self.bounds.sd, "the within sd")
     }
 
-    pub fn between_sd(&self) -> Result<Law, Absent> {
+    fn between_sd_anew(&self) -> Result<Law, Absent> {
         if self.parts.iter().all(|p| matches!(p.0.plane.between, BetweenSd::Fixed(_))) {
             return Err(Absent::because("the between sd is taken as known, or is no part of the prior"));
         }

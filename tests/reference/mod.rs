@@ -1,6 +1,7 @@
 //! Every promise of `reassay::math::promises` against the high-precision tables of this folder (see its README).
 
 mod posterior;
+mod posterior_marked;
 mod strd;
 
 use std::fs;
