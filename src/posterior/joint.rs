@@ -12,7 +12,7 @@ use super::shapes::{OnPanels, panels_of};
 use super::solve::solve;
 use super::told::{SdSums, Told, is_marked, told};
 use super::units::Units;
-use super::weighing::{FLOOR, Weighed, weigh};
+use super::weighing::{Weighed, floor, weigh};
 use super::{Basis, When, mixture};
 use crate::data::evidence::{Evidence, Seen, Single};
 use crate::math::fm;
@@ -204,8 +204,8 @@ fn peers_difference(a: &Member<'_>, b: &Member<'_>) -> Result<Law, Absent> {
         let nodes = if factor == 1.0 {
             &weighed.nodes
         } else {
-            let f = |place: &Place| plane.node(place);
-            fresh = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, FLOOR)?;
+            let f = plane.nodes();
+            fresh = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, floor(weighed.frame.dims))?;
             &fresh
         };
         let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);

@@ -265,9 +265,11 @@ impl Inner {
         if given.iter().all(|(_, added)| *added > 0.0) {
             let mut parts = Vec::new();
             for (at, (shift, added)) in by_sd.iter().zip(&given) {
-                parts.extend(at.points.iter().map(|(theta, weight)| {
-                    (weight.max(0.0), factor * units.sd_out(*theta) + shift, *added)
-                }));
+                parts.extend(
+                    at.points.iter().map(|(theta, weight)| {
+                        (weight.max(0.0), factor * units.sd_out(*theta) + shift, *added)
+                    }),
+                );
             }
             return super::mixture(parts, bound, what);
         }

@@ -204,9 +204,12 @@ pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
                     frame.width[d] *= 1.4;
                 }
             }
-            Coordinate::LongRun | Coordinate::Level => frame.stretch[d] = 0.0,
-            Coordinate::Between => {}
+            Coordinate::LongRun | Coordinate::Level | Coordinate::Between => {}
         }
+    }
+    if plane.is_marked() {
+        // Laws over marked readings are followed between the nodes, out to tails that no gauge sees.
+        frame.stretch = [0.0; MOST];
     }
     let mut factor = FIRST;
     let coarse = grid::sweep(&f, &frame, factor, 0.37, floor(dims))?;

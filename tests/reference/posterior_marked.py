@@ -8,14 +8,20 @@ the argument: the panels of the level end there. numpy and scipy, double precisi
 differ by more than 1e-10 are named.
 """
 import sys
+from functools import lru_cache
 import numpy as np
 from scipy.special import log_ndtr, ndtr, roots_legendre
 from scipy.optimize import brentq
 
 
+@lru_cache(None)
+def rule(k):
+    return roots_legendre(k)
+
+
 def panels(edges, k):
     edges = np.asarray(edges, float)
-    x, w = roots_legendre(k)
+    x, w = rule(k)
     h, m = np.diff(edges) / 2, (edges[:-1] + edges[1:]) / 2
     return (m[:, None] + h[:, None] * x).ravel(), (h[:, None] * w).ravel()
 
@@ -55,7 +61,7 @@ CASES = {
     'stated known': dict(prior=(2.0, 1.5), sd=0.8,
                          readings=[('=', 2.1), ('=', 1.4), ('<', 1.0), ('<', 1.0), ('>', 3.0)], box=(-8, 12)),
     'all below': dict(prior=(5.0, 2.0), sd=0.7, readings=[('<', 1.0)] * 6, box=(-12, 14)),
-    'flat unknown': dict(sd=None, lns=(-4.5, 9.0), unit=1.0,
+    'flat unknown': dict(sd=None, lns=(-4.5, 15.0), unit=1.0,
                          readings=[('=', 2.1), ('=', 1.4), ('=', 2.9), ('=', 2.2), ('<', 1.0), ('<', 1.5)]),
     'all rounded': dict(sd=None, lns=(-7.0, 9.0), unit=1.0,
                         readings=[('[', x - 0.5, x + 0.5) for x in (3, 4, 4, 6, 3)]),
@@ -135,7 +141,7 @@ class Plane:
 
 
 HISTORIES = {
-    'history plain': dict(sd=1.0, between='uniform', scale=2.0, periods=[
+    'history plain': dict(sd=1.0, between='half-normal', scale=2.0, periods=[
         [('=', 9.1), ('=', 10.3), ('=', 9.9)], [('=', 12.0), ('=', 11.5)], [('=', 8.0), ('=', 9.2), ('=', 9.0)],
         [('=', 10.0), ('=', 10.4)], [('=', 11.1)]], now=[('=', 8.2), ('<', 8.5), ('<', 8.5)]),
     'history marked': dict(sd=1.0, between='half-normal', scale=1.5, periods=[
@@ -155,18 +161,23 @@ class History:
         self.case = case
         self.k, self.f = (16, 1.0) if fine else (14, 1.2)
         c, f = case, self.f
-        edges = np.concatenate([even(-30, -4, 5 * f)[:-1], even(-4, 3.5, 0.6 * f)[:-1],
-                                even(3.5, 3.6 if c['between'] == 'half-normal' else 30, 2 * f)])
+        edges = np.concatenate([even(-30, -4, 5 * f)[:-1], even(-4, 2.3, 0.6 * f)])
         lt, self.wt = panels(edges + np.log(c['scale']), self.k)
         self.tau = np.exp(lt)
-        self.z, self.w = panels(even(-11, 11, 2.4 * f), self.k)
         self.top = 0.0
         self.top = max(self.at(tau, None)[2].max() for tau in self.tau)
-        self.whole = self.sum(lambda tau, mu: np.exp(self.now(tau, mu)) @ self.w)
+        self.whole = self.sum(lambda tau, mu: np.exp(self.now(tau, mu)) @ self.zs(tau)[1])
+
+    def width(self, tau):
+        """Panels of z as narrow as a reading's likelihood is on them."""
+        return min(2.4, 1.5 * self.case['sd'] / tau) * self.f
+
+    def zs(self, tau):
+        return panels(even(-10.5, 10.5, self.width(tau)), self.k)
 
     def now(self, tau, mu):
-        theta = mu[:, None] + tau * self.z[None, :]
-        return ln_like(self.case['now'], theta, self.case['sd']) - 0.5 * self.z**2
+        theta = mu[:, None] + tau * self.zs(tau)[0][None, :]
+        return ln_like(self.case['now'], theta, self.case['sd']) - 0.5 * self.zs(tau)[0]**2
 
     def at(self, tau, t):
         c = self.case
@@ -181,10 +192,10 @@ class History:
         ln = np.log(tau) - (0.5 * (tau / c['scale'])**2 if c['between'] == 'half-normal' else 0.0)
         ln = ln + np.zeros_like(mu)
         for period in c['periods']:
-            theta = mu[:, None] + tau * self.z[None, :]
-            l = ln_like(period, theta, c['sd']) - 0.5 * self.z**2
+            theta = mu[:, None] + tau * self.zs(tau)[0][None, :]
+            l = ln_like(period, theta, c['sd']) - 0.5 * self.zs(tau)[0]**2
             top = l.max(axis=1)
-            ln = ln + top + np.log(np.exp(l - top[:, None]) @ self.w)
+            ln = ln + top + np.log(np.exp(l - top[:, None]) @ self.zs(tau)[1])
         return mu, w, ln - self.top
 
     def sum(self, inner, t=None):
@@ -197,9 +208,9 @@ class History:
     def below(self, tau, mu, t):
         out = np.zeros_like(mu)
         for i, m in enumerate(mu):
-            hi = min(11.0, (t - m) / tau)
-            if hi > -11.0:
-                z, wz = panels(even(-11.0, hi, 2.4 * self.f), self.k)
+            hi = min(10.5, (t - m) / tau)
+            if hi > -10.5:
+                z, wz = panels(even(-10.5, hi, self.width(tau)), self.k)
                 out[i] = np.exp(ln_like(self.case['now'], m + tau * z, self.case['sd']) - 0.5 * z * z) @ wz
         return out
 
@@ -207,11 +218,11 @@ class History:
         return self.sum(lambda tau, mu: self.below(tau, mu, t), t) / self.whole
 
     def next_sf(self, t):
-        return self.sum(lambda tau, mu: np.exp(self.now(tau, mu)) @ self.w * ndtr((mu - t) / tau), t) / self.whole
+        return self.sum(lambda tau, mu: np.exp(self.now(tau, mu)) @ self.zs(tau)[1] * ndtr((mu - t) / tau), t) / self.whole
 
     def reading_sf(self, t):
         sd = self.case['sd']
-        inner = lambda tau, mu: (np.exp(self.now(tau, mu)) * ndtr((mu[:, None] + tau * self.z - t) / sd)) @ self.w
+        inner = lambda tau, mu: (np.exp(self.now(tau, mu)) * ndtr((mu[:, None] + tau * self.zs(tau)[0] - t) / sd)) @ self.zs(tau)[1]
         return self.sum(inner) / self.whole
 
 

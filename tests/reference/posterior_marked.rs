@@ -38,10 +38,13 @@ fn case(name: &str) -> Posterior {
             (Within::Known(0.8), LevelPrior::Stated { mean: 2.0, sd: 1.5 }),
             singles(&[at(2.1), at(1.4), below(1.0), below(1.0), Seen::Above(3.0)]),
         ),
-        "all below" => {
-            ((Within::Known(0.7), LevelPrior::Stated { mean: 5.0, sd: 2.0 }), singles(&[below(1.0); 6]))
+        "all below" => (
+            (Within::Known(0.7), LevelPrior::Stated { mean: 5.0, sd: 2.0 }),
+            singles(&[below(1.0); 6]),
+        ),
+        "flat unknown" => {
+            (flat(), singles(&[at(2.1), at(1.4), at(2.9), at(2.2), below(1.0), below(1.5)]))
         }
-        "flat unknown" => (flat(), singles(&[at(2.1), at(1.4), at(2.9), at(2.2), below(1.0), below(1.5)])),
         "all rounded" => {
             let rounded = |x: f64| Seen::Rounded { lower: x - 0.5, at: x, upper: x + 0.5 };
             (flat(), singles(&[3.0, 4.0, 4.0, 6.0, 3.0].map(rounded)))
@@ -55,7 +58,7 @@ fn case(name: &str) -> Posterior {
                 &[at(11.1)],
             ];
             (
-                (Within::Known(1.0), history(Between::Uniform, &periods)),
+                (Within::Known(1.0), history(Between::HalfNormal(2.0), &periods)),
                 singles(&[at(8.2), below(8.5), below(8.5)]),
             )
         }
@@ -112,6 +115,6 @@ fn marked_readings_agree_with_brute_force() {
         }
     }
     assert!(wrong.is_empty(), "{} of {rows} wrong:\n{}", wrong.len(), wrong.join("\n"));
-    assert!(rows > 60);
+    assert!(rows > 35);
     println!("{rows} figures; worst {worst:e}");
 }
