@@ -7,6 +7,7 @@ mod cases;
 mod carried;
 mod checks_of_demos;
 mod coverage;
+mod served;
 mod tidiness;
 mod other_scales;
 mod reference;

@@ -155,6 +155,12 @@ impl Posterior {
                     let weight = share * fm::exp(node.ln_weight - top) / sum;
                     if weight >= NEGLIGIBLE {
                         let (mean, var) = at(part, node)?;
+                        // Without any σ the readings of the other period say nothing.
+                        if let (false, Some(reason)) =
+                            (mean.is_finite() && var.is_finite(), &self.inner.no_sd)
+                        {
+                            return Err(reason.clone());
+                        }
                         parts.push((weight, units.sd_out(mean), units.square_out(var)));
                     }
                 }

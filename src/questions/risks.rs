@@ -99,6 +99,12 @@ fn of_prior(world: &World<'_>, bad: Beyond, accepted: &[(f64, f64)]) -> Result<(
         let Some((_, mean_var)) = moved::mean_given(&own.readings, piece.reading_sd) else {
             return Err(Absent::because("the readings say more of the level than their mean does"));
         };
+        // The within sd may come from this period's readings alone: then it is unknown before them.
+        if !mean_var.is_finite() {
+            return Err(Absent::because(
+                "before the readings nothing is known of the within sd, and so not how they would fall",
+            ));
+        }
         let level = (piece.level_mean, piece.level_var.sqrt());
         let (accepted_badly, rejected_wrongly) = global_risks(level, mean_var.sqrt(), bad, accepted)?;
         consumer += piece.weight * accepted_badly;
