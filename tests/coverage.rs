@@ -83,6 +83,13 @@ fn every_kind_has_an_example() {
 }
 
 #[test]
+fn every_kind_has_a_golden_case() {
+    let mut cased = specs("specs");
+    cased.retain(|name, _| root().join("tests/cases").join(name.trim_end_matches(".toml")).is_dir());
+    assert_eq!(missing_in(&cased), Vec::<String>::new());
+}
+
+#[test]
 fn every_kind_has_a_faulty_spec() {
     assert_eq!(missing_in(&specs("tests/faults")), Vec::<String>::new());
 }

@@ -205,7 +205,8 @@ fn peers_difference(a: &Member<'_>, b: &Member<'_>) -> Result<Law, Absent> {
             &weighed.nodes
         } else {
             let f = plane.nodes();
-            fresh = grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, floor(weighed.frame.dims))?;
+            fresh =
+                grid::sweep(&f, &weighed.frame, weighed.factor * factor, offset, floor(weighed.frame.dims))?;
             &fresh
         };
         let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);

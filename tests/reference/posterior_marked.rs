@@ -38,13 +38,10 @@ fn case(name: &str) -> Posterior {
             (Within::Known(0.8), LevelPrior::Stated { mean: 2.0, sd: 1.5 }),
             singles(&[at(2.1), at(1.4), below(1.0), below(1.0), Seen::Above(3.0)]),
         ),
-        "all below" => (
-            (Within::Known(0.7), LevelPrior::Stated { mean: 5.0, sd: 2.0 }),
-            singles(&[below(1.0); 6]),
-        ),
-        "flat unknown" => {
-            (flat(), singles(&[at(2.1), at(1.4), at(2.9), at(2.2), below(1.0), below(1.5)]))
+        "all below" => {
+            ((Within::Known(0.7), LevelPrior::Stated { mean: 5.0, sd: 2.0 }), singles(&[below(1.0); 6]))
         }
+        "flat unknown" => (flat(), singles(&[at(2.1), at(1.4), at(2.9), at(2.2), below(1.0), below(1.5)])),
         "all rounded" => {
             let rounded = |x: f64| Seen::Rounded { lower: x - 0.5, at: x, upper: x + 0.5 };
             (flat(), singles(&[3.0, 4.0, 4.0, 6.0, 3.0].map(rounded)))
