@@ -151,9 +151,8 @@ impl Plane {
     /// The coordinates in use, in order.
     pub fn coordinates(&self) -> Vec<Coordinate> {
         let mut all = Vec::with_capacity(MOST);
-        match self.history_sd {
-            Some(Sd::Unknown(_)) => all.push(Coordinate::HistorySd),
-            _ => {}
+        if let Some(Sd::Unknown(_)) = self.history_sd {
+            all.push(Coordinate::HistorySd);
         }
         if matches!(self.between, BetweenSd::Unknown(_)) {
             all.push(Coordinate::Between);
