@@ -48,6 +48,12 @@ impl Frame {
         (self.centre[dim] + self.width[dim] / k * sinh, fm::ln(cosh))
     }
 
+    /// ln of the growth of steps at a coordinate.
+    pub fn ln_growth(&self, dim: usize, coordinate: f64) -> f64 {
+        let along = self.stretch[dim] * (coordinate - self.centre[dim]) / self.width[dim];
+        0.5 * fm::ln_1p(along * along)
+    }
+
     /// ln of the volume of a cell at the centre.
     pub fn ln_volume(&self, factor: f64) -> f64 {
         (0..self.dims).map(|d| fm::ln(factor * self.width[d])).sum()

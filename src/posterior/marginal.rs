@@ -5,6 +5,7 @@ use super::build::Part;
 use super::grid::{self, MOST, Place};
 use super::legendre::Panels;
 use super::plane::{BetweenSd, Coordinate, Node, Sd};
+use super::told::Told;
 use super::weighing::Weighed;
 use crate::math::{fm, roots};
 use crate::quantity::Absent;
@@ -73,15 +74,86 @@ fn ln_density(
     Ok(ln - fm::ln(slope) - weighted.weighed.ln_integral)
 }
 
+/// This period's σ where the earlier periods have another: given their (σ_h, τ) the level before the readings is
+/// N(mean, var) whatever σ is, so that its density is a sum over one lattice of them.
+struct Apart {
+    /// (ln share of the history's lattice, mean, var).
+    before: Vec<(f64, f64, f64)>,
+}
+
+impl Apart {
+    /// `None` where σ is the history's own or levels are no normal pieces.
+    fn of(weighted: &Weighted<'_>, wanted: Coordinate) -> Option<Apart> {
+        let (plane, weighed) = (&weighted.part.plane, weighted.weighed);
+        let d = plane.coordinates().iter().position(|c| *c == Coordinate::Sd)?;
+        if wanted != Coordinate::Sd || plane.history_sd.is_none() || plane.is_marked() || d == 0 {
+            return None;
+        }
+        let mut alone = plane.clone();
+        alone.sd = Sd::Undefined;
+        alone.readings = Told::Nothing;
+        let node_at = alone.nodes();
+        let mut before: Vec<(f64, f64, f64)> = Vec::new();
+        let mut last: Option<Place> = None;
+        // Nodes of one line follow each other.
+        for node in &weighed.nodes {
+            let mut place = [0.0; MOST];
+            place[..d].copy_from_slice(&node.place[..d]);
+            if last != Some(place) {
+                last = Some(place);
+                let there = node_at(&place);
+                let ln_cell = node.ln_cell - weighed.frame.ln_growth(d, node.place[d]);
+                before.push((there.ln_weight + ln_cell, there.prior_mean, there.prior_var));
+            }
+        }
+        Some(Apart { before })
+    }
+
+    fn ln_density(&self, weighted: &Weighted<'_>, x: f64) -> Result<f64, Absent> {
+        let (plane, weighed) = (&weighted.part.plane, weighted.weighed);
+        let Sd::Unknown(axis) = plane.sd else {
+            return Err(Absent::failed("a part of the prior has no such spread"));
+        };
+        let sigma = fm::exp(x);
+        let u = axis.coordinate(sigma);
+        let mut top = f64::NEG_INFINITY;
+        let mut terms = Vec::with_capacity(self.before.len());
+        let at = plane.readings.at(sigma * sigma);
+        for (ln_share, mean, var) in &self.before {
+            let ln = match at {
+                None => *ln_share,
+                Some(at) => {
+                    let (total, error) = (var + at.var, at.mean - mean);
+                    ln_share + at.ln_factor - 0.5 * (fm::ln(total) + error * error / total)
+                }
+            };
+            top = top.max(ln);
+            terms.push(ln);
+        }
+        let sum: f64 = terms.iter().filter(|ln| **ln > top - 50.0).map(|ln| fm::exp(ln - top)).sum();
+        let outer = weighed.frame.ln_volume(weighed.factor)
+            - fm::ln(weighed.factor * weighed.frame.width[weighed.frame.dims - 1]);
+        let ln = top + fm::ln(sum) + outer + axis.at(u).1;
+        Ok(ln - fm::ln(axis.slope(u)) - weighed.ln_integral)
+    }
+}
+
 /// The density of x = ln spread over all parts, on panels. Moments of the spread exist below `bound`.
 pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate, bound: f64) -> Result<Panels, Absent> {
     let depth = if bound <= HEAVY { DEPTH_OF_HEAVY } else { DEPTH };
     let trouble = std::cell::RefCell::new(None);
     let nodes: Vec<_> = parts.iter().map(|w| w.part.plane.nodes()).collect();
+    let aparts: Vec<Option<Apart>> = parts.iter().map(|w| Apart::of(w, wanted)).collect();
     let ln_all = |x: f64| {
         let mut total = f64::NEG_INFINITY;
-        for (weighted, node) in parts.iter().zip(&nodes).filter(|(w, _)| w.share > 0.0) {
-            match ln_density(weighted, node, wanted, x) {
+        for ((weighted, node), apart) in
+            parts.iter().zip(&nodes).zip(&aparts).filter(|((w, _), _)| w.share > 0.0)
+        {
+            let here = match apart {
+                Some(apart) => apart.ln_density(weighted, x),
+                None => ln_density(weighted, node, wanted, x),
+            };
+            match here {
                 Ok(ln) => total = fm::ln_add_exp(total, fm::ln(weighted.share) + ln),
                 Err(e) => {
                     trouble.borrow_mut().get_or_insert(e);
