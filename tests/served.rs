@@ -30,6 +30,12 @@ fn a_within_sd_from_the_readings_alone_stops_no_question() {
         let findings = reassay::review::run(&path, "all.toml", 1).expect("every question is answered");
         let answers = &findings.series[0].answers;
         assert_eq!(answers.len(), 3);
+        if place == 0 {
+            // By mpmath at 20 digits: the integral over σ² ~ SS/χ²(4) of the chance that the level lies where more
+            // than 0.05 of the readings are outside, cut where that holds for every level.
+            let chance = answers[1].figures.value("chance").expect("a chance");
+            assert!((chance - 0.568_180_121_477_968).abs() < 1e-12, "{chance}");
+        }
         for (answer, figure) in answers.iter().zip(["chance", "upper", "estimate"]) {
             assert!(answer.figures.value(figure).is_some(), "{place} {}: {:?}", answer.id, answer.figures);
         }
