@@ -207,9 +207,7 @@ fn rebuilt(
     source: &dyn Source,
     within: &WithinRead,
 ) -> Result<Model, Absent> {
-    let why = |refusal| match refusal {
-        Refusal::TooShort(fault) | Refusal::Wrong(fault) => Absent::because(fault.message),
-    };
+    let why = |refusal: Refusal| Absent::because(refusal.into_fault().message);
     let built = source.level(&ground).map_err(why)?;
     let (within, _) = within.within(&ground, &built.level).map_err(why)?;
     Ok(Model { within, level: built.level, adjust: None, ..base.model.clone() })

@@ -332,24 +332,30 @@ fn the_previous_review_is_compared_with() {
     assert_eq!(status, 0, "{said}");
 }
 
-/// A final review of 2024 with the years before it, and one of 2025 carried from it, changed by `change`.
-fn refusal(name: &str, first: &dyn Fn(String) -> String, change: &dyn Fn(String) -> String) -> (i32, String) {
+/// A desk with a final review of 2024, changed by `first`, and data of several kinds for 2025.
+fn after_2024(name: &str, first: &dyn Fn(String) -> String) -> Desk {
     let desk = Desk::new(name);
-    fs::write(desk.0.join("first.csv"), csv(2019..=2024, &["A"])).unwrap();
-    fs::write(desk.0.join("2025.csv"), csv(2025..=2025, &["A"])).unwrap();
-    fs::write(desk.0.join("both.csv"), csv(2024..=2025, &["A"])).unwrap();
-    fs::write(
-        desk.0.join("more.csv"),
-        csv(2018..=2018, &["A"]) + csv(2025..=2025, &["A"]).split_once('\n').unwrap().1,
-    )
-    .unwrap();
-    let again: String = csv(2024..=2024, &["A"]).replace(",2024,", ",2025,");
-    fs::write(desk.0.join("again.csv"), again).unwrap();
-    let other: String = csv(2024..=2025, &["A"]).replacen(",2024,2", ",2024,3", 1);
-    fs::write(desk.0.join("other.csv"), other).unwrap();
+    let body = |text: String| text.split_once('\n').unwrap().1.to_string();
+    let both = csv(2024..=2025, &["A"]);
+    for (file, text) in [
+        ("first.csv", csv(2019..=2024, &["A"])),
+        ("2025.csv", csv(2025..=2025, &["A"])),
+        ("more.csv", csv(2018..=2018, &["A"]) + &body(csv(2025..=2025, &["A"]))),
+        ("again.csv", csv(2024..=2024, &["A"]).replace(",2024,", ",2025,")),
+        ("other.csv", both.replacen(",2024,2", ",2024,3", 1)),
+        ("both.csv", both),
+    ] {
+        fs::write(desk.0.join(file), text).unwrap();
+    }
     let (status, said) =
         desk.report("carried-2024", &first(spec("carried-2024", 2024, "first.csv", "history", &[])));
     assert_eq!(status, 0, "{said}");
+    desk
+}
+
+/// What becomes of a review of 2025 carried from that of 2024, changed by `change`.
+fn refusal(name: &str, first: &dyn Fn(String) -> String, change: &dyn Fn(String) -> String) -> (i32, String) {
+    let desk = after_2024(name, first);
     if name == "changed" {
         let path: &Path = &desk.0.join("reviews/carried-2024/handover.json");
         let text = fs::read_to_string(path).unwrap().replacen('2', "3", 1);
@@ -427,8 +433,23 @@ fn the_ledger_lets_nothing_in_twice_and_nothing_fall_out() {
         assert!(said.contains(words), "{name}: {said}");
         assert!(said.contains("next.toml:"), "{name} names its place: {said}");
     }
-    let (status, said) = refusal("both", &same, &with("both.csv"));
-    assert_eq!(status, 0, "{said}");
-    let (status, said) = refusal("other", &same, &with("other.csv"));
-    assert_eq!(status, 0, "{said}");
+    // A period that the ledger holds: equal, it is said to be; different, the handover's readings are used.
+    for (name, file, code) in [("both", "both.csv", None), ("other", "other.csv", Some("ledger-differs"))] {
+        let desk = after_2024(name, &same);
+        let next = spec("next", 2025, file, "carried", &[]);
+        let (status, said) = desk.report("next", &next);
+        assert_eq!(status, 0, "{said}");
+        let (status, said) = desk.report(
+            "plain",
+            &next.replace(file, "2025.csv").replace("id = \"next\"\nperiod", "id = \"plain\"\nperiod"),
+        );
+        assert_eq!(status, 0, "{said}");
+        let (with, without) = (desk.answers("next"), desk.answers("plain"));
+        assert_eq!(with["series"][0]["answers"][0], without["series"][0]["answers"][0], "used once");
+        let found: Vec<&str> =
+            with["cautions"].as_array().unwrap().iter().filter_map(|own| own["code"].as_str()).collect();
+        assert_eq!(found.contains(&"ledger-differs"), code.is_some(), "{name}: {found:?}");
+        let report = fs::read_to_string(desk.0.join("reviews/next/report.md")).unwrap();
+        assert_eq!(report.contains("The data hold 2024 too, equal to the ledger"), code.is_none(), "{name}");
+    }
 }

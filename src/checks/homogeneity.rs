@@ -16,7 +16,7 @@
 //! Worked: means 10.0, 12.0, 11.0, 15.0, each with s = 1.0: weighted mean 12.0, Q = 4 + 0 + 1 + 9 =
 //! 14 on 3 df, p = 0.0029: the periods differ.
 
-use crate::checks::{Check, Concern, REMARK_BELOW, tails, words};
+use crate::checks::{Check, REMARK_BELOW, tails, words};
 
 /// The name of this check.
 pub const ID: &str = "difference of periods";
@@ -83,7 +83,7 @@ pub fn check(periods: &[PeriodMean], pooled_df: Option<f64>, levels_may_differ: 
             words::p_is(p)
         ));
     if levels_may_differ {
-        check = check.concern(Concern::None);
+        check = check.describing();
     }
     check.if_concerned(
         "The periods do not share one level: pooling them as one is too sure. Let levels differ by a between sd.",

@@ -103,6 +103,8 @@ pub struct Check {
     pub consequence: String,
     /// Further figures by name, such as the effective number of readings or the ends of a band.
     pub extra: Vec<(&'static str, f64)>,
+    /// True where the model allows for what p speaks of: p then tells a fact and tests no assumption.
+    pub describes: bool,
     /// Why the check was not made; none when it was.
     pub why: Option<String>,
 }
@@ -123,6 +125,7 @@ impl Check {
             meaning: String::new(),
             consequence: NOTHING_FOLLOWS.to_owned(),
             extra: Vec::new(),
+            describes: false,
             why: None,
         }
     }
@@ -140,6 +143,7 @@ impl Check {
             meaning: format!("Not made: {why}."),
             consequence: "The assumption stands unchecked.".to_owned(),
             extra: Vec::new(),
+            describes: false,
             why: Some(why),
         }
     }
@@ -154,6 +158,18 @@ impl Check {
     pub(crate) fn p(mut self, p: f64) -> Check {
         self.p = Some(p);
         self.concern = Concern::of_p(p);
+        self
+    }
+
+    /// The p-value of a test of an assumption, where this is one that was made.
+    pub fn tested(&self) -> Option<f64> {
+        self.p.filter(|_| !self.describes && self.why.is_none())
+    }
+
+    /// Marks what the model allows for: a small p is no concern.
+    pub(crate) fn describing(mut self) -> Check {
+        self.describes = true;
+        self.concern = Concern::None;
         self
     }
 

@@ -14,8 +14,8 @@ use jiff::civil::Date;
 const MANY_EXCLUDED: f64 = 0.10;
 const MANY_MARKED: f64 = 0.50;
 const MOST_MARKED: f64 = 0.80;
-/// The probability beyond 8 standard deviations of a normal law.
-const BEYOND_EIGHT_SDS: f64 = 6.2e-16;
+/// A limit farther from all readings than so many of their sds is named.
+const FAR_IN_SDS: f64 = 8.0;
 
 /// All cautions of the findings, in a fixed order: the plan's, then series by series.
 pub fn of(findings: &Findings) -> Vec<Caution> {
@@ -124,7 +124,7 @@ fn of_series(findings: &Findings, series: &SeriesFindings) -> Vec<Caution> {
     cautions.extend(of_influence(findings, series));
     cautions.extend(of_checks(series));
     cautions.extend(marks_beyond_limits(findings, series));
-    cautions.extend(limits_far_off(series));
+    cautions.extend(limits_far_off(findings, series));
     for answer in &series.answers {
         cautions.extend(of_answer(findings, answer));
     }
@@ -238,18 +238,30 @@ fn marks_beyond_limits(findings: &Findings, series: &SeriesFindings) -> Vec<Caut
     plan.limits.iter().filter_map(of_limit).collect()
 }
 
-/// A limit more than 8 standard deviations away: the answer is trivial, or a unit is wrong.
-fn limits_far_off(series: &SeriesFindings) -> Vec<Caution> {
-    let far = |answer: &&Answer| {
-        let chance = answer.figures.value("chance");
-        answer.ask == "level chance"
-            && chance.is_some_and(|chance| !(BEYOND_EIGHT_SDS..=1.0 - BEYOND_EIGHT_SDS).contains(&chance))
+/// A limit more than 8 standard deviations of a reading away from all readings: the answer is trivial, or a unit
+/// is wrong.
+fn limits_far_off(findings: &Findings, series: &SeriesFindings) -> Vec<Caution> {
+    let plan = &findings.plan;
+    let data = findings.data.series.iter().find(|data| data.name == series.name);
+    let facts = data.and_then(|data| data.period(&plan.review.period)).map(|period| &period.facts);
+    let Some((smallest, largest, sd)) =
+        facts.and_then(|facts| Some((facts.smallest?, facts.largest?, facts.sd?)))
+    else {
+        return Vec::new();
     };
-    let caution = |answer: &Answer| {
-        let text = "The limit lies more than 8 standard deviations from the level: the answer is as good as certain if the unit of the limit is that of the readings.";
-        Caution::new("limit-far-off", text).of_question(&answer.id)
+    let reach = FAR_IN_SDS * sd;
+    let far = |end: f64| end < smallest - reach || end > largest + reach;
+    let caution = |limit: &&Limit| {
+        let text = format!(
+            "The limit \"{}\" lies more than {FAR_IN_SDS} standard deviations of a reading from all readings: what is asked of it is as good as certain, if its unit is that of the readings.",
+            limit.name
+        );
+        Caution::new("limit-far-off", text)
     };
-    series.answers.iter().filter(far).map(caution).collect()
+    let ends =
+        |limit: &&Limit| plan.bounds(&limit.name, &series.name).map_or(Vec::new(), |bounds| bounds.ends());
+    let is_far = |limit: &&Limit| sd > 0.0 && !ends(limit).is_empty() && ends(limit).into_iter().all(far);
+    plan.limits.iter().filter(is_far).map(|limit| caution(&limit)).collect()
 }
 
 fn of_checks(series: &SeriesFindings) -> Vec<Caution> {

@@ -193,8 +193,13 @@ impl Then<'_> {
             .iter()
             .filter_map(|answer| answer_then(answer).map(|then| changed(answer, then)))
             .collect();
-        let mut one = SeriesThen { changes, ..SeriesThen::none(own, "") };
-        one.why = None;
+        let mut one = SeriesThen {
+            name: own.name.clone(),
+            why: None,
+            changes,
+            predictions: Vec::new(),
+            not_scored: None,
+        };
         if self.relation == Relation::Amended {
             return Ok(one);
         }

@@ -1,9 +1,9 @@
 //! Many series looked at once: how many flags and wrong verdicts are to be expected by chance, and which
 //! findings stand out even so.
 
-use super::{Findings, SeriesFindings};
+use super::SeriesFindings;
 use crate::checks::{Check, many_series};
-use crate::plan::{Condition, Rule};
+use crate::plan::{Condition, Plan, Rule};
 
 /// The name of the figure that each series' check bears beside its p.
 pub const ADJUSTED: &str = "p adjusted for many series";
@@ -32,7 +32,7 @@ pub struct WrongVerdicts {
 pub fn over_series(series: &mut [SeriesFindings]) -> Vec<OverSeries> {
     let mut kinds: Vec<&'static str> = Vec::new();
     for check in series.iter().flat_map(|series| &series.checks) {
-        if check.p.is_some() && !kinds.contains(&check.id) {
+        if check.tested().is_some() && !kinds.contains(&check.id) {
             kinds.push(check.id);
         }
     }
@@ -42,7 +42,7 @@ pub fn over_series(series: &mut [SeriesFindings]) -> Vec<OverSeries> {
         for series in series.iter_mut() {
             for check in &mut series.checks {
                 if check.id == kind
-                    && let Some(p) = check.p
+                    && let Some(p) = check.tested()
                 {
                     made.push((series.name.clone(), p, check));
                 }
@@ -65,11 +65,11 @@ pub fn over_series(series: &mut [SeriesFindings]) -> Vec<OverSeries> {
 }
 
 /// How many verdicts are expected to be wrong by their own chances, per question that a chance decides.
-pub fn wrong_verdicts(findings: &Findings) -> Vec<WrongVerdicts> {
+pub fn wrong_verdicts(plan: &Plan, series: &[SeriesFindings]) -> Vec<WrongVerdicts> {
     let mut found = Vec::new();
-    for question in &findings.plan.questions {
+    for question in &plan.questions {
         let Some(rule) = &question.rule else { continue };
-        let answers = findings.series.iter().flat_map(|series| &series.answers);
+        let answers = series.iter().flat_map(|series| &series.answers);
         let chances: Vec<f64> = answers
             .filter(|answer| answer.id == question.id)
             .filter_map(|answer| {

@@ -28,6 +28,8 @@ pub struct Findings {
     pub cautions: Vec<Caution>,
     /// Each kind of check over all series.
     pub checks_over_series: Vec<many::OverSeries>,
+    /// Verdicts expected to be wrong, per question that a chance decides.
+    pub wrong_verdicts: Vec<many::WrongVerdicts>,
     /// The reviews that the spec names, held against this one.
     pub compared: Vec<compared::Compared>,
     /// Keys of `prior` and `within` with their defaults, by the table's path, as TOML values.

@@ -4,8 +4,8 @@
 use crate::plan::toml_text::{TomlText, bounds, inline_table, key, list, number, period, text, value};
 use crate::plan::{
     AppliesTo, Bias, Condition, Coverage, DateOrder, Detail, FileRef, Limit, Link, Marks, NumberOrColumn,
-    PeriodOf, Plan, QuestionPlan, SeriesOf, Source, SourceKind, Status, SummaryRow, TemplateChoice,
-    Threshold, Whence, questions,
+    PeriodOf, Plan, QuestionPlan, SeriesOf, Source, SourceKind, SummaryRow, TemplateChoice, Threshold,
+    Whence, questions,
 };
 use crate::spec::language;
 use crate::spec::table::Table;
@@ -97,12 +97,7 @@ fn review(plan: &Plan, out: &mut TomlText) {
     out.line("id", text(&review.id));
     out.line("period", period(&review.period));
     out.line("date", review.date.to_string());
-    let status = match review.status {
-        Status::Draft => "draft",
-        Status::Interim => "interim",
-        Status::Final => "final",
-    };
-    out.line("status", text(status));
+    out.line("status", text(review.status.word()));
     out.some("until", review.until.map(|date| date.to_string()));
     out.some("purpose", review.purpose.as_deref().map(text));
     out.some("previous", review.previous.as_ref().map(link));

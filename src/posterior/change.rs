@@ -99,6 +99,13 @@ impl Posterior {
         if self.inner.is_marked() {
             return self.change_marked(period, &own, bound);
         }
+        // Outside the history the earlier readings stand on this model's σ, which may be unknown altogether.
+        let stands_alone = self.inner.parts.iter().any(|(part, ..)| self.held(part, period).is_none());
+        if let (Some(reason), Told::Counted { .. } | Told::Own(_), true) =
+            (&self.inner.no_sd, &own, stands_alone)
+        {
+            return Err(reason.clone());
+        }
         self.over_nodes(bound, &|part, node| difference(part, node, self.held(part, period), &own))
     }
 
@@ -155,12 +162,6 @@ impl Posterior {
                     let weight = share * fm::exp(node.ln_weight - top) / sum;
                     if weight >= NEGLIGIBLE {
                         let (mean, var) = at(part, node)?;
-                        // Without any σ the readings of the other period say nothing.
-                        if let (false, Some(reason)) =
-                            (mean.is_finite() && var.is_finite(), &self.inner.no_sd)
-                        {
-                            return Err(reason.clone());
-                        }
                         parts.push((weight, units.sd_out(mean), units.square_out(var)));
                     }
                 }

@@ -72,6 +72,14 @@ pub enum Refusal {
     Wrong(Fault),
 }
 
+impl Refusal {
+    pub fn into_fault(self) -> Fault {
+        match self {
+            Refusal::TooShort(fault) | Refusal::Wrong(fault) => fault,
+        }
+    }
+}
+
 /// Reads a `[prior]` table by the source that it names.
 pub fn read(table: &Table, scale: Scale, plan: &Plan, faults: &mut Faults) -> Option<Box<dyn Source>> {
     let kind = named(table, "the source of the prior", ALL.iter().map(|kind| kind.from), faults)?;

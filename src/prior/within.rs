@@ -136,7 +136,7 @@ impl WithinRead {
                 Within::Worth { sd: *sd, df: *df }
             }
             From::History => Within::Pooled {
-                others: if holds_periods(level) { Vec::new() } else { evidence(ground.earlier()) },
+                others: if level.own_periods().is_some() { Vec::new() } else { evidence(ground.earlier()) },
             },
             From::Peers => Within::Pooled {
                 others: if matches!(level, LevelPrior::Peers(_)) {
@@ -205,15 +205,6 @@ impl WithinRead {
             Some(basis) => format!("{text} (basis: {})", basis.trim_end_matches('.')),
             None => text,
         }
-    }
-}
-
-/// Whether the prior of the level already brings the earlier periods' readings.
-fn holds_periods(level: &LevelPrior) -> bool {
-    match level {
-        LevelPrior::Periods(_) => true,
-        LevelPrior::Mixture(parts) => parts.iter().any(|(_, part)| holds_periods(part)),
-        _ => false,
     }
 }
 

@@ -184,6 +184,7 @@ fn findings(names: &[&str]) -> Findings {
     Findings {
         compared: Vec::new(),
         checks_over_series: Vec::new(),
+        wrong_verdicts: Vec::new(),
         settings: Vec::new(),
         plan: plan(),
         data: Data {

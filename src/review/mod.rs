@@ -81,6 +81,7 @@ pub fn review(prepared: Prepared, mut data: Data, jobs: usize) -> Outcome<Findin
     }
     let (mut series, faults) = keep_exact(series);
     let checks_over_series = findings::many::over_series(&mut series);
+    let wrong_verdicts = findings::many::wrong_verdicts(&prepared.plan, &series);
     let settings = settings_of(&prepared);
     let mut findings = Findings {
         plan: prepared.plan,
@@ -91,6 +92,7 @@ pub fn review(prepared: Prepared, mut data: Data, jobs: usize) -> Outcome<Findin
         cautions,
         compared: Vec::new(),
         checks_over_series,
+        wrong_verdicts,
         settings,
         quadrature_error,
     };
@@ -239,9 +241,7 @@ fn work<'a>(prepared: &'a Prepared, data: &'a Data, name: &'a str) -> Outcome<Wo
     let ground = Ground { plan, data, series: name, scale, restored: false };
     let (source, built) = build(settings.source.as_ref(), prepared.otherwise.as_deref(), &ground)?;
     let (within, within_cautions) =
-        settings.within.within(&ground, &built.level).map_err(|refusal| match refusal {
-            Refusal::TooShort(fault) | Refusal::Wrong(fault) => fault,
-        })?;
+        settings.within.within(&ground, &built.level).map_err(Refusal::into_fault)?;
     let bias = plan.series.get(name).and_then(|own| own.bias.as_ref()).or(plan.quantity.bias.as_ref());
     let model = Model {
         scale,
@@ -289,7 +289,7 @@ fn build<'a>(
             }
             Err(Refusal::TooShort(other) | Refusal::Wrong(other)) => Err(Faults(vec![fault, other])),
         },
-        (Err(Refusal::TooShort(fault) | Refusal::Wrong(fault)), _) => Err(fault.into()),
+        (Err(refusal), _) => Err(refusal.into_fault().into()),
     }
 }
 

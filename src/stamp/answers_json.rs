@@ -2,7 +2,7 @@
 
 use crate::data::Data;
 use crate::findings::compared::{Changed, Foretold, Prediction, Relation, SeriesThen};
-use crate::findings::many::{self, OverSeries, WrongVerdicts};
+use crate::findings::many::{OverSeries, WrongVerdicts};
 use crate::findings::{AcrossFindings, Answer, Findings, SeriesFindings, UnderAlternative};
 use crate::json::{Json, Object, of_toml, reason_against};
 use crate::plan::{Action, Limit, Plan};
@@ -34,10 +34,7 @@ pub fn answers_json(findings: &Findings) -> Json {
         .put("limits", limits(plan))
         .put("actions", Json::List(plan.actions.iter().map(action).collect()))
         .put("checks_over_series", Json::List(findings.checks_over_series.iter().map(over_series).collect()))
-        .put(
-            "verdicts_expected_wrong",
-            Json::List(many::wrong_verdicts(findings).iter().map(wrong).collect()),
-        )
+        .put("verdicts_expected_wrong", Json::List(findings.wrong_verdicts.iter().map(wrong).collect()))
         .put("across", Json::List(findings.across.iter().map(across).collect()))
         .put("cautions", Json::List(cautions.collect()))
         .put("previous", beside(findings, Relation::Previous))

@@ -88,6 +88,7 @@ fn make(again: &Again) -> Outcome<Made> {
     let findings = Findings {
         compared: Vec::new(),
         checks_over_series: Vec::new(),
+        wrong_verdicts: Vec::new(),
         settings: Vec::new(),
         plan,
         data,

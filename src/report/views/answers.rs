@@ -5,6 +5,7 @@ use super::row_tables;
 use super::table::{Column, TableView, plain};
 use crate::findings::{AcrossFindings, Answer, SeriesFindings};
 use crate::plan::{Plan, QuestionPlan, Rule};
+use crate::quantity::Scale;
 use crate::questions::figures::{Figures, Item, Meaning};
 use crate::report::text::{self, Places};
 use crate::working::Step;
@@ -91,7 +92,7 @@ pub fn view(answer: &Answer, series: &SeriesFindings, numbers: &Numbers<'_>) -> 
         rule_figure: None,
         characteristic: row_tables::operating_characteristic(&answer.rule_figures, numbers),
         table: row_tables::readings_needed(&answer.figures, numbers),
-        working: working(&answer.working),
+        working: working(&answer.working, unit_of_working(plan)),
     }
 }
 
@@ -196,9 +197,13 @@ pub fn with_minus(words: &str) -> String {
 }
 
 /// The steps of a derivation; values with six digits, enough to follow with a pocket calculator.
-fn working(steps: &[Step]) -> Option<TableView> {
+fn working(steps: &[Step], unit: &str) -> Option<TableView> {
+    let caption = match unit {
+        "1" => "How the figure comes about".to_string(),
+        unit => format!("How the figure comes about; levels, readings and sds in {unit}"),
+    };
     let mut table = TableView::new(
-        "How the figure comes about",
+        caption,
         &[
             ("step", Column::Head),
             ("formula", Column::Text),
@@ -222,8 +227,16 @@ fn working(steps: &[Step]) -> Option<TableView> {
     table.some()
 }
 
-/// Seven digits; a whole number as such.
+/// On the log scale the steps are of natural logarithms, which have no unit.
+fn unit_of_working(plan: &Plan) -> &str {
+    if plan.quantity.scale == Scale::Log { "1" } else { &plan.quantity.unit }
+}
+
+/// Seven digits; a whole number as such. What is not quite 1 is not printed as 1.
 fn working_number(value: f64) -> String {
+    if value < 1.0 && value > 0.999_999_95 {
+        return format!("1 − {}", text::significant(1.0 - value, 2));
+    }
     let whole = value.abs() < 1e7 && value as i64 as f64 == value;
     if whole { Places::decimals(0).value(value) } else { text::significant(value, 7) }
 }

@@ -186,13 +186,17 @@ fn facts_cells(facts: &Facts) -> [Value; 4] {
 }
 
 fn exclusions(plan: &Plan, data: &Data) -> Option<TableView> {
+    let heading = match plan.quantity.unit.as_str() {
+        "1" => "as read".to_string(),
+        unit => format!("as read, {unit}"),
+    };
     let mut table = TableView::new(
         "Readings taken out; every answer is also given with them restored, under “Sensitivity”",
         &[
             ("series", Column::Head),
             ("period", Column::Text),
             ("row", Column::Text),
-            ("as read", Column::Number),
+            (heading.as_str(), Column::Number),
             ("reason", Column::Text),
             ("by", Column::Text),
             ("on", Column::Text),

@@ -117,6 +117,14 @@ fn limits(plan: &Plan, series: &str) -> Vec<Mark> {
     marks
 }
 
+/// A density is per unit of the quantity.
+fn density_title(plan: &Plan) -> String {
+    match plan.quantity.unit.as_str() {
+        "1" => "probability density".to_string(),
+        unit => format!("probability density, per {unit}"),
+    }
+}
+
 fn to_unit(scale: Scale, value: f64) -> f64 {
     match scale {
         Scale::Linear => value,
@@ -170,7 +178,7 @@ pub fn level(
             description: format!("Probability densities; central 95 % interval {ends}."),
         },
         value_title: value_title(plan),
-        height_title: "probability density".to_string(),
+        height_title: density_title(plan),
         prior: if without { None } else { prior.as_ref().map(|law| curve(law, "prior")) },
         readings: readings.as_ref().map(|law| curve(law, "readings alone")),
         posterior: curve(&both, if without { "prior (no readings)" } else { "prior and readings" }),
@@ -256,7 +264,7 @@ pub fn foretold(
             description: "Probability densities of a single reading, and the readings.".to_string(),
         },
         value_title: value_title(plan),
-        height_title: "probability density".to_string(),
+        height_title: density_title(plan),
         prior: prior.as_ref().map(|law| curve(law, "before the readings")),
         readings: None,
         posterior: curve(&both, "after the readings"),

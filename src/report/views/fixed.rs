@@ -21,7 +21,10 @@ pub const CODES: &[(&str, &str)] = &[
     ),
     ("ledger-differs", "Readings of an earlier period are not those that went into the handover."),
     ("limit-differs", "A limit is not that of the review that this one is compared with."),
-    ("limit-far-off", "A limit lies more than 8 standard deviations from the level: is its unit right?"),
+    (
+        "limit-far-off",
+        "A limit lies more than 8 standard deviations of a reading from all readings: is its unit right?",
+    ),
     ("limit-applies-to-other", "A limit is held against something other than what its basis sets it for."),
     ("limit-for-something-else", "A limit is held against something other than what its basis sets it for."),
     (

@@ -271,14 +271,19 @@ fn range_in_short(findings: &Findings, question: &QuestionPlan) -> String {
     };
     match (smallest, largest) {
         (Some(smallest), Some(largest)) if smallest.1 < largest.1 => {
-            format!("from {} to {}", said(smallest), said(largest))
+            format!("{}from {} to {}", label(smallest.2), said(smallest), said(largest))
         }
         (Some(all), _) => {
             let numbers = Numbers::of_series(&findings.plan, &all.0.name, None);
-            format!("{} for every series", numbers.number(all.1, all.2, all.3))
+            format!("{}{} for every series", label(all.2), numbers.number(all.1, all.2, all.3))
         }
         _ => NOTHING.to_string(),
     }
+}
+
+/// What a number without a unit is.
+fn label(meaning: Meaning) -> &'static str {
+    if meaning == Meaning::Chance { "probability " } else { "" }
 }
 
 /// The first item that none other beats.
@@ -376,7 +381,7 @@ fn verdict_and_figure(answer: &Answer, question: &QuestionPlan, numbers: &Number
 
 fn first_page_series(findings: &Findings) -> (Option<TableView>, Option<String>) {
     let all = findings.series.len();
-    let caption = "The series, with the verdict of each question that has a rule";
+    let caption = "The series, with the verdict of each question that has a rule and in brackets its figure";
     if all <= SERIES_ON_THE_FIRST_PAGE {
         return (series_table(findings, findings.series.iter(), caption, false).some(), None);
     }

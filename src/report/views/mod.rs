@@ -16,8 +16,8 @@ pub mod table;
 
 use super::{StampText, escape, text};
 use crate::checks::FLAG_BELOW;
+use crate::findings::Findings;
 use crate::findings::compared::Relation;
-use crate::findings::{Findings, many};
 use crate::plan::{AppliesTo, Detail, Status};
 use crate::quantity::Scale;
 use answers::AcrossView;
@@ -139,7 +139,7 @@ pub fn build(findings: &Findings, stamp: &StampText) -> (ReportView, Drawings) {
         id: review.id.clone(),
         period: review.period.to_string(),
         date: review.date.to_string(),
-        status: status(review.status),
+        status: review.status.word(),
         is_final: review.status == Status::Final,
         until: review.until.map(|until| until.to_string()),
         quantity: plan.quantity.name.clone(),
@@ -193,14 +193,6 @@ pub fn build(findings: &Findings, stamp: &StampText) -> (ReportView, Drawings) {
     (view, drawings)
 }
 
-fn status(status: Status) -> &'static str {
-    match status {
-        Status::Draft => "draft",
-        Status::Interim => "interim",
-        Status::Final => "final",
-    }
-}
-
 fn link(link: &crate::plan::Link) -> LinkView {
     LinkView { folder: link.written.clone(), stamp: link.stamp.clone(), reason: link.reason.clone() }
 }
@@ -222,7 +214,7 @@ fn many_examined(findings: &Findings) -> Option<String> {
         .series
         .iter()
         .flat_map(|series| &series.checks)
-        .filter(|check| check.p.is_some() && check.why.is_none())
+        .filter(|check| check.tested().is_some())
         .count();
     (examined > MANY_EXAMINED).then(|| {
         format!(
@@ -240,15 +232,19 @@ fn wrong_verdicts(findings: &Findings) -> Vec<String> {
     if findings.series.len() < 2 {
         return Vec::new();
     }
-    many::wrong_verdicts(findings)
-        .into_iter()
+    findings
+        .wrong_verdicts
+        .iter()
         .map(|wrong| {
             format!(
                 "{}: of {} {}, {} expected to be wrong by the probabilities printed.",
                 wrong.question,
                 text::count(wrong.given as u64),
                 if wrong.given == 1 { "verdict" } else { "verdicts" },
-                text::significant(wrong.expected_wrong, 2)
+                match wrong.expected_wrong {
+                    few if few < 0.001 => "fewer than 0.001".to_string(),
+                    expected => text::significant(expected, 2),
+                }
             )
         })
         .collect()
@@ -256,14 +252,14 @@ fn wrong_verdicts(findings: &Findings) -> Vec<String> {
 
 fn checks_over_series(findings: &Findings) -> Option<TableView> {
     let mut table = TableView::new(
-        "Each kind of check over all series",
+        "Each kind of test of an assumption over all series, with what chance alone makes",
         &[
             ("check", Column::Head),
             ("series", Column::Number),
             ("flags", Column::Number),
-            ("expected by chance", Column::Number),
+            ("flags by chance", Column::Number),
             ("p below 0.05", Column::Number),
-            ("expected by chance", Column::Number),
+            ("of these by chance", Column::Number),
             ("stand out at q = 0.05", Column::Text),
         ],
     );

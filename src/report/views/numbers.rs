@@ -167,16 +167,16 @@ impl<'a> Numbers<'a> {
             match (*name, item) {
                 ("estimate" | "lower" | "upper", _) => {}
                 ("chance", Item::Number(Ok(chance), _)) => {
-                    let mut said = self.chance(*chance, rule);
-                    if !parts.is_empty() {
-                        said = format!("probability {said}");
-                    }
+                    let mut said = format!("probability {}", self.chance(*chance, rule));
                     if in_words {
                         said.push_str(&format!(" ({})", text::chance_in_words(*chance)));
                     }
                     parts.push(said);
                 }
-                ("count", Item::Whole(Some(count))) => parts.push(text::count(*count)),
+                ("count", Item::Whole(Some(1))) => parts.push("1 reading".to_string()),
+                ("count", Item::Whole(Some(count))) => {
+                    parts.push(format!("{} readings", text::count(*count)))
+                }
                 ("chances", Item::Numbers(chances, _)) => parts.push(named_chances(chances, figures)),
                 (_, Item::Number(Ok(number), meaning)) => {
                     let said = self.number(*number, *meaning, around.uncertainty());
