@@ -19,7 +19,7 @@ fn main() {
     }
     println!("{:28} {:>8} {:>12} {:>12}", "posterior", "pieces", "solve", "5 questions");
     for (name, model, readings) in cases() {
-        let pieces = solve(&model, &readings, Basis::Both).unwrap().pieces.len();
+        let pieces = solve(&model, &readings, Basis::Both).unwrap().pieces().unwrap().len();
         let solving = best(|| {
             black_box(solve(&model, &readings, Basis::Both).unwrap());
         });

@@ -149,10 +149,9 @@ fn of_posterior(subject: &Subject<'_>, plain: &[f64]) -> Vec<Check> {
     let spread_is_unknown = !matches!(subject.model.within, Within::Known(_) | Within::None);
     if let Evidence::Sums { n, ss: Some(ss), .. } = subject.readings
         && spread_is_unknown
-        && !posterior.pieces.is_empty()
+        && let Ok(pieces) = posterior.pieces()
     {
-        let nodes: Vec<predictive_spread::SdNode> = posterior
-            .pieces
+        let nodes: Vec<predictive_spread::SdNode> = pieces
             .iter()
             .map(|piece| predictive_spread::SdNode { weight: piece.weight, sd: piece.reading_sd })
             .collect();
@@ -160,7 +159,8 @@ fn of_posterior(subject: &Subject<'_>, plain: &[f64]) -> Vec<Check> {
         checks.push(predictive_spread::check(*n as usize, *ss, &nodes, alone));
     }
     let pieces: Vec<predictive_extremes::Piece> = posterior
-        .pieces
+        .pieces()
+        .unwrap_or_default()
         .iter()
         .map(|piece| predictive_extremes::Piece {
             weight: piece.weight,

@@ -4,6 +4,7 @@
 use super::build::Part;
 use super::grid;
 use super::law::Law;
+use super::marginal::Weighted;
 use super::marked::{self, Given};
 use super::plane::{BetweenSd, Level, Node};
 use super::solve::NEGLIGIBLE;
@@ -88,7 +89,7 @@ impl Posterior {
             _ => None,
         };
         let (own, _) = told(readings, &units, known)?;
-        for (part, _, _) in &self.inner.parts {
+        for part in &self.inner.parts {
             if self.held(part, period).is_some() && part.plane.moved.is_some() {
                 return Err(Absent::because(
                     "the earlier level is part of the history, which a moved prior no longer agrees with",
@@ -100,7 +101,7 @@ impl Posterior {
             return self.change_marked(period, &own, bound);
         }
         // Outside the history the earlier readings stand on this model's σ, which may be unknown altogether.
-        let stands_alone = self.inner.parts.iter().any(|(part, ..)| self.held(part, period).is_none());
+        let stands_alone = self.inner.parts.iter().any(|part| self.held(part, period).is_none());
         if let (Some(reason), Told::Counted { .. } | Told::Own(_), true) =
             (&self.inner.no_sd, &own, stands_alone)
         {
@@ -115,7 +116,7 @@ impl Posterior {
         let units = self.inner.units;
         let bound = self.bound(When::LongRun).min(self.bound(When::This));
         if self.inner.is_marked() {
-            if self.inner.parts.iter().any(|p| p.0.plane.marks.is_empty()) {
+            if self.inner.parts.iter().any(|p| p.plane.marks.is_empty()) {
                 return Err(not_served());
             }
             return marked::law(&self.inner, true, bound, "the change", &|_, node| Given {
@@ -139,9 +140,10 @@ impl Posterior {
     fn over_nodes(&self, bound: f64, at: &AtNode<'_>) -> Result<Law, Absent> {
         const WHAT: &str = "the change";
         let units = self.inner.units;
+        let weighted = self.inner.weighted()?;
         let law = |factor: f64, offset: f64| -> Result<Law, Absent> {
             let mut parts = Vec::new();
-            for (part, weighed, share) in &self.inner.parts {
+            for Weighted { part, weighed, share } in &weighted {
                 let fresh;
                 let nodes = if factor == 1.0 || weighed.frame.dims == 0 {
                     &weighed.nodes
@@ -168,13 +170,13 @@ impl Posterior {
             }
             mixture(parts, bound, WHAT)
         };
-        settled_about_zero(self.inner.parts.iter().all(|(_, weighed, _)| weighed.frame.dims == 0), &law)
+        settled_about_zero(weighted.iter().all(|w| w.weighed.frame.dims == 0), &law)
     }
 
     /// A change to a period with marked readings, or from a prior whose periods hold them.
     fn change_marked(&self, period: &Period, own: &Told, bound: f64) -> Result<Law, Absent> {
         let units = self.inner.units;
-        for (part, _, _) in &self.inner.parts {
+        for part in &self.inner.parts {
             let held = self.held(part, period);
             let joint = !matches!(
                 part.plane.level,

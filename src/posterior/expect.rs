@@ -122,12 +122,12 @@ impl Posterior {
         if let Some(reason) = &self.inner.no_sd {
             return Err(reason.clone());
         }
-        if when != When::This && self.inner.marked_level.is_some() {
+        if when != When::This && self.inner.nodes()?.marked_level.is_some() {
             return Err(Absent::because(
                 "with marked readings in this period and in earlier ones, counts and shares of another period are not served",
             ));
         }
-        let groups = self.by_sigma(when);
+        let groups = self.by_sigma(when)?;
         let mut values = vec![0.0; how_many];
         let mut fixed = vec![0.0; how_many];
         for group in &groups {
@@ -161,23 +161,24 @@ impl Posterior {
         Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
     }
 
-    fn by_sigma(&self, when: When) -> Vec<Group> {
+    fn by_sigma(&self, when: When) -> Result<Vec<Group>, Absent> {
+        let pieces = self.pieces()?;
         let mut order: Vec<usize> =
-            (0..self.pieces.len()).filter(|index| self.pieces[*index].weight > NEGLIGIBLE).collect();
+            (0..pieces.len()).filter(|index| pieces[*index].weight > NEGLIGIBLE).collect();
         // A stable sort: pieces with one σ stay in their order.
-        order.sort_by(|a, b| self.pieces[*a].reading_sd.total_cmp(&self.pieces[*b].reading_sd));
+        order.sort_by(|a, b| pieces[*a].reading_sd.total_cmp(&pieces[*b].reading_sd));
         let mut groups = Vec::new();
-        for same in order.chunk_by(|a, b| self.pieces[*a].reading_sd == self.pieces[*b].reading_sd) {
-            let pieces: Vec<(f64, f64, f64)> = same
+        for same in order.chunk_by(|a, b| pieces[*a].reading_sd == pieces[*b].reading_sd) {
+            let level: Vec<(f64, f64, f64)> = same
                 .iter()
                 .map(|index| {
-                    let piece = &self.pieces[*index];
+                    let piece = &pieces[*index];
                     let (mean, var) = piece.level(when);
                     (piece.weight, mean, var)
                 })
                 .collect();
-            groups.push(Group::new(self.pieces[same[0]].reading_sd, &pieces));
+            groups.push(Group::new(pieces[same[0]].reading_sd, &level));
         }
-        groups
+        Ok(groups)
     }
 }

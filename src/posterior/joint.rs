@@ -13,7 +13,7 @@ use super::solve::solve;
 use super::told::{SdSums, Told, is_marked, told};
 use super::units::Units;
 use super::weighing::{Weighed, floor, weigh};
-use super::{Basis, When, mixture};
+use super::{Basis, Piece, When, mixture};
 use crate::data::evidence::{Evidence, Seen, Single};
 use crate::math::fm;
 use crate::prior::{LevelPrior, Model, Within};
@@ -110,13 +110,14 @@ pub fn difference(
             let (a, b) = (unbiased(a)?, unbiased(b)?);
             let bound = a.inner.bounds.level.min(b.inner.bounds.level);
             // Pairs of pieces keep the far tails, which a density kept on panels does not.
-            if a.pieces.len() * b.pieces.len() > PAIRS_CAP || a.inner.is_marked() || b.inner.is_marked() {
+            let (left, right) = (a.pieces()?, b.pieces()?);
+            if left.len() * right.len() > PAIRS_CAP || a.inner.is_marked() || b.inner.is_marked() {
                 return convolved(&a.level(When::This)?, &b.level(When::This)?);
             }
-            let parts = |p: &super::Posterior| -> Parts {
-                p.pieces.iter().map(|k| (k.weight, k.level_apart, k.level_var)).collect()
+            let parts = |pieces: &[Piece]| -> Parts {
+                pieces.iter().map(|k| (k.weight, k.level_apart, k.level_var)).collect()
             };
-            let law = mixture(pairs(&parts(&a), &parts(&b), 1.0)?, bound, WHAT)?;
+            let law = mixture(pairs(&parts(left), &parts(right), 1.0)?, bound, WHAT)?;
             Ok(law.moved(a.origin() - b.origin()))
         }
         Sharing::Parameters { sd, bias } => {

@@ -8,6 +8,7 @@ use super::build::{BiasOf, Part};
 use super::grid::{self, MOST, Place};
 use super::law::Law;
 use super::legendre::{Curve, Panels};
+use super::marginal::Weighted;
 use super::moments::moment;
 use super::plane::{Coordinate, Level, Node};
 use super::shapes::OnPanels;
@@ -132,7 +133,7 @@ pub(super) fn law(
     let measure = |lines: &[Line<'_>]| -> Vec<f64> {
         places.iter().map(|t| lines.iter().map(|line| line.of_x(*t)).sum::<f64>()).collect()
     };
-    if inner.parts.iter().any(|p| p.1.frame.dims > 1) {
+    if inner.weighted()?.iter().any(|w| w.weighed.frame.dims > 1) {
         let mut before = measure(&lines);
         let mut factor = 1.0;
         let mut settled = false;
@@ -174,7 +175,7 @@ fn all_lines<'a>(
     at: &AtNode<'_>,
 ) -> Result<Vec<Line<'a>>, Absent> {
     let mut lines = Vec::new();
-    for (part, weighed, share) in &inner.parts {
+    for Weighted { part, weighed, share } in inner.weighted()? {
         let Some(along) = along(part, of_level) else {
             return Err(Absent::because(
                 "a mixture of priors with and without marked readings in their periods is not served",
@@ -182,12 +183,12 @@ fn all_lines<'a>(
         };
         let step = factor * weighed.factor * weighed.frame.width[along.0];
         if factor == 1.0 {
-            lines.extend(lines_of(part, &weighed.nodes, *share, along, step, at, None));
+            lines.extend(lines_of(part, &weighed.nodes, share, along, step, at, None));
         } else {
             let f = part.plane.nodes();
             let nodes =
                 grid::sweep(&f, &weighed.frame, factor * weighed.factor, 0.29, floor(weighed.frame.dims))?;
-            lines.extend(lines_of(part, &nodes, *share, along, step, at, None));
+            lines.extend(lines_of(part, &nodes, share, along, step, at, None));
         }
     }
     Ok(lines)

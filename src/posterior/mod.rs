@@ -90,15 +90,24 @@ pub struct Posterior {
     pub model: Model,
     pub readings: Evidence,
     pub basis: Basis,
-    /// Given each node of (σ, τ), the level as measured; with marked readings also each node of the level,
-    /// with variance 0.
-    pub pieces: Vec<Piece>,
     /// Largest relative error reached by the quadratures, 0 for closed forms.
     pub quadrature_error: f64,
     inner: Arc<solve::Inner>,
 }
 
 impl Posterior {
+    /// Given each node of (σ, τ), the level as measured; with marked readings also each node of the level,
+    /// with variance 0.
+    pub fn pieces(&self) -> Result<&[Piece], Absent> {
+        Ok(&self.inner.nodes()?.pieces)
+    }
+
+    /// The level's normal where it is one, and σ is known.
+    pub fn one_piece(&self) -> Option<&Piece> {
+        let alone = self.inner.parts.len() == 1 && self.inner.parts.iter().all(|p| p.plane.is_one_piece());
+        if alone { self.pieces().ok()?.first() } else { None }
+    }
+
     /// A place near the level, from which pieces and laws measure.
     pub fn origin(&self) -> f64 {
         self.inner.units.shift
@@ -134,7 +143,8 @@ impl Posterior {
             });
             mixture(parts.collect(), bound, self.name(when)).map(|law| law.moved(self.origin()))
         };
-        let as_held = law(&self.pieces, &self.inner.true_levels)?;
+        let nodes = self.inner.nodes()?;
+        let as_held = law(&nodes.pieces, &nodes.true_levels)?;
         if moves_with_sd && self.has_unknown_sd() {
             self.settled(as_held, 1.0, &|sigma| (shift(sigma), 0.0), &law)
         } else {
@@ -167,7 +177,7 @@ impl Posterior {
         shift_and_variance: &dyn Fn(f64) -> (f64, f64),
     ) -> Result<Law, Absent> {
         let uses_sd = {
-            let size = self.pieces.iter().map(|p| p.reading_sd).find(|s| *s > 0.0).unwrap_or(1.0);
+            let size = self.pieces()?.iter().map(|p| p.reading_sd).find(|s| *s > 0.0).unwrap_or(1.0);
             shift_and_variance(size) != shift_and_variance(2.0 * size)
         };
         if uses_sd && let Some(reason) = &self.inner.no_sd {
@@ -186,7 +196,7 @@ impl Posterior {
         }
         if self.inner.is_marked() {
             let what = if uses_sd { "a reading" } else { self.name(when) };
-            if let (When::This, Some(level)) = (when, &self.inner.marked_level) {
+            if let (When::This, Some(level)) = (when, &self.inner.nodes()?.marked_level) {
                 return self
                     .inner
                     .of_marked_level(level, factor, shift_and_variance, bound, what)
@@ -207,7 +217,7 @@ impl Posterior {
             let what = if uses_sd { "a reading" } else { self.name(when) };
             mixture(parts.collect(), bound, what).map(|law| law.moved(self.origin()))
         };
-        let as_held = law(&self.pieces)?;
+        let as_held = law(self.pieces()?)?;
         let moves_with_sd = shift_and_variance(1.0).0 != shift_and_variance(2.0).0;
         if moves_with_sd && self.has_unknown_sd() {
             self.settled(as_held, factor, shift_and_variance, &|pieces, _| law(pieces))
@@ -246,9 +256,9 @@ impl Posterior {
     /// Of a mixture prior: what each part weighs, the readings taken in where the basis has them; empty
     /// for any other prior.
     pub fn part_weights(&self) -> Vec<f64> {
-        match self.inner.parts.len() {
-            0 | 1 => Vec::new(),
-            _ => self.inner.parts.iter().map(|(_, _, share)| *share).collect(),
+        match self.inner.nodes() {
+            Ok(nodes) if nodes.weighed.len() > 1 => nodes.weighed.iter().map(|(_, share)| *share).collect(),
+            _ => Vec::new(),
         }
     }
 
@@ -257,11 +267,12 @@ impl Posterior {
         match self.basis {
             Basis::PriorOnly => Ok(1.0),
             Basis::ReadingsOnly => Ok(0.0),
-            Basis::Both if self.inner.parts.iter().any(|p| !p.0.plane.marks.is_empty()) => {
+            Basis::Both if self.inner.parts.iter().any(|p| !p.plane.marks.is_empty()) => {
                 Err(Absent::because("with marked readings the prior has no one weight"))
             }
             Basis::Both => {
-                Ok(self.pieces.iter().zip(&self.inner.prior_shares).map(|(p, b)| p.weight * b).sum())
+                let nodes = self.inner.nodes()?;
+                Ok(nodes.pieces.iter().zip(&nodes.prior_shares).map(|(p, b)| p.weight * b).sum())
             }
         }
     }
@@ -283,7 +294,7 @@ impl Posterior {
     /// The true level with marked readings and a bias.
     fn level_marked(&self, when: When, shift: &dyn Fn(f64) -> f64) -> Result<Law, Absent> {
         let bound = self.bound(when);
-        if let (When::This, Some(level)) = (when, &self.inner.marked_level) {
+        if let (When::This, Some(level)) = (when, &self.inner.nodes()?.marked_level) {
             // A prior made of periods carries the bias: it is added.
             let bias2 = self.inner.bias_sd * self.inner.bias_sd;
             return self

@@ -185,6 +185,11 @@ impl Plane {
         !self.marks.is_empty() || matches!(self.level, Level::AboutMeanMarked(_))
     }
 
+    /// Whether it is one node, with the level's normal piece there.
+    pub fn is_one_piece(&self) -> bool {
+        self.coordinates().is_empty()
+    }
+
     /// A place to begin the search for the highest weight.
     pub fn start(&self) -> Place {
         let mut place = [0.0; MOST];

@@ -137,7 +137,7 @@ fn a_mixture_prior_and_data_in_conflict() {
     let model = model(Within::Known(1.2), LevelPrior::Mixture(parts));
     let posterior =
         solve(&model, &Evidence::Sums { n: 1, mean: 56.0, ss: None, rest: 0.0 }, Basis::Both).unwrap();
-    near(posterior.pieces[0].weight, 0.01889883500173906, 1e-12);
+    near(posterior.pieces().unwrap()[0].weight, 0.01889883500173906, 1e-12);
     let level = posterior.level(When::This).unwrap();
     near(level.mean().unwrap(), 55.84951571345135, 1e-13);
     near(level.quantile(0.025).unwrap(), 53.13665179531665, 1e-12);
@@ -156,7 +156,7 @@ fn pieces_agree_with_the_closed_form() {
         let posterior = solve(&model(within, level), &readings, Basis::Both).unwrap();
         for share in [0.0, 1.0] {
             let closed = posterior.affine(When::This, 1.0, &|s| (0.0, share * s * s)).unwrap();
-            let parts = posterior.pieces.iter();
+            let parts = posterior.pieces().unwrap().iter();
             let parts =
                 parts.map(|p| (p.weight, p.level_mean, p.level_var + share * p.reading_sd * p.reading_sd));
             let pieces = mixture(parts.collect(), 9.0, "").unwrap();
@@ -173,7 +173,8 @@ fn pieces_agree_with_the_closed_form() {
             }
         }
         let closed = posterior.within_sd().unwrap();
-        let panels = marginal::panels(&posterior.inner.weighted(), plane::Coordinate::Sd, 4.0).unwrap();
+        let panels =
+            marginal::panels(&posterior.inner.weighted().unwrap(), plane::Coordinate::Sd, 4.0).unwrap();
         let scale = posterior.inner.units.scale;
         for p in [0.001, 0.025, 0.5, 0.9, 0.999] {
             near(scale * fm::exp(panels.quantile(p).unwrap()), closed.quantile(p).unwrap(), 1e-10);

@@ -45,8 +45,8 @@ pub fn ranking(
                 model.bias_sd = 0.0;
                 let posterior = solve(&model, member.readings, basis)?;
                 let origin = *origin.get_or_insert(posterior.origin());
-                levels.push(match &posterior.pieces[..] {
-                    [piece] if piece.level_var > 0.0 => {
+                levels.push(match posterior.one_piece() {
+                    Some(piece) if piece.level_var > 0.0 => {
                         let mean = (posterior.origin() - origin) + piece.level_apart;
                         Level::Normal { mean, sd: piece.level_var.sqrt() }
                     }

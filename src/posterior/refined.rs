@@ -3,6 +3,7 @@
 
 use super::grid::{self, MOST, Place};
 use super::law::Law;
+use super::marginal::Weighted;
 use super::plane::{Coordinate, Node, Plane, Sd};
 use super::solve::TrueLevel;
 use super::weighing::floor;
@@ -39,7 +40,7 @@ type LawOf<'a> = dyn Fn(&[Piece], &[TrueLevel]) -> Result<Law, Absent> + 'a;
 impl Posterior {
     /// Whether σ is unknown in some part, so that sums over it depend on the grid.
     pub(super) fn has_unknown_sd(&self) -> bool {
-        self.inner.parts.iter().any(|(part, _, _)| matches!(part.plane.sd, Sd::Unknown(_)))
+        self.inner.parts.iter().any(|part| matches!(part.plane.sd, Sd::Unknown(_)))
     }
 
     /// A law whose centre moves with σ by `shift`, its variance being `factor`² times the level's and more: on
@@ -90,14 +91,17 @@ impl Posterior {
     /// σ is known, else those of a grid on which the law of θ + z σ has settled.
     pub fn on_pieces_for<R>(&self, z: f64, g: impl FnOnce(&[Piece]) -> R) -> Result<R, Absent> {
         if !self.has_unknown_sd() {
-            return Ok(g(&self.pieces));
+            return Ok(g(self.pieces()?));
         }
         let law = |pieces: &[Piece], _: &[TrueLevel]| {
             let parts =
                 pieces.iter().map(|p| (p.weight, p.level_apart + z * p.reading_sd, p.level_var)).collect();
             super::mixture(parts, self.inner.bounds.level.min(self.inner.bounds.sd), "a percentile")
         };
-        let first = law(&self.pieces, &self.inner.true_levels)?;
+        let first = {
+            let nodes = self.inner.nodes()?;
+            law(&nodes.pieces, &nodes.true_levels)?
+        };
         self.settled_on(first, 1.0, &|sigma| (z * sigma, 0.0), &law).map(|(_, grid)| g(&grid.pieces))
     }
 
@@ -113,7 +117,7 @@ impl Posterior {
         let mut made = Finer::default();
         let units = &self.inner.units;
         let bias_sd = units.sd_in(self.inner.bias_sd);
-        for (part, weighed, share) in &self.inner.parts {
+        for Weighted { part, weighed, share } in self.inner.weighted()? {
             let f = part.plane.nodes();
             let frame = &weighed.frame;
             let last = frame.dims.saturating_sub(1);
@@ -167,7 +171,7 @@ impl Posterior {
         let mut factor = 1.0;
         for _ in 0..ROUNDS {
             let (mut value, mut size) = (0.0, 0.0);
-            for (part, weighed, share) in &self.inner.parts {
+            for Weighted { part, weighed, share } in self.inner.weighted()? {
                 let (sum, absolute) = self.sum_of_part(&part.plane, weighed, kink, g, factor)?;
                 value += share * sum;
                 size += share * absolute;

@@ -21,17 +21,15 @@ use std::sync::{Arc, OnceLock};
 /// Pieces lighter than this share of the whole are left out.
 pub(super) const NEGLIGIBLE: f64 = 1e-31;
 
-/// What a posterior keeps beside its pieces.
+/// What a posterior is made of, and what has been made of it so far.
 #[derive(Debug)]
 pub(super) struct Inner {
-    pub parts: Vec<(Part, Weighed, f64)>,
+    pub parts: Vec<Part>,
     pub units: Units,
     pub bounds: Bounds,
     pub bias_sd: f64,
     /// The closed form, where there is one.
     pub conjugate: Option<Conjugate>,
-    /// The level where readings of this period and of earlier ones are marked.
-    pub marked_level: Option<MarkedLevel>,
     /// The laws of the levels themselves, made when first asked for.
     pub levels: [OnceLock<Result<Law, Absent>>; 3],
     /// And those of the within and the between sd.
@@ -40,10 +38,22 @@ pub(super) struct Inner {
     pub has_long_run: bool,
     /// Why readings cannot be foretold.
     pub no_sd: Option<Absent>,
+    nodes: OnceLock<Result<Nodes, Absent>>,
+}
+
+/// The planes of all parts on their grids.
+#[derive(Debug)]
+pub(super) struct Nodes {
+    /// Of every part its nodes and its share of the whole.
+    pub weighed: Vec<(Weighed, f64)>,
+    pub pieces: Vec<Piece>,
+    /// The level where readings of this period and of earlier ones are marked.
+    pub marked_level: Option<MarkedLevel>,
     /// B of every piece.
     pub prior_shares: Vec<f64>,
     /// With a bias: the true levels of every piece.
     pub true_levels: Vec<TrueLevel>,
+    pub error: f64,
 }
 
 /// (mean less the origin, variance) of the true levels and of the true long-run mean.
@@ -61,88 +71,100 @@ pub(super) struct TrueLevel {
 pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posterior, Absent> {
     let built = build(model, readings, basis)?;
     let weighed = weigh_parts(model, readings, &built, basis)?;
-    let units = built.units;
-    let mut pieces = Vec::new();
-    let mut prior_shares = Vec::new();
-    let mut true_levels = Vec::new();
-    let mut error: f64 = 0.0;
-    let mut of_marked_level = None;
-    for ((part, weighed), share) in built.parts.iter().zip(&weighed.0).zip(&weighed.1) {
-        error = error.max(weighed.error);
-        if part.plane.is_marked() && !part.plane.marks.is_empty() && !part.plane.has_level_coordinate() {
-            if built.parts.len() > 1 {
-                return Err(Absent::because(
-                    "a mixture of priors with and without marked readings in their periods is not served",
-                ));
+    let nodes = Nodes::new(&built.parts, &built.units, built.bias_sd, weighed)?;
+    let bounds = built.parts.iter().map(|p| p.bounds).reduce(Bounds::both);
+    let bounds = bounds.ok_or_else(|| Absent::failed("a posterior without parts"))?;
+    let models_periods =
+        built.parts.iter().all(|p| p.periods) && !matches!(model.level, LevelPrior::Peers(_));
+    let conjugate = match &built.parts[..] {
+        [part] => Conjugate::of(part, &built.units),
+        _ => None,
+    };
+    let quadrature_error = nodes.error;
+    let inner = Inner {
+        conjugate,
+        levels: Default::default(),
+        spreads: Default::default(),
+        has_next: models_periods,
+        has_long_run: models_periods && !built.parts.iter().any(|p| p.plane.is_walk()),
+        no_sd: no_sd(&built),
+        bounds,
+        units: built.units,
+        bias_sd: built.units.sd_out(built.bias_sd),
+        parts: built.parts,
+        nodes: OnceLock::from(Ok(nodes)),
+    };
+    Ok(Posterior {
+        model: model.clone(),
+        readings: readings.clone(),
+        basis,
+        quadrature_error,
+        inner: Arc::new(inner),
+    })
+}
+
+impl Nodes {
+    /// All pieces of the parts, from their nodes and their shares of the whole; levels in outer units.
+    fn new(
+        parts: &[Part],
+        units: &Units,
+        bias_sd: f64,
+        weighed: Vec<(Weighed, f64)>,
+    ) -> Result<Nodes, Absent> {
+        let mut nodes = Nodes {
+            weighed: Vec::new(),
+            pieces: Vec::new(),
+            marked_level: None,
+            prior_shares: Vec::new(),
+            true_levels: Vec::new(),
+            error: 0.0,
+        };
+        for (part, (weighed, share)) in parts.iter().zip(&weighed) {
+            nodes.error = nodes.error.max(weighed.error);
+            if part.plane.is_marked() && !part.plane.marks.is_empty() && !part.plane.has_level_coordinate() {
+                if parts.len() > 1 {
+                    return Err(Absent::because(
+                        "a mixture of priors with and without marked readings in their periods is not served",
+                    ));
+                }
+                nodes.add_marked_level(marked_level::level(part, weighed)?, units);
+                continue;
             }
-            let level = marked_level::level(part, weighed)?;
-            pieces.extend(level.points().filter(|p| p.1 >= NEGLIGIBLE).map(|(theta, weight, sigma)| Piece {
+            let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
+            let sum: f64 = weighed.nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
+            for node in &weighed.nodes {
+                let weight = share * fm::exp(node.ln_weight - top) / sum;
+                if weight < NEGLIGIBLE {
+                    continue;
+                }
+                nodes.pieces.push(piece(node, weight, units));
+                nodes.prior_shares.push(prior_share(node, &part.plane));
+                if bias_sd > 0.0 {
+                    nodes.true_levels.push(true_level(node, part, bias_sd, units));
+                }
+            }
+        }
+        if nodes.pieces.is_empty() {
+            return Err(Absent::failed("the posterior has no piece of any weight"));
+        }
+        nodes.weighed = weighed;
+        Ok(nodes)
+    }
+
+    fn add_marked_level(&mut self, level: MarkedLevel, units: &Units) {
+        self.pieces.extend(level.points().filter(|p| p.1 >= NEGLIGIBLE).map(|(theta, weight, sigma)| {
+            Piece {
                 weight,
                 level_mean: units.value_out(theta),
                 level_apart: units.sd_out(theta),
                 level_var: 0.0,
                 reading_sd: units.sd_out(sigma),
                 periods: None,
-            }));
-            prior_shares.resize(pieces.len(), 1.0);
-            of_marked_level = Some(level);
-            continue;
-        }
-        let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
-        let sum: f64 = weighed.nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
-        for node in &weighed.nodes {
-            let weight = share * fm::exp(node.ln_weight - top) / sum;
-            if weight < NEGLIGIBLE {
-                continue;
             }
-            pieces.push(piece(node, weight, &units));
-            prior_shares.push(prior_share(node, &part.plane));
-            if built.bias_sd > 0.0 {
-                true_levels.push(true_level(node, part, built.bias_sd, &units));
-            }
-        }
+        }));
+        self.prior_shares.resize(self.pieces.len(), 1.0);
+        self.marked_level = Some(level);
     }
-    if pieces.is_empty() {
-        return Err(Absent::failed("the posterior has no piece of any weight"));
-    }
-    let bounds = built.parts.iter().map(|p| p.bounds).reduce(Bounds::both);
-    let bounds = bounds.ok_or_else(|| Absent::failed("a posterior without parts"))?;
-    let models_periods =
-        built.parts.iter().all(|p| p.periods) && !matches!(model.level, LevelPrior::Peers(_));
-    let no_sd = no_sd(&built);
-    let conjugate = match &built.parts[..] {
-        [part] => Conjugate::of(part, &units),
-        _ => None,
-    };
-    let inner = Inner {
-        conjugate,
-        marked_level: of_marked_level,
-        levels: Default::default(),
-        spreads: Default::default(),
-        has_next: models_periods,
-        has_long_run: models_periods && !built.parts.iter().any(|p| p.plane.is_walk()),
-        no_sd,
-        bounds,
-        units,
-        bias_sd: units.sd_out(built.bias_sd),
-        prior_shares,
-        true_levels,
-        parts: built
-            .parts
-            .into_iter()
-            .zip(weighed.0)
-            .zip(weighed.1)
-            .map(|((part, weighed), share)| (part, weighed, share))
-            .collect(),
-    };
-    Ok(Posterior {
-        model: model.clone(),
-        readings: readings.clone(),
-        basis,
-        pieces,
-        quadrature_error: error,
-        inner: Arc::new(inner),
-    })
 }
 
 /// Every part's nodes, and the parts' shares: weight before the readings times marginal likelihood.
@@ -151,13 +173,13 @@ fn weigh_parts(
     readings: &Evidence,
     built: &Built,
     basis: Basis,
-) -> Result<(Vec<Weighed>, Vec<f64>), Absent> {
+) -> Result<Vec<(Weighed, f64)>, Absent> {
     let mut all = Vec::with_capacity(built.parts.len());
     for part in &built.parts {
         all.push(weigh(&part.plane)?);
     }
     if built.parts.len() == 1 {
-        return Ok((all, vec![1.0]));
+        return Ok(all.into_iter().map(|weighed| (weighed, 1.0)).collect());
     }
     let mut ln_shares = Vec::with_capacity(all.len());
     let before = if basis == Basis::Both { Some(build(model, readings, Basis::PriorOnly)?) } else { None };
@@ -172,7 +194,7 @@ fn weigh_parts(
         ln_shares.push(ln_share);
     }
     let whole = fm::ln_sum_exp(&ln_shares);
-    Ok((all, ln_shares.iter().map(|s| fm::exp(s - whole)).collect()))
+    Ok(all.into_iter().zip(ln_shares.iter().map(|s| fm::exp(s - whole))).collect())
 }
 
 pub(super) fn piece(node: &Node, weight: f64, units: &Units) -> Piece {
@@ -240,11 +262,25 @@ fn no_sd(built: &Built) -> Option<Absent> {
 impl Inner {
     /// Whether some part is kept as densities along lines.
     pub fn is_marked(&self) -> bool {
-        self.parts.iter().any(|p| p.0.plane.is_marked())
+        self.parts.iter().any(|p| p.plane.is_marked())
     }
 
-    pub fn weighted(&self) -> Vec<Weighted<'_>> {
-        self.parts.iter().map(|(part, weighed, share)| Weighted { part, weighed, share: *share }).collect()
+    /// The nodes of all planes, made when first asked for.
+    pub fn nodes(&self) -> Result<&Nodes, Absent> {
+        let made = self.nodes.get_or_init(|| {
+            let [part] = &self.parts[..] else {
+                return Err(Absent::failed("a mixture of priors without its nodes"));
+            };
+            let bias_sd = self.units.sd_in(self.bias_sd);
+            Nodes::new(&self.parts, &self.units, bias_sd, vec![(weigh(&part.plane)?, 1.0)])
+        });
+        made.as_ref().map_err(Absent::clone)
+    }
+
+    pub fn weighted(&self) -> Result<Vec<Weighted<'_>>, Absent> {
+        let weighed = &self.nodes()?.weighed;
+        let of = self.parts.iter().zip(weighed);
+        Ok(of.map(|(part, (weighed, share))| Weighted { part, weighed, share: *share }).collect())
     }
 
     pub fn within_sd(&self) -> Result<Law, Absent> {
@@ -259,24 +295,24 @@ impl Inner {
         if let Some(reason) = &self.no_sd {
             return Err(reason.clone());
         }
-        if self.parts.iter().any(|p| matches!(p.0.plane.sd, Sd::Fixed(_))) {
+        if self.parts.iter().any(|p| matches!(p.plane.sd, Sd::Fixed(_))) {
             return Err(Absent::because("the within sd is taken as known"));
         }
         if let Some(conjugate) = &self.conjugate {
             return Ok(conjugate.within_sd(self.bounds.sd));
         }
-        let panels = marginal::panels(&self.weighted(), Coordinate::Sd, self.bounds.sd)?;
+        let panels = marginal::panels(&self.weighted()?, Coordinate::Sd, self.bounds.sd)?;
         self.spread(panels, self.bounds.sd, "the within sd")
     }
 
     fn between_sd_anew(&self) -> Result<Law, Absent> {
-        if self.parts.iter().all(|p| matches!(p.0.plane.between, BetweenSd::Fixed(_))) {
+        if self.parts.iter().all(|p| matches!(p.plane.between, BetweenSd::Fixed(_))) {
             return Err(Absent::because("the between sd is taken as known, or is no part of the prior"));
         }
-        if self.parts.iter().any(|p| matches!(p.0.plane.between, BetweenSd::Fixed(_))) {
+        if self.parts.iter().any(|p| matches!(p.plane.between, BetweenSd::Fixed(_))) {
             return Err(Absent::because("not every part of the prior has an unknown between sd"));
         }
-        let panels = marginal::panels(&self.weighted(), Coordinate::Between, self.bounds.between)?;
+        let panels = marginal::panels(&self.weighted()?, Coordinate::Between, self.bounds.between)?;
         self.spread(panels, self.bounds.between, "the between sd")
     }
 

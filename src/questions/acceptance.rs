@@ -61,7 +61,7 @@ impl<'a> World<'a> {
             return Err(Absent::because("a rule on a count does not depend on the readings' mean"));
         }
         let mut mean_var = 0.0;
-        for piece in &posterior.pieces {
+        for piece in posterior.pieces()? {
             let Some((_, var)) = moved::mean_given(&posterior.readings, piece.reading_sd) else {
                 return Err(Absent::because("the readings say more of the level than their mean does"));
             };
@@ -381,9 +381,8 @@ fn digits(value: f64) -> String {
 impl World<'_> {
     /// One value for σ, where one stands for it.
     pub fn reading_sd(&self) -> f64 {
-        match &self.subject.posterior {
-            Ok(posterior) => posterior.pieces.iter().map(|piece| piece.weight * piece.reading_sd).sum(),
-            Err(_) => 0.0,
-        }
+        let Ok(posterior) = &self.subject.posterior else { return 0.0 };
+        let pieces = posterior.pieces().unwrap_or_default();
+        pieces.iter().map(|piece| piece.weight * piece.reading_sd).sum()
     }
 }

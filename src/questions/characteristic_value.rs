@@ -87,7 +87,7 @@ impl Question for CharacteristicValue {
         };
         let mut steps = steps::level(subject, When::This);
         let own = own.unwrap_or(0.0);
-        if let ([piece], Some(z)) = (posterior.pieces.as_slice(), z_of_percent(self.percentile)) {
+        if let (Some(piece), Some(z)) = (posterior.one_piece(), z_of_percent(self.percentile)) {
             let sd = (piece.level_var + piece.reading_sd * piece.reading_sd + own * own).sqrt();
             let put_in = [("v", piece.level_var), ("σ", piece.reading_sd), ("u", own)];
             steps.push(Step::new(

@@ -72,7 +72,7 @@ impl Question for LevelInterval {
     fn working(&self, subject: &Subject<'_>) -> Vec<Step> {
         let Ok(posterior) = &subject.posterior else { return Vec::new() };
         let mut steps = steps::level(subject, self.when);
-        if let [piece] = posterior.pieces.as_slice()
+        if let Some(piece) = posterior.one_piece()
             && self.mean == Mean::Level
             && posterior.model.bias_sd == 0.0
             && self.interval != Interval::Shortest

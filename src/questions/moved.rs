@@ -137,11 +137,12 @@ impl Movable {
         let posterior: &Posterior = subject.posterior.clone()?;
         let mean = plain_mean(&posterior.readings)?;
         let not_so = || Absent::because("the chance does not move with the readings' mean in a simple way");
-        if posterior.basis != Basis::Both || posterior.pieces.is_empty() {
+        if posterior.basis != Basis::Both {
             return Err(not_so());
         }
-        let mut parts = Vec::with_capacity(posterior.pieces.len());
-        for piece in &posterior.pieces {
+        let pieces = posterior.pieces()?;
+        let mut parts = Vec::with_capacity(pieces.len());
+        for piece in pieces {
             let linear = question.linear(subject, piece.reading_sd).ok_or_else(not_so)?;
             let (readings_mean, mean_var) =
                 mean_given(&posterior.readings, piece.reading_sd).ok_or_else(not_so)?;

@@ -178,7 +178,7 @@ impl Question for Percentile {
             &[("p in %", self.percentile)],
             self.z,
         ));
-        if let [piece] = posterior.pieces.as_slice()
+        if let Some(piece) = posterior.one_piece()
             && self.interval != Interval::Shortest
         {
             let (mean, sd) = (piece.level_mean + self.z * piece.reading_sd, piece.level_var.sqrt());

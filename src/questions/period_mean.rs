@@ -155,7 +155,7 @@ impl Question for PeriodMean {
         };
         let mut steps = steps::level(subject, When::This);
         let m = self.readings as f64;
-        if let [piece] = posterior.pieces.as_slice() {
+        if let Some(piece) = posterior.one_piece() {
             let own = own.unwrap_or(0.0);
             let centre = (n * mean + m * piece.level_mean) / (n + m);
             let put_in = [("n", n), ("x̄", mean), ("m", m), ("θ", piece.level_mean)];

@@ -57,7 +57,7 @@ impl Outlook {
         }
         let own = terms::own_uncertainty(subject, None)?.unwrap_or(0.0);
         let mut parts = Vec::new();
-        for piece in posterior.pieces.iter().filter(|piece| piece.weight > NEGLIGIBLE) {
+        for piece in posterior.pieces()?.iter().filter(|piece| piece.weight > NEGLIGIBLE) {
             let Some((mean, var)) = steps::moments(piece, When::Next) else {
                 return Err(Absent::because("nothing is known of the next period's level"));
             };

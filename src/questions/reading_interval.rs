@@ -262,7 +262,7 @@ impl Question for ReadingInterval {
         let mut steps = steps::level(subject, self.when);
         let own = own.unwrap_or(0.0);
         let m = if self.of == Of::Mean { self.readings as f64 } else { 1.0 };
-        if let [piece] = posterior.pieces.as_slice()
+        if let Some(piece) = posterior.one_piece()
             && let Some((mean, variance)) = steps::moments(piece, self.when)
         {
             let sigma = piece.reading_sd;

@@ -95,7 +95,7 @@ fn of_prior(world: &World<'_>, bad: Beyond, accepted: &[(f64, f64)]) -> Result<(
     }
     let prior = posterior::solve(&own.model, &Evidence::Nothing, Basis::PriorOnly)?;
     let (mut consumer, mut producer) = (0.0, 0.0);
-    for piece in prior.pieces.iter().filter(|piece| piece.weight > 1e-17) {
+    for piece in prior.pieces()?.iter().filter(|piece| piece.weight > 1e-17) {
         let Some((_, mean_var)) = moved::mean_given(&own.readings, piece.reading_sd) else {
             return Err(Absent::because("the readings say more of the level than their mean does"));
         };
@@ -193,9 +193,10 @@ fn outside(level: f64, error: f64, ranges: &[(f64, f64)]) -> f64 {
 /// The chance of each verdict for a row of true levels.
 fn characteristic(world: &World<'_>, ranges: &[Range]) -> Vec<Figures> {
     let Ok(posterior) = &world.subject.posterior else { return Vec::new() };
+    let Ok(pieces) = posterior.pieces() else { return Vec::new() };
     // σ as the posterior has it: pieces with the same σ count as one.
     let mut errors: Vec<(f64, f64)> = Vec::new();
-    for piece in &posterior.pieces {
+    for piece in pieces {
         let Some((_, var)) = moved::mean_given(&posterior.readings, piece.reading_sd) else {
             return Vec::new();
         };

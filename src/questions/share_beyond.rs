@@ -187,7 +187,7 @@ fn one_sided_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, 
         roots::solve(&excess, -REACH, REACH, roots::Tolerance::tight(1.0))
             .map_err(|error| Absent::failed(error.to_string()))
     };
-    let coarse = root_on(&posterior.pieces)?;
+    let coarse = root_on(posterior.pieces()?)?;
     let z = posterior.on_pieces_for(sign * coarse, root_on)??;
     Ok(Share { z }.value())
 }

@@ -27,7 +27,7 @@ pub fn moments(piece: &Piece, when: When) -> Option<(f64, f64)> {
 /// σ where one value stands for it, else 0: only for a derivation with one piece.
 pub fn reading_sd(subject: &Subject<'_>) -> f64 {
     match &subject.posterior {
-        Ok(posterior) => posterior.pieces.first().map_or(0.0, |piece| piece.reading_sd),
+        Ok(posterior) => posterior.one_piece().map_or(0.0, |piece| piece.reading_sd),
         Err(_) => 0.0,
     }
 }
@@ -35,10 +35,10 @@ pub fn reading_sd(subject: &Subject<'_>) -> f64 {
 /// How the level of this period was found: from prior and readings, or as a mixture.
 pub fn level(subject: &Subject<'_>, when: When) -> Vec<Step> {
     let Ok(posterior) = &subject.posterior else { return Vec::new() };
-    match posterior.pieces.as_slice() {
-        [] => Vec::new(),
-        [piece] => one_piece(posterior, piece, when),
-        pieces => mixture(posterior, pieces, when),
+    match (posterior.one_piece(), posterior.pieces()) {
+        (Some(piece), _) => one_piece(posterior, piece, when),
+        (None, Ok(pieces)) => mixture(posterior, pieces, when),
+        (None, Err(_)) => Vec::new(),
     }
 }
 
@@ -133,7 +133,7 @@ fn mixture(posterior: &Posterior, pieces: &[Piece], when: When) -> Vec<Step> {
 pub fn chance(subject: &Subject<'_>, linear: Linear, result: f64) -> Vec<Step> {
     let Ok(posterior) = &subject.posterior else { return Vec::new() };
     let mut steps = level(subject, linear.when);
-    if let [piece] = posterior.pieces.as_slice()
+    if let Some(piece) = posterior.one_piece()
         && (posterior.model.bias_sd == 0.0 || !linear.true_level)
         && let Some((mean, variance)) = moments(piece, linear.when)
     {
@@ -163,12 +163,9 @@ pub fn chance(subject: &Subject<'_>, linear: Linear, result: f64) -> Vec<Step> {
         }
         return steps;
     }
-    let label = if posterior.pieces.is_empty() {
-        "integral over the level's density"
-    } else {
-        "weighted sum over the pieces"
-    };
-    steps.push(Step::new(label, "Σ w Φ(±(L − m)/√v)", &[("K", posterior.pieces.len() as f64)], result));
+    let pieces = posterior.pieces().map_or(0, <[Piece]>::len);
+    let put_in = [("K", pieces as f64)];
+    steps.push(Step::new("weighted sum over the pieces", "Σ w Φ(±(L − m)/√v)", &put_in, result));
     steps
 }
 

@@ -24,11 +24,12 @@ pub fn handover(findings: &Findings) -> Handover {
 
 fn handed(series: &SeriesFindings, findings: &Findings) -> Handed {
     let posterior = series.posterior.as_ref();
+    let pieces = posterior.map_or(Ok(&[][..]), Posterior::pieces).unwrap_or_default();
     Handed {
         name: series.name.clone(),
         model: posterior.map(|posterior| posterior.model.clone()).map_err(|absent| absent.reason.clone()),
         readings: posterior.map_or(Evidence::Nothing, |posterior| posterior.readings.clone()),
-        pieces: posterior.map_or(Vec::new(), |posterior| posterior.pieces.iter().map(handed_piece).collect()),
+        pieces: pieces.iter().map(handed_piece).collect(),
         part_weights: posterior.map_or(Vec::new(), Posterior::part_weights),
         ledger: posterior.map_or(Vec::new(), |posterior| ledger(series, posterior, findings)),
     }
