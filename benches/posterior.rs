@@ -1,5 +1,6 @@
 //! How fast posteriors are solved and asked, and how the cost of many series grows with their number.
-//! `cargo bench --bench posterior -- [SERIES …]`; all data are invented.
+//! `cargo bench --bench posterior -- [SERIES …] [NAME …]`: only posteriors with one of the words in their name, if
+//! any are given; all data are invented.
 
 use reassay::data::evidence::{Evidence, Seen, Single};
 use reassay::posterior::{Basis, Posterior, When, solve};
@@ -18,7 +19,11 @@ fn main() {
         sizes = if is_bench { vec![250, 500, 1000, 2000] } else { vec![3] };
     }
     println!("{:28} {:>8} {:>12} {:>12}", "posterior", "pieces", "solve", "5 questions");
+    let wanted: Vec<&String> = words.iter().filter(|word| word.parse::<usize>().is_err()).collect();
     for (name, model, readings) in cases() {
+        if !wanted.is_empty() && !wanted.iter().any(|word| name.contains(word.as_str())) {
+            continue;
+        }
         let pieces = solve(&model, &readings, Basis::Both).unwrap().pieces().unwrap().len();
         let solving = best(|| {
             black_box(solve(&model, &readings, Basis::Both).unwrap());

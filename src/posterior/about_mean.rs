@@ -63,6 +63,10 @@ impl AboutMean {
 
     /// ln of V^{1/2} Π w_j^{1/2} exp(−½ Σ w_j (x̄_j − μ̂)²), and μ̂, V.
     pub fn at(&self, sigma2: f64, tau2: f64) -> LongRun {
+        if self.count == 0 {
+            // Nothing is known of the long-run mean.
+            return LongRun { ln_weight: 0.0, mean: 0.0, var: f64::INFINITY };
+        }
         // Two passes: squares are taken about μ̂ itself, since they cancel otherwise.
         let (mut sum, mut weighted, mut ln_product, mut ln_factor) = (0.0, 0.0, 0.0, 0.0);
         for c in &self.clusters {

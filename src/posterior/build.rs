@@ -4,7 +4,8 @@ use super::Basis;
 use super::about_mean::AboutMean;
 use super::axis::{SdAxis, TauAxis};
 use super::between::{self, Tau};
-use super::marked_periods::MarkedPeriods;
+use super::chances::Chances;
+use super::factor::MarkedPeriod;
 use super::marks;
 use super::moments::{self, Bounds, Tail};
 use super::plane::{BetweenSd, Level, Move, Plane, Sd};
@@ -204,6 +205,7 @@ impl Builder<'_> {
         let mut between = BetweenSd::Fixed(0.0);
         let mut bias = BiasOf::Measured;
         let mut move_later = None;
+        let mut marked_periods = Vec::new();
         let level = match level {
             LevelPrior::Flat => {
                 let open = !now.marks.iter().any(marks::Mark::is_bounded);
@@ -274,16 +276,10 @@ impl Builder<'_> {
                     let law = between::law(periods.between, scale, &given)?;
                     move_later = moved;
                     match &periods.pattern {
-                        Pattern::AboutAMean if history_is_marked => {
-                            if is_plug_in || periods.weight != 1.0 {
-                                return Err(Absent::because(
-                                    "marked readings in earlier periods go with neither a plug-in between sd nor a weight of history",
-                                ));
-                            }
-                            let told = all_history.iter().map(|p| (p.told(), p.marks.clone())).collect();
-                            let about = MarkedPeriods::new(told);
-                            between = between_sd(law, about.smallest_var(typical * typical));
-                            Level::AboutMeanMarked(about)
+                        Pattern::AboutAMean if history_is_marked && (is_plug_in || periods.weight != 1.0) => {
+                            return Err(Absent::because(
+                                "marked readings in earlier periods go with neither a plug-in between sd nor a weight of history",
+                            ));
                         }
                         Pattern::RandomWalk { .. } if history_is_marked => {
                             return Err(Absent::because(
@@ -292,7 +288,9 @@ impl Builder<'_> {
                         }
                         Pattern::AboutAMean => {
                             let about = AboutMean::new(&history);
-                            between = between_sd(law, about.smallest_var(typical * typical));
+                            let least = smallest_var(&about, &all_history, typical * typical);
+                            between = between_sd(law, least);
+                            marked_periods = marked(&all_history);
                             Level::AboutMean { periods: about, share: periods.weight }
                         }
                         Pattern::RandomWalk { gaps, last_gap } => {
@@ -315,13 +313,21 @@ impl Builder<'_> {
                 &level,
                 Level::LongRun { .. }
                     | Level::AboutMean { .. }
-                    | Level::AboutMeanMarked(_)
                     | Level::Walk(_)
                     | Level::PerReading { periods: true, .. }
             );
-        let plane =
-            Plane { history_sd, sd, between, level, moved: move_later, readings: this, marks: now.marks };
-        let bounds = moments::bounds(&plane, &tails);
+        let this_tail = Tail::of_marked(&this, &now.marks);
+        let plane = Plane {
+            history_sd,
+            sd,
+            between,
+            level,
+            moved: move_later,
+            readings: this,
+            marks: Chances::new(&now.marks),
+            marked_periods,
+        };
+        let bounds = moments::bounds(&plane, &tails, this_tail);
         let named = periods.map_or(&[][..], |p| &p.periods);
         let history = named.iter().map(|(name, _)| name.clone()).zip(history).collect();
         let gaps = match periods.map(|p| &p.pattern) {
@@ -414,6 +420,26 @@ fn between_sd(law: Tau, smallest_var: f64) -> BetweenSd {
         Tau::Fixed(tau) => BetweenSd::Fixed(tau),
         _ => BetweenSd::Unknown(TauAxis::new(law, smallest_var)),
     }
+}
+
+fn marked(history: &[marks::Period]) -> Vec<MarkedPeriod> {
+    let marked = history.iter().enumerate().filter(|(_, period)| !period.marks.is_empty());
+    let of = |(index, period): (usize, &marks::Period)| MarkedPeriod {
+        index,
+        plain: period.told(),
+        chances: Chances::new(&period.marks),
+    };
+    marked.map(of).collect()
+}
+
+/// The smallest variance of what one earlier period says of its level, marked readings counted as readings.
+fn smallest_var(about: &AboutMean, history: &[marks::Period], sigma2: f64) -> f64 {
+    let mut least = about.smallest_var(sigma2);
+    for period in history.iter().filter(|period| !period.marks.is_empty()) {
+        let plain = period.told().at(sigma2).map_or(0.0, |at| 1.0 / at.var);
+        least = least.min(1.0 / (plain + Chances::new(&period.marks).sharpness(sigma2)));
+    }
+    least
 }
 
 /// τ = 0 with counted readings alone: all periods share one level, and their means' scatter speaks of σ.

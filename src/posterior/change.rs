@@ -5,7 +5,6 @@ use super::build::Part;
 use super::grid;
 use super::law::Law;
 use super::marginal::Weighted;
-use super::marked::{self, Given};
 use super::plane::{BetweenSd, Level, Node};
 use super::solve::NEGLIGIBLE;
 use super::told::{Told, is_marked, told};
@@ -78,9 +77,6 @@ impl Posterior {
     /// Where the prior models periods and holds that one, both levels come from their joint posterior; else
     /// the earlier level stands on its own `readings` under a flat prior, independent given σ.
     pub fn change(&self, period: &Period, readings: &Evidence) -> Result<Law, Absent> {
-        if is_marked(readings) {
-            return Err(Absent::because("a change against a period with marked readings is not served"));
-        }
         let units = self.inner.units;
         let known = match self.model.within {
             Within::Known(sd) => Some(units.sd_in(sd)),
@@ -88,7 +84,17 @@ impl Posterior {
             Within::None => Some(0.0),
             _ => None,
         };
-        let (own, _) = told(readings, &units, known)?;
+        let stands_alone = self.inner.parts.iter().any(|part| self.held(part, period).is_none());
+        let own = match (is_marked(readings), stands_alone) {
+            (true, true) => {
+                return Err(Absent::because(
+                    "a change against a period with marked readings is served where that period is part of the history the prior is made of",
+                ));
+            }
+            // The part holds its readings.
+            (true, false) => Told::Nothing,
+            (false, _) => told(readings, &units, known)?.0,
+        };
         for part in &self.inner.parts {
             if self.held(part, period).is_some() && part.plane.moved.is_some() {
                 return Err(Absent::because(
@@ -101,7 +107,6 @@ impl Posterior {
             return self.change_marked(period, &own, bound);
         }
         // Outside the history the earlier readings stand on this model's σ, which may be unknown altogether.
-        let stands_alone = self.inner.parts.iter().any(|part| self.held(part, period).is_none());
         if let (Some(reason), Told::Counted { .. } | Told::Own(_), true) =
             (&self.inner.no_sd, &own, stands_alone)
         {
@@ -113,17 +118,9 @@ impl Posterior {
     /// The level of this period less the long-run mean, both as measured.
     pub fn change_long_run(&self) -> Result<Law, Absent> {
         self.models(When::LongRun)?;
-        let units = self.inner.units;
         let bound = self.bound(When::LongRun).min(self.bound(When::This));
         if self.inner.is_marked() {
-            if self.inner.parts.iter().any(|p| p.plane.marks.is_empty()) {
-                return Err(not_served());
-            }
-            return marked::law(&self.inner, true, bound, "the change", &|_, node| Given {
-                constant: -units.sd_out(long_constant(node)),
-                slope: units.scale * long_slope(node),
-                var: units.square_out(node.long_var),
-            });
+            return self.change_long_run_marked(bound);
         }
         self.over_nodes(bound, &|part, node| {
             // θ = B x̄ + (1 − B) μ + noise: the difference is B (x̄ − μ) + noise.
@@ -173,38 +170,8 @@ impl Posterior {
         settled_about_zero(weighted.iter().all(|w| w.weighed.frame.dims == 0), &law)
     }
 
-    /// A change to a period with marked readings, or from a prior whose periods hold them.
-    fn change_marked(&self, period: &Period, own: &Told, bound: f64) -> Result<Law, Absent> {
-        let units = self.inner.units;
-        for part in &self.inner.parts {
-            let held = self.held(part, period);
-            let joint = !matches!(
-                part.plane.level,
-                Level::Flat | Level::Normal { .. } | Level::PerReading { .. } | Level::AboutMean { .. }
-            );
-            if joint || (held.is_none() && own.at(1.0).is_none()) {
-                return Err(not_served());
-            }
-        }
-        marked::law(&self.inner, true, bound, "the change", &|part, node| match self.held(part, period) {
-            Some(j) => {
-                let then = pulled(&part.history[j].1, node, node.history_sigma);
-                Given {
-                    constant: -units.sd_out(then.own + then.pull * long_constant(node)),
-                    slope: units.scale * (1.0 - then.pull * node.link),
-                    var: units.square_out(then.var + then.pull * then.pull * node.long_var),
-                }
-            }
-            None => {
-                let sigma = if node.history_sigma.is_nan() { node.sigma } else { node.history_sigma };
-                let (mean, var) = own.at(sigma * sigma).map_or((0.0, 0.0), |at| (at.mean, at.var));
-                Given { constant: -units.sd_out(mean), slope: units.scale, var: units.square_out(var) }
-            }
-        })
-    }
-
     /// Where the earlier period stands in the part's model of periods, if it does.
-    fn held(&self, part: &Part, period: &Period) -> Option<usize> {
+    pub(super) fn held(&self, part: &Part, period: &Period) -> Option<usize> {
         let models = self.basis != Basis::ReadingsOnly && !matches!(self.model.level, LevelPrior::Peers(_));
         let joint = matches!(part.plane.level, Level::AboutMean { .. } | Level::Walk(_));
         let shared_level = matches!(&part.plane.level, Level::AboutMean { share, .. } if *share != 1.0)
@@ -212,24 +179,10 @@ impl Posterior {
         if !models || !joint || shared_level {
             return None;
         }
-        let j = part.history.iter().position(|(name, told)| name == period && *told != Told::Nothing)?;
-        Some(j)
+        let is_marked = |j: usize| part.plane.marked_periods.iter().any(|marked| marked.index == j);
+        let mut named = part.history.iter().enumerate().filter(|(_, (name, _))| name == period);
+        named.find(|(j, (_, told))| *told != Told::Nothing || is_marked(*j)).map(|(j, _)| j)
     }
-}
-
-fn not_served() -> Absent {
-    Absent::because(
-        "this change is not served with marked readings in the periods compared or in the history",
-    )
-}
-
-/// With the level on a line: the long-run mean less `link` · θ, and θ's own slope against it.
-fn long_constant(node: &Node) -> f64 {
-    node.long_mean - node.link * node.mean
-}
-
-fn long_slope(node: &Node) -> f64 {
-    1.0 - node.link
 }
 
 /// Mean and variance of this level less the earlier one at one node, inner units.

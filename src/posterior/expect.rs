@@ -3,6 +3,7 @@
 //! line stretched by sinh, which follows both the narrow middle and the far tails, and whose step is
 //! halved until two agree (Takahasi & Mori 1974).
 
+use super::marked::Points;
 use super::{Posterior, When};
 use crate::math::fm;
 use crate::quantity::{Absent, Figure};
@@ -122,11 +123,6 @@ impl Posterior {
         if let Some(reason) = &self.inner.no_sd {
             return Err(reason.clone());
         }
-        if when != When::This && self.inner.nodes()?.marked_level.is_some() {
-            return Err(Absent::because(
-                "with marked readings in this period and in earlier ones, counts and shares of another period are not served",
-            ));
-        }
         let groups = self.by_sigma(when)?;
         let mut values = vec![0.0; how_many];
         let mut fixed = vec![0.0; how_many];
@@ -162,6 +158,13 @@ impl Posterior {
     }
 
     fn by_sigma(&self, when: When) -> Result<Vec<Group>, Absent> {
+        if self.is_marked() {
+            let of = |at: &Points| {
+                let points: Vec<(f64, f64, f64)> = at.points.iter().map(|(x, w)| (*w, *x, 0.0)).collect();
+                Group::new(self.inner.units.sd_out(at.sigma), &points)
+            };
+            return Ok(self.points(when)?.iter().filter(|at| !at.points.is_empty()).map(of).collect());
+        }
         let pieces = self.pieces()?;
         let mut order: Vec<usize> =
             (0..pieces.len()).filter(|index| pieces[*index].weight > NEGLIGIBLE).collect();

@@ -65,10 +65,8 @@ pub(super) struct Curve {
 
 impl Curve {
     /// `None` where it is not resolved to `tolerance` (absolute) by a few hundred panels, or not finite.
-    pub fn new(f: &dyn Fn(f64) -> f64, lo: f64, hi: f64, tolerance: f64) -> Option<Curve> {
-        const FIRST: usize = 4;
-        let edge = |i: usize| lo + (hi - lo) * i as f64 / FIRST as f64;
-        let mut waiting: Vec<(f64, f64)> = (0..FIRST).rev().map(|i| (edge(i), edge(i + 1))).collect();
+    pub fn on(f: &dyn Fn(f64) -> f64, edges: &[f64], tolerance: f64) -> Option<Curve> {
+        let mut waiting: Vec<(f64, f64)> = edges.windows(2).rev().map(|pair| (pair[0], pair[1])).collect();
         let mut panels: Vec<Panel> = Vec::new();
         let mut made = 0;
         while let Some((lo, hi)) = waiting.pop() {
@@ -197,17 +195,6 @@ impl Panels {
             None if self.panels.first().is_some_and(|p| t < p.lo) => 1.0,
             None => 0.0,
         }
-    }
-
-    /// Gauss points t with w: Σ w f(t) is ∫ f over the panels, in units of this density's whole.
-    pub fn places(&self) -> Vec<(f64, f64)> {
-        let mut places = Vec::with_capacity(POINTS * self.panels.len());
-        for panel in &self.panels {
-            let half = 0.5 * (panel.hi - panel.lo);
-            let middle = 0.5 * (panel.hi + panel.lo);
-            places.extend(rule().iter().map(|(x, w)| (middle + half * x, w * half / self.total)));
-        }
-        places
     }
 
     /// Σ over Gauss points: ∫ g · density / ∫ density.

@@ -173,7 +173,6 @@ pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate, bound: f64) -> 
                 Coordinate::Between => node.tau,
                 Coordinate::HistorySd => node.history_sigma,
                 Coordinate::Sd => node.sigma,
-                Coordinate::LongRun | Coordinate::Level => f64::NAN,
             };
             if ln > best && spread > 0.0 {
                 best = ln;

@@ -1,24 +1,23 @@
-//! Laws over a plane with marked readings. Along a line of the plane (σ and τ held) the level, or the
-//! long-run mean, has a density g that is no normal one; what is asked is X = a + b y + N(0, k) with y on
-//! that line. Where k is wide against the line's nodes X is a mixture over them; where it is narrow, or 0,
-//! g itself is followed between the nodes. The density of X is then kept on panels.
+//! Laws where readings are marked. At a node of the plane (σ, τ) a number y, this period's level or the long-run
+//! mean, is normal but for the factor the marked readings multiply its density by, and what is asked is
+//! X = constant + slope · y + N(0, var): without the factor X and y are jointly normal, so that
+//! p(x | node) = N(x; …) E[factor(y) | x] / E[factor(y)], E[· | x] over a normal again.
 
-use super::When;
-use super::build::{BiasOf, Part};
-use super::grid::{self, MOST, Place};
+use super::build::Part;
+use super::chances::Chances;
+use super::factor::Factor;
+use super::grid::{self, Frame};
 use super::law::Law;
 use super::legendre::{Curve, Panels};
 use super::marginal::Weighted;
 use super::moments::moment;
-use super::plane::{Coordinate, Level, Node};
+use super::plane::{Coordinate, Node};
 use super::shapes::OnPanels;
+use super::smoothed::smoothed;
 use super::solve::Inner;
 use super::weighing::floor;
-use crate::math::{fm, normal};
+use crate::math::fm;
 use crate::quantity::Absent;
-use std::cell::OnceCell;
-use std::collections::BTreeMap;
-use std::rc::Rc;
 use std::sync::Arc;
 
 /// X | y ~ N(constant + slope · y, var), X in outer units from the posterior's origin; y in inner units.
@@ -27,363 +26,410 @@ pub(super) struct Given {
     pub constant: f64,
     pub slope: f64,
     pub var: f64,
+    /// Where y is the long-run mean and X tells more of this period's level than y does.
+    pub tied: Option<Tied>,
 }
 
-/// What X is at a node, for the line through it.
+/// This period's level given X and y: N(a + b x + c y, var), inner units.
+#[derive(Debug, Clone, Copy, PartialEq)]
+pub(super) struct Tied {
+    pub level: [f64; 3],
+    pub var: f64,
+    /// An earlier marked period whose level is this one's less `1/scale` of x: its number, and the scale.
+    pub earlier: Option<(usize, f64)>,
+}
+
+/// What X is at a node.
 pub(super) type AtNode<'a> = dyn Fn(&Part, &Node) -> Given + 'a;
 
-/// How smooth (relative) densities are that come from curves between the nodes.
-pub(super) const OF_CURVES: f64 = 1e-10;
+/// How smooth (relative) densities are that come from curves.
+const OF_CURVES: f64 = 1e-10;
+/// ln of a density is kept on curves to this.
+const OF_LN: f64 = 2e-12;
+/// Nodes so much (ln) lighter than the whole are not seen at a place: 4e−18.
+const UNSEEN: f64 = 40.0;
+/// Two grids must agree to this at places from tail to tail.
+const AGREED: f64 = 2e-11;
 
-/// A plane's nodes by their places.
-type NodeAt<'a> = dyn Fn(&Place) -> Node + 'a;
+/// The density of X as a sum over nodes.
+pub(super) struct Density<'a> {
+    pub nodes: Vec<OfNode<'a>>,
+    pub mean: f64,
+    pub sd: f64,
+    /// Whether `mean` and `sd` are those of X, not only near them.
+    exact: bool,
+}
 
-pub(super) struct Line<'a> {
-    nodes_at: Rc<NodeAt<'a>>,
-    /// Any node of it.
-    pub(super) node: Node,
-    /// Which coordinate runs along it, and how y stands to it.
-    along: usize,
-    line: (f64, f64),
-    /// (y, share of the whole).
-    nodes: Vec<(f64, f64)>,
-    /// ln of what a density of the line must be multiplied by, to be a share of the whole.
+/// One node's share of the density of X.
+pub(super) struct OfNode<'a> {
+    pub part: usize,
+    pub sigma: f64,
+    /// The node's share of the whole.
+    pub share: f64,
+    /// ln of the share without the marked readings, and of what the normal density of X does not depend on x by.
     ln_scale: f64,
-    step: f64,
     given: Given,
-    /// ln density of the coordinate between the nodes, made when first asked for.
-    curve: OnceCell<Option<Curve>>,
-    /// Whether this period's marked readings are left out of the density.
-    unmarked: bool,
-    keeps_curve: bool,
+    hidden: (f64, f64),
+    /// Variance of X without marked readings.
+    total: f64,
+    factor: Factor<'a>,
+    sharpness: f64,
+    apart: Option<Apart<'a>>,
 }
 
-impl Line<'_> {
-    /// Density of y at a place between the nodes.
-    fn density(&self, y: f64) -> f64 {
-        let u = (y - self.line.0) / self.line.1;
-        let ln_at = |u: f64| {
-            let mut place = self.node.place;
-            place[self.along] = u;
-            let node = (self.nodes_at)(&place);
-            if self.unmarked { node.ln_weight - node.ln_marks } else { node.ln_weight }
-        };
-        // Where marks of many periods meet in every value, it pays to keep them as a curve.
-        let curve = self.curve.get_or_init(|| {
-            let (lo, hi) = self.nodes.iter().fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), n| {
-                let u = (n.0 - self.line.0) / self.line.1;
-                (lo.min(u), hi.max(u))
-            });
-            let step = self.step / self.line.1;
-            if self.keeps_curve { Curve::new(&ln_at, lo - 4.0 * step, hi + 4.0 * step, 1e-12) } else { None }
-        });
-        let ln = match curve {
-            Some(curve) => match curve.at(u) {
-                Some(ln) => ln,
-                None => return 0.0,
-            },
-            None => ln_at(u),
-        };
-        fm::exp(ln + self.node.ln_cell - fm::ln(self.line.1) + self.ln_scale)
+/// Marked readings that the factor leaves out, X and y together telling of their levels.
+struct Apart<'a> {
+    tied: Tied,
+    now: (&'a Chances, f64),
+    earlier: Option<(&'a Chances, f64, f64)>,
+}
+
+impl<'a> Apart<'a> {
+    fn of(part: &'a Part, node: &Node, tied: Tied) -> Apart<'a> {
+        let history2 = node.history_sigma * node.history_sigma;
+        let periods = &part.plane.marked_periods;
+        let earlier = tied.earlier.and_then(|(j, scale)| Some((&periods.get(j)?.chances, history2, scale)));
+        Apart { tied, now: (&part.plane.marks, node.sigma * node.sigma), earlier }
     }
 
-    /// Density of X at t.
-    pub(super) fn of_x(&self, t: f64) -> f64 {
-        let Given { constant, slope, var } = self.given;
-        let sd = var.sqrt();
-        if sd >= 1.3 * slope.abs() * self.step || slope == 0.0 {
-            let density = |(y, share): &(f64, f64)| share * normal::pdf((t - constant - slope * y) / sd) / sd;
-            return self.nodes.iter().map(density).sum();
-        }
-        let centre = (t - constant) / slope;
-        if var == 0.0 {
-            return self.density(centre) / slope.abs();
-        }
-        // The kernel is narrow against g: trapezoid over the kernel.
-        const STEP: f64 = 0.4;
-        let mut total = 0.0;
-        for i in -22..=22 {
-            let z = STEP * f64::from(i);
-            total += fm::exp(-0.5 * z * z) * self.density(centre + sd / slope * z);
-        }
-        total * STEP * fm::INV_SQRT_TWO_PI / slope.abs()
+    fn ln(&self, x: f64, y: f64) -> f64 {
+        let [a, b, c] = self.tied.level;
+        let f = |theta: f64| {
+            let (now, sigma2) = self.now;
+            let mut ln = now.ln_at(theta, sigma2);
+            if let Some((then, history2, scale)) = self.earlier {
+                ln += then.ln_at(theta - x / scale, history2);
+            }
+            ln
+        };
+        smoothed(&f, a + b * x + c * y, self.tied.var, self.of_level()).ln
+    }
+
+    /// The most curvature of ln of it along the level.
+    fn of_level(&self) -> f64 {
+        let (now, sigma2) = self.now;
+        now.sharpness(sigma2) + self.earlier.map_or(0.0, |(then, history2, _)| then.sharpness(history2))
+    }
+
+    /// And along a line on which the level moves by `slope`.
+    fn sharpness(&self, slope: f64) -> f64 {
+        slope * slope / (self.tied.var + 1.0 / self.of_level())
     }
 }
 
-/// Which coordinate X is read along: the level's own, or that of the long-run mean.
-pub(super) fn along(part: &Part, of_level: bool) -> Option<(usize, Coordinate)> {
-    let coordinates = part.plane.coordinates();
-    let at = |wanted: Coordinate| coordinates.iter().position(|c| *c == wanted).map(|d| (d, wanted));
-    let (level, long_run) = (at(Coordinate::Level), at(Coordinate::LongRun));
-    if of_level { level.or(long_run) } else { long_run.or(level) }
+impl<'a> OfNode<'a> {
+    fn new((index, part): (usize, &'a Part), node: &Node, ln_share: f64, given: Given) -> OfNode<'a> {
+        let plane = &part.plane;
+        let apart = given.tied.map(|tied| Apart::of(part, node, tied));
+        let apart = apart.filter(|apart| apart.of_level() > 0.0);
+        let left_out = apart.as_ref().and_then(|apart| apart.tied.earlier).map(|(j, _)| j);
+        let factor = Factor::of(plane, node, apart.is_none(), left_out);
+        let of_apart = apart.as_ref().map_or(0.0, |apart| apart.sharpness(apart.tied.level[2]));
+        let sharpness = factor.sharpness() + of_apart;
+        let (_, v) = node.hidden;
+        let flat = v == f64::INFINITY;
+        let total = if flat { given.var } else { given.slope * given.slope * v + given.var };
+        let ln_density =
+            if flat { -fm::ln(given.slope.abs()) } else { -0.5 * fm::ln(total) - fm::HALF_LN_TWO_PI };
+        OfNode {
+            part: index,
+            sigma: node.sigma,
+            share: fm::exp(ln_share),
+            ln_scale: ln_share - node.ln_marks + ln_density,
+            given,
+            hidden: node.hidden,
+            total,
+            factor,
+            sharpness,
+            apart,
+        }
+    }
+
+    /// ln of the normal density of X, the factor being 1.
+    fn ln_normal(&self, x: f64) -> f64 {
+        let (m, v) = self.hidden;
+        if v == f64::INFINITY {
+            return self.ln_scale;
+        }
+        let error = x - self.given.constant - self.given.slope * m;
+        self.ln_scale - 0.5 * error * error / self.total
+    }
+
+    /// Mean and variance of y given X = x.
+    fn hidden_given(&self, x: f64) -> (f64, f64) {
+        let (m, v) = self.hidden;
+        let Given { constant, slope, var, .. } = self.given;
+        if v == f64::INFINITY {
+            return ((x - constant) / slope, var / (slope * slope));
+        }
+        let error = x - constant - slope * m;
+        (m + slope * v / self.total * error, v * (var / self.total))
+    }
+
+    fn ln_factor(&self, x: f64) -> f64 {
+        let (mean, var) = self.hidden_given(x);
+        match &self.apart {
+            None if self.sharpness == 0.0 => 0.0,
+            None => smoothed(&|y| self.factor.ln(y), mean, var, self.sharpness).ln,
+            Some(apart) => smoothed(&|y| self.factor.ln(y) + apart.ln(x, y), mean, var, self.sharpness).ln,
+        }
+    }
+
+    /// The density of X is nowhere narrower than a normal of this sd.
+    fn narrowest(&self) -> f64 {
+        let (at_0, var) = self.hidden_given(0.0);
+        let slope = self.hidden_given(1.0).0 - at_0;
+        let mut precision = slope * slope / (var + 1.0 / self.sharpness);
+        if self.hidden.1 < f64::INFINITY {
+            precision += 1.0 / self.total;
+        }
+        if let Some(apart) = &self.apart {
+            let [_, b, c] = apart.tied.level;
+            precision += apart.sharpness(b + c * slope);
+        }
+        1.0 / precision.sqrt()
+    }
 }
 
-/// The law of X over all parts. `of_level` where y is this period's level if that is a coordinate.
-pub(super) fn law(
-    inner: &Inner,
-    of_level: bool,
-    bound: f64,
-    what: &str,
-    at: &AtNode<'_>,
-) -> Result<Law, Absent> {
-    let mut lines = all_lines(inner, of_level, 1.0, at)?;
-    let (mean, sd) = mean_and_sd(&lines);
-    // A density at one place asks more of the grid over σ and τ than the sums it was chosen by.
-    let places: Vec<f64> = [-6.0, -2.5, -1.0, -0.3, 0.0, 0.5, 1.5, 3.0, 7.0].map(|k| mean + k * sd).to_vec();
-    let measure = |lines: &[Line<'_>]| -> Vec<f64> {
-        places.iter().map(|t| lines.iter().map(|line| line.of_x(*t)).sum::<f64>()).collect()
-    };
-    if inner.weighted()?.iter().any(|w| w.weighed.frame.dims > 1) {
-        let mut before = measure(&lines);
-        let mut factor = 1.0;
-        let mut settled = false;
-        for _ in 0..8 {
-            factor *= std::f64::consts::FRAC_1_SQRT_2;
-            let finer = all_lines(inner, of_level, factor, at)?;
-            let now = measure(&finer);
-            let top = now.iter().copied().fold(0.0, f64::max);
-            let worst = before.iter().zip(&now).map(|(a, b)| (a - b).abs() / a.max(*b).max(1e-13 * top));
-            settled = worst.fold(0.0, f64::max) <= 2e-11;
-            (before, lines) = (now, finer);
-            if settled {
-                break;
+/// ln Σ of the nodes' densities at x. Marked readings' chances are at most 1, so the normal densities bound them.
+pub(super) fn ln_sum<'n, 'a: 'n>(nodes: impl Iterator<Item = &'n OfNode<'a>> + Clone, x: f64) -> f64 {
+    let bounds: Vec<f64> = nodes.clone().map(|node| node.ln_normal(x)).collect();
+    let top = bounds.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+    if top == f64::NEG_INFINITY {
+        return top;
+    }
+    let mut terms: Vec<f64> = Vec::with_capacity(bounds.len());
+    let mut ln_whole = f64::NEG_INFINITY;
+    for (node, bound) in nodes.clone().zip(&bounds).filter(|(_, bound)| **bound > top - 3.0) {
+        let ln = bound + node.ln_factor(x);
+        ln_whole = ln_whole.max(ln);
+        terms.push(ln);
+    }
+    for (node, bound) in nodes.zip(&bounds).filter(|(_, bound)| **bound <= top - 3.0) {
+        if *bound > ln_whole - UNSEEN {
+            let ln = bound + node.ln_factor(x);
+            ln_whole = ln_whole.max(ln);
+            terms.push(ln);
+        }
+    }
+    fm::ln_sum_exp(&terms)
+}
+
+impl<'a> Density<'a> {
+    /// From nodes on grids with steps shorter by `finer`, those of σ by `finer_sd` once more.
+    fn new(
+        weighted: &[Weighted<'a>],
+        finer: f64,
+        finer_sd: f64,
+        at: &AtNode<'_>,
+    ) -> Result<Density<'a>, Absent> {
+        let mut all = Density { nodes: Vec::new(), mean: 0.0, sd: 0.0, exact: true };
+        let mut moments: Vec<(f64, f64, f64)> = Vec::new();
+        for (index, Weighted { part, weighed, share }) in weighted.iter().enumerate() {
+            let fresh;
+            let nodes = if (finer == 1.0 && finer_sd == 1.0) || weighed.frame.dims == 0 {
+                &weighed.nodes
+            } else {
+                let mut frame: Frame = weighed.frame.clone();
+                for (d, coordinate) in part.plane.coordinates().into_iter().enumerate() {
+                    if coordinate == Coordinate::Sd {
+                        frame.width[d] *= finer_sd;
+                        frame.stretch[d] *= finer_sd;
+                    }
+                }
+                let f = part.plane.nodes();
+                fresh = grid::sweep(&f, &frame, weighed.factor * finer, 0.29, floor(frame.dims))?;
+                &fresh
+            };
+            let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
+            let whole: f64 = nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
+            let ln_whole = top + fm::ln(whole) - fm::ln(*share);
+            let by_long_run = part.plane.by_long_run();
+            for node in nodes {
+                let given = at(part, node);
+                all.exact &= given.tied.is_none();
+                let (y, var) =
+                    if by_long_run { (node.long_mean, node.long_var) } else { (node.mean, node.var) };
+                let of = OfNode::new((index, part), node, node.ln_weight - ln_whole, given);
+                let spread = given.slope * given.slope * var + given.var;
+                moments.push((of.share, given.constant + given.slope * y, spread));
+                all.nodes.push(of);
             }
         }
-        if !settled {
-            return Err(Absent::failed(format!("the density of {what} did not reach its promised accuracy")));
-        }
+        let whole: f64 = moments.iter().map(|m| m.0).sum();
+        all.mean = moments.iter().map(|m| m.0 * m.1).sum::<f64>() / whole;
+        let second: f64 = moments.iter().map(|m| m.0 * ((m.1 - all.mean) * (m.1 - all.mean) + m.2)).sum();
+        all.sd = (second / whole).sqrt();
+        Ok(all)
     }
-    let density = |t: f64| lines.iter().map(|line| line.of_x(t)).sum::<f64>();
-    let smooth = if lines.iter().any(|line| line.keeps_curve) { OF_CURVES } else { 1e-12 };
-    let panels = spread_out(&density, width_of(&lines), mean, smooth)?;
+
+    pub fn ln_at(&self, x: f64) -> f64 {
+        ln_sum(self.nodes.iter(), x)
+    }
+
+    /// Ends of panels from the mean outward, until nothing is left (1e−30 of the top).
+    fn edges(&self) -> Vec<f64> {
+        let (mut least, mut most) = (self.mean, self.mean);
+        for node in self.nodes.iter().filter(|node| node.share > 1e-24 && node.hidden.1 < f64::INFINITY) {
+            let place = node.given.constant + node.given.slope * node.hidden.0;
+            (least, most) = (least.min(place), most.max(place));
+        }
+        let top = self.ln_at(self.mean);
+        let outward = |direction: f64| {
+            let (mut edges, mut step, mut t, mut low, mut highest) =
+                (Vec::new(), 0.6 * self.sd, self.mean, 0, top);
+            for _ in 0..400 {
+                t += direction * step;
+                edges.push(t);
+                let here = self.ln_at(t);
+                highest = highest.max(here);
+                low = if here < highest - 69.0 && !(t > least && t < most) { low + 1 } else { 0 };
+                if low >= 2 {
+                    break;
+                }
+                step *= 1.2;
+            }
+            edges
+        };
+        let mut all: Vec<f64> = outward(-1.0).into_iter().rev().collect();
+        all.push(self.mean);
+        all.extend(outward(1.0));
+        all
+    }
+}
+
+/// The law of X over all parts; `moves_with_sd` where X moves with σ itself.
+pub(super) fn law(
+    inner: &Inner,
+    bound: f64,
+    what: &str,
+    moves_with_sd: bool,
+    at: &AtNode<'_>,
+) -> Result<Law, Absent> {
+    let weighted = inner.weighted()?;
+    let density = settled(&weighted, what, moves_with_sd, at)?;
+    let edges = density.edges();
+    let curve = Curve::on(&|t| density.ln_at(t), &edges, OF_LN)
+        .ok_or_else(|| Absent::failed(format!("the density of {what} is not resolved")))?;
+    let panels = Panels::to(&|t| curve.at(t).map_or(0.0, fm::exp), &edges, OF_CURVES)?;
     if (panels.total() - 1.0).abs() > 1e-9 {
         return Err(Absent::failed(format!(
             "the density of {what} integrates to {} by panels, not to 1",
             panels.total()
         )));
     }
+    let (mut mean, mut sd) = (density.mean, density.sd);
+    if !density.exact {
+        mean = panels.expect(&|x| x);
+        sd = panels.expect(&|x| (x - mean) * (x - mean)).sqrt();
+    }
     let mean = moment(1.0, bound, what, || mean);
     let sd = moment(2.0, bound, what, || sd);
     Ok(Law::new(Arc::new(OnPanels(panels)), mean, sd))
 }
 
-/// The lines of all parts, on grids finer by `factor`.
-fn all_lines<'a>(
-    inner: &'a Inner,
-    of_level: bool,
-    factor: f64,
+/// On finer and finer grids until two agree at places from tail to tail: a density at one place asks more of the
+/// grid over σ and τ than the sums it was chosen by.
+fn settled<'a>(
+    weighted: &[Weighted<'a>],
+    what: &str,
+    moves_with_sd: bool,
     at: &AtNode<'_>,
-) -> Result<Vec<Line<'a>>, Absent> {
-    let mut lines = Vec::new();
-    for Weighted { part, weighed, share } in inner.weighted()? {
-        let Some(along) = along(part, of_level) else {
-            return Err(Absent::because(
-                "a mixture of priors with and without marked readings in their periods is not served",
-            ));
-        };
-        let step = factor * weighed.factor * weighed.frame.width[along.0];
-        if factor == 1.0 {
-            lines.extend(lines_of(part, &weighed.nodes, share, along, step, at, None));
+) -> Result<Density<'a>, Absent> {
+    let mut held = Density::new(weighted, 1.0, 1.0, at)?;
+    if weighted.iter().all(|w| w.weighed.frame.dims == 0) {
+        return Ok(held);
+    }
+    let places = [-6.0, -2.0, -0.3, 1.2, 3.0, 7.0].map(|k| held.mean + k * held.sd);
+    let measure = |density: &Density<'_>| places.map(|t| fm::exp(density.ln_at(t)));
+    let mut before = measure(&held);
+    let (mut finer, mut finer_sd) = (1.0, 1.0);
+    for _ in 0..10 {
+        if moves_with_sd {
+            finer_sd *= 0.7;
+            finer *= 0.97;
         } else {
-            let f = part.plane.nodes();
-            let nodes =
-                grid::sweep(&f, &weighed.frame, factor * weighed.factor, 0.29, floor(weighed.frame.dims))?;
-            lines.extend(lines_of(part, &nodes, share, along, step, at, None));
+            finer *= 0.8;
+        }
+        let again = Density::new(weighted, finer, finer_sd, at)?;
+        let now = measure(&again);
+        let top = now.iter().copied().fold(0.0, f64::max);
+        let apart = |(a, b): (&f64, &f64)| (a - b).abs() / a.max(*b).max(1e-13 * top);
+        let worst = before.iter().zip(&now).map(apart).fold(0.0, f64::max);
+        (before, held) = (now, again);
+        if worst <= AGREED {
+            return Ok(held);
         }
     }
-    Ok(lines)
+    Err(Absent::failed(format!("the density of {what} did not reach its promised accuracy")))
 }
 
-/// Where X lies and how widely.
-fn mean_and_sd(lines: &[Line<'_>]) -> (f64, f64) {
-    let (mut mean, mut second) = (0.0, 0.0);
-    for line in lines {
-        for (y, share) in &line.nodes {
-            mean += share * (line.given.constant + line.given.slope * y);
-        }
-    }
-    for line in lines {
-        for (y, share) in &line.nodes {
-            let d = line.given.constant + line.given.slope * y - mean;
-            second += share * (d * d + line.given.var);
-        }
-    }
-    (mean, second.sqrt())
+/// Points of X whose sums are integrals, σ given: (x, share of the whole).
+#[derive(Debug, Clone)]
+pub(super) struct Points {
+    pub sigma: f64,
+    pub points: Vec<(f64, f64)>,
+    /// No density is narrower than this among them.
+    narrowest: f64,
 }
 
-/// Panels from the heaviest place outward until nothing is left (1e−30 of the top).
-pub(super) fn spread_out(
-    density: &dyn Fn(f64) -> f64,
-    width: f64,
-    mean: f64,
-    relative: f64,
-) -> Result<Panels, Absent> {
-    let top = density(mean).max(f64::MIN_POSITIVE);
-    let edges = |direction: f64| {
-        let (mut edges, mut step, mut t, mut low) = (Vec::new(), width, mean, 0);
-        let mut highest = top;
-        for _ in 0..400 {
-            t += direction * step;
-            edges.push(t);
-            let here = density(t);
-            highest = highest.max(here);
-            low = if here < 1e-30 * highest { low + 1 } else { 0 };
-            if low >= 2 {
-                break;
-            }
-            step *= 1.25;
-        }
-        edges
-    };
-    let mut all: Vec<f64> = edges(-1.0).into_iter().rev().collect();
-    all.push(mean);
-    all.extend(edges(1.0));
-    Panels::to(density, &all, relative)
-}
+/// Steps of points in narrowest sds.
+const STEP: f64 = 0.5;
+/// How fast steps grow outward.
+const STRETCH: f64 = 0.05;
 
-/// How far apart the first panels' ends may be.
-fn width_of(lines: &[Line<'_>]) -> f64 {
-    let mut width: f64 = 0.0;
-    let mut whole = 0.0;
-    for line in lines {
-        let share: f64 = line.nodes.iter().map(|n| n.1).sum();
-        let own = line.step * line.given.slope.abs() + line.given.var.sqrt();
-        width += share * own;
-        whole += share;
-    }
-    width / whole
-}
-
-pub(super) fn lines_of<'a>(
-    part: &'a Part,
-    nodes: &[Node],
-    share: f64,
-    (along, coordinate): (usize, Coordinate),
-    step: f64,
-    at: &AtNode<'_>,
-    unmarked: Option<f64>,
-) -> Vec<Line<'a>> {
-    let reference = unmarked.unwrap_or(0.0);
-    let unmarked = unmarked.is_some();
-    let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
-    let whole: f64 = nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
-    let mut by_line: BTreeMap<[u64; MOST], Vec<&Node>> = BTreeMap::new();
-    for node in nodes {
-        let mut key = node.place.map(f64::to_bits);
-        key[along] = 0;
-        by_line.entry(key).or_default().push(node);
-    }
-    let nodes_at: Rc<NodeAt<'a>> = Rc::new(part.plane.nodes());
-    let ln_of = |n: &Node| if unmarked { n.ln_weight - n.ln_marks + reference } else { n.ln_weight };
-    let mut lines = Vec::new();
-    for members in by_line.into_values() {
-        let line = |n: &Node| if coordinate == Coordinate::Level { n.level_line } else { n.long_line };
-        let nodes: Vec<(f64, f64)> = members
+/// X on lattices of its own for every σ, their steps shorter by `finer`.
+pub(super) fn points(weighted: &[Weighted<'_>], finer: f64, at: &AtNode<'_>) -> Result<Vec<Points>, Absent> {
+    let density = Density::new(weighted, 1.0, 1.0, at)?;
+    let mut order: Vec<&OfNode<'_>> = density.nodes.iter().collect();
+    // A stable sort: nodes of one σ stay in their order.
+    order.sort_by(|a, b| a.part.cmp(&b.part).then(a.sigma.total_cmp(&b.sigma)));
+    let mut all = Vec::new();
+    for group in order.chunk_by(|a, b| a.part == b.part && a.sigma.to_bits() == b.sigma.to_bits()) {
+        let share: f64 = group.iter().map(|node| node.share).sum();
+        let narrowest = group
             .iter()
-            .map(|n| (line(n).0 + line(n).1 * n.place[along], share * fm::exp(ln_of(n) - top) / whole))
-            .filter(|n| n.1 > 1e-32)
-            .collect();
-        let Some(node) = members.first().filter(|_| !nodes.is_empty()) else { continue };
-        // A node stands for a step of its line: its share is the density times that step.
-        let ln_scale = fm::ln(share / (whole * step)) - top + reference;
-        lines.push(Line {
-            nodes_at: Rc::clone(&nodes_at),
-            node: **node,
-            along,
-            line: line(node),
-            nodes,
-            ln_scale,
-            step: step * line(node).1,
-            given: at(part, node),
-            curve: OnceCell::new(),
-            unmarked,
-            keeps_curve: matches!(part.plane.level, Level::AboutMeanMarked(_)),
-        });
-    }
-    lines
-}
-
-impl Inner {
-    /// A level as measured, given the line's y: X = factor · level + shift + N(0, added), outer units.
-    pub(super) fn given(
-        &self,
-        part: &Part,
-        node: &Node,
-        when: When,
-        (factor, shift, added): (f64, f64, f64),
-    ) -> Given {
-        let (constant, slope, var) = inner_given(part, node, when);
-        let units = &self.units;
-        Given {
-            constant: factor * units.sd_out(constant) + shift,
-            slope: factor * units.scale * slope,
-            var: factor * factor * units.square_out(var) + added,
-        }
-    }
-
-    /// The true level with the bias taken out, plus a shift (methods §3).
-    pub(super) fn true_given(&self, part: &Part, node: &Node, when: When, shift: f64) -> Given {
-        let units = &self.units;
-        let (c, s, v) = inner_given(part, node, when);
-        let u2 = (self.bias_sd / units.scale) * (self.bias_sd / units.scale);
-        let tau2 = node.tau * node.tau;
-        let pulled = |m0: f64, v0: f64| {
-            let k = v0 / (v0 + u2);
-            (m0 + k * (c - m0), k * s, k * k * v + k * u2)
+            .filter(|node| node.share > 1e-14 * share)
+            .map(|node| node.narrowest())
+            .fold(f64::INFINITY, f64::min);
+        let heaviest = group.iter().max_by(|a, b| a.share.total_cmp(&b.share));
+        let Some(heaviest) = heaviest else { continue };
+        let ln_at = |x: f64| ln_sum(group.iter().copied(), x);
+        let start = if heaviest.hidden.1 < f64::INFINITY {
+            heaviest.given.constant + heaviest.given.slope * heaviest.hidden.0
+        } else {
+            density.mean
         };
-        let (constant, slope, var) = match part.bias {
-            BiasOf::Measured => (c, s, v + u2),
-            BiasOf::TrueLevel { mean, var } => pulled(mean, var),
-            BiasOf::TrueLevelPerReading { mean, readings } => {
-                pulled(mean, node.sigma * node.sigma / readings)
-            }
-            BiasOf::TrueLongRun { mean, var } => {
-                // Given φ = μ + (level about it) + b, each share of φ − M goes to each by its variance.
-                let whole = var + u2 + tau2;
-                match when {
-                    When::This => {
-                        let k = u2 / whole;
-                        (k * mean, 1.0 - k, u2 * (1.0 - k))
-                    }
-                    When::Next | When::LongRun => {
-                        let k = var / whole;
-                        let own = if when == When::Next { tau2 } else { 0.0 };
-                        ((1.0 - k) * mean, k, var * (1.0 - k) + own)
-                    }
+        let mode = crate::math::roots::mode(ln_at, start, narrowest).map_err(grid::failed)?;
+        let mut points = Vec::new();
+        for direction in [1.0, -1.0] {
+            let (mut i, mut low) = (if direction > 0.0 { 0.0 } else { 1.0 }, 0);
+            while low < 2 && i < 1e5 {
+                let t = STRETCH * STEP * finer * i;
+                let (up, down) = (fm::exp(t), fm::exp(-t));
+                let x = mode.x + direction * narrowest / STRETCH * 0.5 * (up - down);
+                let weight = narrowest * STEP * finer * 0.5 * (up + down) * fm::exp(ln_at(x));
+                if weight < 1e-32 {
+                    low += 1;
+                } else {
+                    low = 0;
+                    points.push((x, weight));
                 }
+                i += 1.0;
             }
-        };
-        Given {
-            constant: units.sd_out(constant) + shift,
-            slope: units.scale * slope,
-            var: units.square_out(var),
         }
+        all.push(Points { sigma: heaviest.sigma, points, narrowest });
     }
+    Ok(all)
 }
 
-/// A level (or the long-run mean) given y: constant + slope · y and a variance, inner units.
-pub(super) fn inner_given(part: &Part, node: &Node, when: When) -> (f64, f64, f64) {
-    let plane = &part.plane;
-    let tau2 = node.tau * node.tau;
-    let stretch = plane.moved.map_or(1.0, |m| m.stretch);
-    let by_long_run = matches!(plane.level, Level::AboutMeanMarked(_));
-    match when {
-        When::This if plane.has_level_coordinate() => (0.0, 1.0, 0.0),
-        When::This => {
-            let pull = plane
-                .readings
-                .at(node.sigma * node.sigma)
-                .map_or(1.0, |at| at.var / (node.prior_var + at.var));
-            let slope = stretch * pull;
-            (node.mean - slope * node.mu(), slope, node.var)
-        }
-        When::Next | When::LongRun => {
-            let own = if when == When::Next { tau2 } else { 0.0 };
-            if by_long_run {
-                (node.long_mean - stretch * node.mu(), stretch, own)
-            } else {
-                (node.long_mean - node.link * node.mean, node.link, node.long_var + own)
-            }
-        }
+/// How much finer points must be so that sums over them with a normal kernel of variance `var(σ)` are integrals.
+pub(super) fn fine_enough(points: &[Points], var: &dyn Fn(f64) -> f64) -> f64 {
+    let mut finer = 1.0f64;
+    for at in points {
+        // The product of a normal tail and a density is as narrow as both together.
+        let (e2, s2) = (at.narrowest * at.narrowest, var(at.sigma));
+        finer = finer.min(0.7 / STEP * (s2 / (s2 + e2)).sqrt());
     }
+    finer
 }

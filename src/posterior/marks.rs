@@ -103,25 +103,3 @@ pub(super) fn period(evidence: &Evidence, units: &Units, known_sd: Option<f64>) 
     let (plain, sums) = told(&Evidence::Singles(plain), units, known_sd)?;
     Ok(Period { plain: Some(plain), sums, marks })
 }
-
-/// A normal stand-in for a level's density: centre and scale of a coordinate on which it is narrow and
-/// near 0. Bounded marks count as readings at their middle; open ones do not count.
-pub(super) fn frame(mean: f64, var: f64, marks: &[Mark], sigma2: f64) -> (f64, f64) {
-    let (mut weight, mut weighted) = (0.0, 0.0);
-    if var < f64::INFINITY {
-        weight += 1.0 / var;
-        weighted += mean / var;
-    }
-    for mark in marks.iter().filter(|m| m.is_bounded()) {
-        let width = mark.upper - mark.lower;
-        let w = 1.0 / (sigma2 + mark.u2 + width * width / 12.0);
-        weight += w;
-        weighted += w * 0.5 * (mark.lower + mark.upper);
-    }
-    if weight > 0.0 {
-        return (weighted / weight, (1.0 / weight).sqrt());
-    }
-    let ends: Vec<f64> = marks.iter().flat_map(|m| [m.lower, m.upper]).filter(|x| x.is_finite()).collect();
-    let n = ends.len().max(1) as f64;
-    (ends.iter().sum::<f64>() / n, (sigma2 / n).sqrt().max(f64::MIN_POSITIVE))
-}

@@ -2,8 +2,7 @@
 //! history says at one (σ, τ). Kept by the bits of the coordinate, so no figure depends on it.
 
 use super::about_mean::LongRun;
-use std::cell::{Cell, RefCell};
-use std::collections::BTreeMap;
+use std::cell::Cell;
 
 const SLOTS: usize = 512;
 
@@ -18,17 +17,12 @@ pub(super) struct Memo {
     /// A table for each coordinate that can be a spread.
     spreads: [Box<[Cell<Option<Slot>>]>; 3],
     long_run: Cell<Option<((u64, u64), LongRun)>>,
-    likelihoods: RefCell<BTreeMap<[u64; 3], f64>>,
 }
 
 impl Memo {
     pub fn new() -> Memo {
         let table = || vec![Cell::new(None); SLOTS].into_boxed_slice();
-        Memo {
-            spreads: [table(), table(), table()],
-            long_run: Cell::new(None),
-            likelihoods: RefCell::default(),
-        }
+        Memo { spreads: [table(), table(), table()], long_run: Cell::new(None) }
     }
 
     /// The spread at coordinate `u` of dimension `dim`, and ln of its density.
@@ -45,18 +39,6 @@ impl Memo {
         let (spread, ln_density) = make(u);
         cell.set(Some(Slot { key, spread, ln_density }));
         (spread, ln_density)
-    }
-
-    /// The likelihood of periods with marked readings at (μ, σ, τ): a lattice of these comes back for every σ of
-    /// this period.
-    pub fn likelihood(&self, key: [f64; 3], make: impl FnOnce() -> f64) -> f64 {
-        let bits = key.map(f64::to_bits);
-        if let Some(ln) = self.likelihoods.borrow().get(&bits) {
-            return *ln;
-        }
-        let ln = make();
-        self.likelihoods.borrow_mut().insert(bits, ln);
-        ln
     }
 
     /// What the history says of the long-run mean at (σ, τ), the last one asked for being kept.

@@ -5,17 +5,20 @@ mod about_mean;
 mod axis;
 mod between;
 mod build;
+mod chances;
 mod change;
 mod closed;
 mod expect;
+mod factor;
 mod grid;
 pub mod joint;
 pub mod law;
 mod legendre;
 mod marginal;
 mod marked;
-mod marked_level;
-mod marked_periods;
+mod marked_change;
+mod marked_given;
+mod marked_laws;
 mod marks;
 mod memo;
 mod moments;
@@ -24,6 +27,7 @@ mod predictive;
 mod ranking;
 mod refined;
 mod shapes;
+mod smoothed;
 mod solve;
 mod told;
 mod units;
@@ -125,7 +129,7 @@ impl Posterior {
         }
         self.models(when)?;
         if self.inner.is_marked() {
-            return self.level_marked(when, shift);
+            return self.true_level_marked(when, shift);
         }
         let moves_with_sd = shift(1.0) != shift(2.0);
         if moves_with_sd && let Some(reason) = &self.inner.no_sd {
@@ -196,17 +200,9 @@ impl Posterior {
         }
         if self.inner.is_marked() {
             let what = if uses_sd { "a reading" } else { self.name(when) };
-            if let (When::This, Some(level)) = (when, &self.inner.nodes()?.marked_level) {
-                return self
-                    .inner
-                    .of_marked_level(level, factor, shift_and_variance, bound, what)
-                    .map(|law| law.moved(self.origin()));
-            }
-            return marked::law(&self.inner, when == When::This, bound, what, &|part, node| {
-                let (shift, added) = shift_and_variance(self.inner.units.sd_out(node.sigma));
-                self.inner.given(part, node, when, (factor, shift, added))
-            })
-            .map(|law| law.moved(self.origin()));
+            return self
+                .affine_marked(when, factor, shift_and_variance, bound, what)
+                .map(|law| law.moved(self.origin()));
         }
         let law = |pieces: &[Piece]| {
             let parts = pieces.iter().map(|piece| {
@@ -289,23 +285,6 @@ impl Posterior {
             return Err(Absent::because("the readings have no weight"));
         }
         Ok(n * share / (1.0 - share))
-    }
-
-    /// The true level with marked readings and a bias.
-    fn level_marked(&self, when: When, shift: &dyn Fn(f64) -> f64) -> Result<Law, Absent> {
-        let bound = self.bound(when);
-        if let (When::This, Some(level)) = (when, &self.inner.nodes()?.marked_level) {
-            // A prior made of periods carries the bias: it is added.
-            let bias2 = self.inner.bias_sd * self.inner.bias_sd;
-            return self
-                .inner
-                .of_marked_level(level, 1.0, &|sd| (shift(sd), bias2), bound, self.name(when))
-                .map(|law| law.moved(self.origin()));
-        }
-        marked::law(&self.inner, when == When::This, bound, self.name(when), &|part, node| {
-            self.inner.true_given(part, node, when, shift(self.inner.units.sd_out(node.sigma)))
-        })
-        .map(|law| law.moved(self.origin()))
     }
 
     /// Whether a level of that kind is part of the model.

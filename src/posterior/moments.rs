@@ -71,10 +71,9 @@ impl Tail {
     }
 }
 
-/// The bounds of a plane; `history` are its earlier periods, in any order.
-pub(super) fn bounds(plane: &Plane, history: &[Tail]) -> Bounds {
+/// The bounds of a plane; `history` are its earlier periods, in any order, `this` the one under review.
+pub(super) fn bounds(plane: &Plane, history: &[Tail], this: Option<Tail>) -> Bounds {
     let mut bounds = Bounds::ALL;
-    let this = Tail::of_marked(&plane.readings, &plane.marks);
     let apart = plane.history_sd.is_some();
     let of_history = plane.history_sd.unwrap_or(plane.sd);
     // Exponent a of the density of σ alone: σ^-a dσ.
@@ -87,8 +86,7 @@ pub(super) fn bounds(plane: &Plane, history: &[Tail]) -> Bounds {
     let own_this = own(&mut this.into_iter());
     let base_this = exponent(&plane.sd).map(|a| a + own_this + if apart { 0.0 } else { own_history });
     let base_history = exponent(&of_history).map(|a| a + own_history + if apart { 0.0 } else { own_this });
-    let about_periods =
-        matches!(plane.level, Level::AboutMean { .. } | Level::AboutMeanMarked(_) | Level::Walk(_));
+    let about_periods = matches!(plane.level, Level::AboutMean { .. } | Level::Walk(_));
     let shares_sd = about_periods && !apart;
     let pinned = history.iter().any(|t| !t.with_sd);
     let updated = this.is_some();

@@ -3,10 +3,12 @@
 
 use super::about_mean::AboutMean;
 use super::axis::{SdAxis, TauAxis};
+use super::chances::Chances;
+use super::factor::{Factor, MarkedPeriod, level_given_long_run};
 use super::grid::{MOST, Place, Weighted};
-use super::marked_periods::{MarkedPeriods, ln_marks};
-use super::marks::{self, Mark};
+use super::legendre;
 use super::memo::Memo;
+use super::smoothed::smoothed;
 use super::told::Told;
 use super::walk::Walk;
 use crate::math::fm;
@@ -51,8 +53,6 @@ pub(super) enum Level {
         periods: AboutMean,
         share: f64,
     },
-    /// The same where periods hold marked readings: μ is a coordinate, for its density is not normal.
-    AboutMeanMarked(MarkedPeriods),
     Walk(Walk),
 }
 
@@ -64,7 +64,18 @@ pub(super) struct Move {
     pub shift: f64,
 }
 
+impl Default for Move {
+    fn default() -> Move {
+        Move { centre: 0.0, stretch: 1.0, shift: 0.0 }
+    }
+}
+
 impl Move {
+    /// The mean that is moved to `m`.
+    pub fn before(&self, m: f64) -> f64 {
+        self.centre + (m - self.shift - self.centre) / self.stretch
+    }
+
     pub fn mean(&self, m: f64) -> f64 {
         self.centre + self.stretch * (m - self.centre) + self.shift
     }
@@ -83,8 +94,10 @@ pub(super) struct Plane {
     pub level: Level,
     pub moved: Option<Move>,
     pub readings: Told,
-    /// Readings known by their bounds: with any, the level is a coordinate.
-    pub marks: Vec<Mark>,
+    /// Readings of this period known by their bounds.
+    pub marks: Chances,
+    /// Earlier periods with such readings; `level` holds their plain readings.
+    pub marked_periods: Vec<MarkedPeriod>,
 }
 
 /// One node: its weight and the level's piece N(mean, var) there.
@@ -107,17 +120,12 @@ pub(super) struct Node {
     /// The long-run mean before this period's readings.
     pub long_prior_mean: f64,
     pub long_prior_var: f64,
-    /// With marked readings: where the node lies, so that its line can be followed between the nodes.
+    /// Where the node lies.
     pub place: Place,
-    /// The coordinate of the level is (θ − centre)/scale, where it is one; likewise that of μ.
-    pub level_line: (f64, f64),
-    pub long_line: (f64, f64),
-    /// What of `ln_weight` is this period's marked readings', the level integrated out.
+    /// With marked readings: the number they speak of is N(mean, var) but for them.
+    pub hidden: (f64, f64),
+    /// ln of what the marked readings multiply the weight by.
     pub ln_marks: f64,
-    /// μ itself where it is a coordinate, before any move of the prior.
-    mu: f64,
-    /// Given θ the long-run mean is `long_mean` = constant + link · θ.
-    pub link: f64,
 }
 
 impl Weighted for Node {
@@ -131,20 +139,12 @@ impl Weighted for Node {
     }
 }
 
-impl Node {
-    pub fn mu(&self) -> f64 {
-        self.mu
-    }
-}
-
 /// What a coordinate of the plane is.
 #[derive(Debug, Clone, Copy, PartialEq, Eq)]
 pub(super) enum Coordinate {
     HistorySd,
     Between,
     Sd,
-    LongRun,
-    Level,
 }
 
 impl Plane {
@@ -160,12 +160,6 @@ impl Plane {
         if matches!(self.sd, Sd::Unknown(_)) {
             all.push(Coordinate::Sd);
         }
-        if matches!(self.level, Level::AboutMeanMarked(_)) {
-            all.push(Coordinate::LongRun);
-        }
-        if self.has_level_coordinate() {
-            all.push(Coordinate::Level);
-        }
         all
     }
 
@@ -175,19 +169,20 @@ impl Plane {
         matches!(sd, Some(Sd::Unknown(axis)) if !axis.uniform && axis.sums.ss > 0.0 && axis.sums.df >= 30.0)
     }
 
-    /// With marked readings the level is a coordinate, unless μ already is one: then it is integrated out.
-    pub fn has_level_coordinate(&self) -> bool {
-        !self.marks.is_empty() && !matches!(self.level, Level::AboutMeanMarked(_))
+    /// Whether levels are held as densities rather than as normal pieces.
+    pub fn is_marked(&self) -> bool {
+        !self.marks.is_empty() || self.by_long_run()
     }
 
-    /// Whether a line of the plane is kept as a density rather than as normal pieces.
-    pub fn is_marked(&self) -> bool {
-        !self.marks.is_empty() || matches!(self.level, Level::AboutMeanMarked(_))
+    /// Whether the factors of marked readings are functions of the long-run mean, those of earlier periods being
+    /// among them; else they are functions of this period's level.
+    pub fn by_long_run(&self) -> bool {
+        !self.marked_periods.is_empty()
     }
 
     /// Whether it is one node, with the level's normal piece there.
     pub fn is_one_piece(&self) -> bool {
-        self.coordinates().is_empty()
+        self.coordinates().is_empty() && !self.is_marked()
     }
 
     /// A place to begin the search for the highest weight.
@@ -260,20 +255,15 @@ impl Plane {
             long_prior_mean: f64::NAN,
             long_prior_var: f64::NAN,
             place: *place,
-            level_line: (f64::NAN, f64::NAN),
-            long_line: (f64::NAN, f64::NAN),
+            hidden: (f64::NAN, f64::INFINITY),
             ln_marks: 0.0,
-            mu: f64::NAN,
-            link: 0.0,
         };
         if ln_weight > f64::NEG_INFINITY {
-            self.prior(&mut node, &mut next, memo);
+            self.prior(&mut node, memo);
             self.update(&mut node);
-            if self.has_level_coordinate() {
-                self.mark(&mut node, next);
-            } else if !self.marks.is_empty() {
-                node.ln_marks = ln_marks(&self.marks, node.mean, node.var, sigma * sigma);
-                node.ln_weight += node.ln_marks;
+            node.hidden = (node.mean, node.var);
+            if self.is_marked() {
+                self.mark(&mut node);
             }
             if node.ln_weight.is_nan() && (sigma == 0.0 || history_sigma == 0.0) {
                 node.ln_weight = f64::NEG_INFINITY;
@@ -283,7 +273,7 @@ impl Plane {
     }
 
     /// The level before this period's readings.
-    fn prior(&self, node: &mut Node, next: &mut usize, memo: &Memo) {
+    fn prior(&self, node: &mut Node, memo: &Memo) {
         let (sigma2, history2, tau2) =
             (node.sigma * node.sigma, node.history_sigma * node.history_sigma, node.tau * node.tau);
         match &self.level {
@@ -314,22 +304,6 @@ impl Plane {
                 node.mean = long.mean;
                 node.var = node.long_var + tau2;
             }
-            Level::AboutMeanMarked(periods) => {
-                let (centre, scale) = periods.frame(history2, tau2);
-                let mu = centre + scale * node.place[*next];
-                *next += 1;
-                node.long_line = (centre, scale);
-                node.mu = mu;
-                let likelihood = || periods.ln_likelihood(mu, history2, tau2);
-                // Only beside a σ of this period alone do the same places come again.
-                let apart = self.history_sd.is_some();
-                let ln = if apart { memo.likelihood([mu, history2, tau2], likelihood) } else { likelihood() };
-                node.ln_weight += fm::ln(scale) + ln;
-                node.long_mean = mu;
-                node.long_var = 0.0;
-                node.mean = mu;
-                node.var = tau2;
-            }
             Level::Walk(walk) => {
                 let last = walk.at(history2, tau2);
                 node.ln_weight += last.ln_weight;
@@ -359,6 +333,10 @@ impl Plane {
         if node.prior_var == f64::INFINITY {
             node.mean = at.mean;
             node.var = at.var;
+            if node.long_var == f64::INFINITY {
+                node.long_mean = at.mean;
+                node.long_var = node.tau * node.tau + at.var;
+            }
             return;
         }
         let total = node.prior_var + at.var;
@@ -379,34 +357,78 @@ impl Plane {
         }
     }
 
-    /// The level's own coordinate, and what the marked readings say of it.
-    fn mark(&self, node: &mut Node, next: usize) {
-        let sigma2 = node.sigma * node.sigma;
+    /// What the marked readings make of the node: its weight, and mean and variance of both levels.
+    fn mark(&self, node: &mut Node) {
+        let by_long_run = self.by_long_run();
+        if by_long_run {
+            node.hidden = (node.long_mean, node.long_var);
+        }
+        let factor = Factor::of(self, node, true, None);
+        let (mut from, var) = node.hidden;
+        if var == f64::INFINITY {
+            from = factor.place();
+        }
+        let y = smoothed(&|y| factor.ln(y), from, var, factor.sharpness());
+        node.ln_marks = y.ln;
+        node.ln_weight += y.ln;
+        if by_long_run {
+            (node.long_mean, node.long_var) = (y.mean, y.var);
+            let (constant, slope, var) = self.level_given_hidden(node);
+            (node.mean, node.var) = (constant + slope * y.mean, var + slope * slope * y.var);
+        } else {
+            (node.mean, node.var) = (y.mean, y.var);
+            if !node.long_mean.is_nan() {
+                let (constant, slope, var) = self.long_run_given_hidden(node);
+                (node.long_mean, node.long_var) = (constant + slope * y.mean, var + slope * slope * y.var);
+            }
+        }
+    }
+
+    /// ln of what the marked readings multiply a node's weight by, by Gauss–Legendre panels: a rule of its own
+    /// to hold against the trapezoid's.
+    pub fn marks_by_panels(&self, node: &Node) -> f64 {
+        let factor = Factor::of(self, node, true, None);
+        let (m, v) = node.hidden;
+        let (centre, spread) =
+            if self.by_long_run() { (node.long_mean, node.long_var) } else { (node.mean, node.var) };
+        let half = 13.0 * spread.sqrt();
+        let width = 3.0 / (1.0 / v + factor.sharpness()).sqrt();
+        let count = (2.0 * half / width).ceil().max(1.0);
+        let size = 2.0 * half / count;
+        let mut sum = 0.0;
+        for panel in 0..count as usize {
+            let middle = centre - half + (panel as f64 + 0.5) * size;
+            for (x, w) in legendre::rule() {
+                let y = middle + 0.5 * size * x;
+                let normal = if v == f64::INFINITY {
+                    0.0
+                } else {
+                    -0.5 * (y - m) * (y - m) / v - 0.5 * fm::ln(v) - fm::HALF_LN_TWO_PI
+                };
+                sum += 0.5 * size * w * fm::exp(normal + factor.ln(y) - node.ln_marks);
+            }
+        }
+        node.ln_marks + fm::ln(sum)
+    }
+
+    /// This level given y, this period's marked readings left out: N(constant + slope · y, var).
+    pub fn level_given_hidden(&self, node: &Node) -> (f64, f64, f64) {
+        if !self.by_long_run() {
+            return (0.0, 1.0, 0.0);
+        }
+        level_given_long_run(&self.readings, node.sigma * node.sigma, node.tau * node.tau)
+    }
+
+    /// The long-run mean (of a walk: the level) given y.
+    pub fn long_run_given_hidden(&self, node: &Node) -> (f64, f64, f64) {
+        if self.by_long_run() || self.is_walk() {
+            return (0.0, 1.0, 0.0);
+        }
+        // Before the readings: μ ~ N(M, V) and θ | μ ~ N(μ, τ²); given θ the readings say no more of μ.
+        let (m, v) = (node.long_prior_mean, node.long_prior_var);
         let tau2 = node.tau * node.tau;
-        let (centre, scale) = marks::frame(node.mean, node.var, &self.marks, sigma2);
-        let theta = centre + scale * node.place[next];
-        node.ln_weight += fm::ln(scale);
-        if node.var < f64::INFINITY {
-            let error = theta - node.mean;
-            node.ln_weight -= 0.5 * (fm::ln(node.var) + error * error / node.var) + fm::HALF_LN_TWO_PI;
-        }
-        for mark in &self.marks {
-            node.ln_weight += mark.ln_chance(theta, sigma2);
-        }
-        node.level_line = (centre, scale);
-        node.mean = theta;
-        node.var = 0.0;
-        if self.is_walk() {
-            node.long_mean = theta;
-            node.long_var = 0.0;
-            node.link = 1.0;
-        } else if !node.long_mean.is_nan() {
-            // Before the readings: μ ~ N(M, V) and θ | μ ~ N(μ, τ²); given θ the readings say no more of μ.
-            let (m, v) = (node.long_prior_mean, node.long_prior_var);
-            node.link = if v > 0.0 { v / (v + tau2) } else { 0.0 };
-            node.long_mean = m + node.link * (theta - m);
-            node.long_var = if v > 0.0 { tau2 * node.link } else { 0.0 };
-        }
+        let slope = if v > 0.0 { v / (v + tau2) } else { 0.0 };
+        (m - slope * m, slope, if v > 0.0 { tau2 * slope } else { 0.0 })
     }
 
     pub fn is_walk(&self) -> bool {

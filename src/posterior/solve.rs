@@ -5,13 +5,14 @@ use super::build::{BiasOf, Built, Part, build};
 use super::closed::Conjugate;
 use super::law::Law;
 use super::marginal::{self, Weighted};
-use super::marked_level::{self, MarkedLevel};
+use super::marked::{self, Points};
+use super::marked_given::given;
 use super::moments::{Bounds, moment};
 use super::plane::{BetweenSd, Coordinate, Node, Plane, Sd};
 use super::shapes::Spread;
 use super::units::Units;
 use super::weighing::{Weighed, weigh};
-use super::{Basis, PeriodsPart, Piece, Posterior};
+use super::{Basis, PeriodsPart, Piece, Posterior, When};
 use crate::data::evidence::Evidence;
 use crate::math::fm;
 use crate::prior::{LevelPrior, Model};
@@ -32,7 +33,9 @@ pub(super) struct Inner {
     pub conjugate: Option<Conjugate>,
     /// The laws of the levels themselves, made when first asked for.
     pub levels: [OnceLock<Result<Law, Absent>>; 3],
-    /// And those of the within and the between sd.
+    /// With marked readings, points of the next level and of the long-run mean.
+    pub other_points: [OnceLock<Result<Vec<Points>, Absent>>; 2],
+    /// The laws of the within and the between sd.
     pub spreads: [OnceLock<Result<Law, Absent>>; 2],
     pub has_next: bool,
     pub has_long_run: bool,
@@ -47,8 +50,8 @@ pub(super) struct Nodes {
     /// Of every part its nodes and its share of the whole.
     pub weighed: Vec<(Weighed, f64)>,
     pub pieces: Vec<Piece>,
-    /// The level where readings of this period and of earlier ones are marked.
-    pub marked_level: Option<MarkedLevel>,
+    /// With marked readings: the level's points, outer units.
+    pub points: Vec<Points>,
     /// B of every piece.
     pub prior_shares: Vec<f64>,
     /// With a bias: the true levels of every piece.
@@ -84,6 +87,7 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
     let inner = Inner {
         conjugate,
         levels: Default::default(),
+        other_points: Default::default(),
         spreads: Default::default(),
         has_next: models_periods,
         has_long_run: models_periods && !built.parts.iter().any(|p| p.plane.is_walk()),
@@ -114,20 +118,15 @@ impl Nodes {
         let mut nodes = Nodes {
             weighed: Vec::new(),
             pieces: Vec::new(),
-            marked_level: None,
+            points: Vec::new(),
             prior_shares: Vec::new(),
             true_levels: Vec::new(),
             error: 0.0,
         };
+        let is_marked = parts.iter().any(|part| part.plane.is_marked());
         for (part, (weighed, share)) in parts.iter().zip(&weighed) {
             nodes.error = nodes.error.max(weighed.error);
-            if part.plane.is_marked() && !part.plane.marks.is_empty() && !part.plane.has_level_coordinate() {
-                if parts.len() > 1 {
-                    return Err(Absent::because(
-                        "a mixture of priors with and without marked readings in their periods is not served",
-                    ));
-                }
-                nodes.add_marked_level(marked_level::level(part, weighed)?, units);
+            if is_marked {
                 continue;
             }
             let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
@@ -144,6 +143,11 @@ impl Nodes {
                 }
             }
         }
+        if is_marked {
+            let weighted: Vec<Weighted<'_>> = weighted(parts, &weighed);
+            let level = |part: &Part, node: &Node| given(units, part, node, When::This, (1.0, 0.0, 0.0));
+            nodes.add_points(marked::points(&weighted, 1.0, &level)?, units);
+        }
         if nodes.pieces.is_empty() {
             return Err(Absent::failed("the posterior has no piece of any weight"));
         }
@@ -151,20 +155,26 @@ impl Nodes {
         Ok(nodes)
     }
 
-    fn add_marked_level(&mut self, level: MarkedLevel, units: &Units) {
-        self.pieces.extend(level.points().filter(|p| p.1 >= NEGLIGIBLE).map(|(theta, weight, sigma)| {
-            Piece {
-                weight,
-                level_mean: units.value_out(theta),
-                level_apart: units.sd_out(theta),
+    fn add_points(&mut self, points: Vec<Points>, units: &Units) {
+        for at in &points {
+            let reading_sd = units.sd_out(at.sigma);
+            self.pieces.extend(at.points.iter().filter(|p| p.1 >= NEGLIGIBLE).map(|(level, weight)| Piece {
+                weight: *weight,
+                level_mean: units.shift + level,
+                level_apart: *level,
                 level_var: 0.0,
-                reading_sd: units.sd_out(sigma),
+                reading_sd,
                 periods: None,
-            }
-        }));
-        self.prior_shares.resize(self.pieces.len(), 1.0);
-        self.marked_level = Some(level);
+            }));
+        }
+        self.points = points;
     }
+}
+
+/// Parts with their nodes and shares.
+fn weighted<'a>(parts: &'a [Part], weighed: &'a [(Weighed, f64)]) -> Vec<Weighted<'a>> {
+    let of = parts.iter().zip(weighed);
+    of.map(|(part, (weighed, share))| Weighted { part, weighed, share: *share }).collect()
 }
 
 /// Every part's nodes, and the parts' shares: weight before the readings times marginal likelihood.
@@ -260,7 +270,7 @@ fn no_sd(built: &Built) -> Option<Absent> {
 }
 
 impl Inner {
-    /// Whether some part is kept as densities along lines.
+    /// Whether levels are held as densities: readings are marked, here or in earlier periods.
     pub fn is_marked(&self) -> bool {
         self.parts.iter().any(|p| p.plane.is_marked())
     }
@@ -278,9 +288,7 @@ impl Inner {
     }
 
     pub fn weighted(&self) -> Result<Vec<Weighted<'_>>, Absent> {
-        let weighed = &self.nodes()?.weighed;
-        let of = self.parts.iter().zip(weighed);
-        Ok(of.map(|(part, (weighed, share))| Weighted { part, weighed, share: *share }).collect())
+        Ok(weighted(&self.parts, &self.nodes()?.weighed))
     }
 
     pub fn within_sd(&self) -> Result<Law, Absent> {

@@ -68,7 +68,7 @@ impl Gauge {
             }
         }
         let (mean, var) = widest(&top);
-        let (sd, widest_sd) = ((top.var + softness(&top)).sqrt(), var.sqrt());
+        let (sd, widest_sd) = (top.var.sqrt(), var.sqrt());
         let mut gauge = Gauge {
             low: [top.mean - 7.0 * sd; 2],
             high: [mean + 7.0 * widest_sd; 2],
@@ -102,7 +102,7 @@ impl Gauge {
         for node in nodes.iter().filter(|n| n.ln_weight > top - 37.0) {
             let w = fm::exp(node.ln_weight - top);
             whole += w;
-            middle += w * normal::cdf((self.middle - node.mean) / (node.var + softness(node)).sqrt());
+            middle += w * normal::cdf((self.middle - node.mean) / node.var.sqrt());
         }
         (top + fm::ln(whole) + ln_volume, middle / whole)
     }
@@ -116,7 +116,7 @@ impl Gauge {
             }
             let w = fm::exp(node.ln_weight - top);
             whole += w;
-            let sd = (node.var + softness(node)).sqrt();
+            let sd = node.var.sqrt();
             let (mean, var) = widest(node);
             let widest_sd = var.sqrt();
             for k in 0..2 {
@@ -156,18 +156,7 @@ impl Measured {
 fn widest(node: &Node) -> (f64, f64) {
     let reading = if node.sigma.is_nan() { 0.0 } else { node.sigma * node.sigma };
     let next = node.long_var + node.tau * node.tau;
-    if next.is_finite() {
-        (node.long_mean, next + reading + softness(node))
-    } else {
-        (node.mean, node.var + reading + softness(node))
-    }
-}
-
-/// Added to variances where levels are points on a line, so that the sums compared are smooth.
-fn softness(node: &Node) -> f64 {
-    let (level, long) = (node.level_line.1, node.long_line.1);
-    let square = |s: f64| if s.is_finite() { s * s } else { 0.0 };
-    square(level) + square(long)
+    if next.is_finite() { (node.long_mean, next + reading) } else { (node.mean, node.var + reading) }
 }
 
 /// Weighs a plane.
@@ -186,13 +175,8 @@ pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
             dims,
             ln_top: node.ln_weight,
         };
-        return Ok(Weighed {
-            nodes: vec![node],
-            ln_integral: node.ln_weight,
-            error: 0.0,
-            frame,
-            factor: 1.0,
-        });
+        let error = error_of_marks(plane, &node)?;
+        return Ok(Weighed { nodes: vec![node], ln_integral: node.ln_weight, error, frame, factor: 1.0 });
     }
     let mut frame = grid::frame(&f, plane.start(), dims)?;
     for (d, coordinate) in plane.coordinates().into_iter().enumerate() {
@@ -204,12 +188,8 @@ pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
                     frame.width[d] *= 1.4;
                 }
             }
-            Coordinate::LongRun | Coordinate::Level | Coordinate::Between => {}
+            Coordinate::Between => {}
         }
-    }
-    if plane.is_marked() {
-        // Laws over marked readings are followed between the nodes, out to tails that no gauge sees.
-        frame.stretch = [0.0; MOST];
     }
     let mut factor = FIRST;
     let coarse = grid::sweep(&f, &frame, factor, 0.37, floor(dims))?;
@@ -227,19 +207,35 @@ pub(super) fn weigh(plane: &Plane) -> Result<Weighed, Absent> {
         let again = gauge.measure(&nodes, frame.ln_volume(factor));
         let (error, in_tails) = measured.difference(&again);
         measured = again;
-        // Laws over marked readings are followed between the nodes, and settle their tails themselves.
-        if error <= AGREED && (in_tails <= AGREED_IN_TAILS || plane.is_marked()) {
+        if error <= AGREED && in_tails <= AGREED_IN_TAILS {
             let confirmed = confirm(plane, &frame, &nodes, &gauge, &measured)?;
+            let heaviest = nodes.iter().max_by(|a, b| a.ln_weight.total_cmp(&b.ln_weight));
+            let of_marks = heaviest.map_or(Ok(0.0), |node| error_of_marks(plane, node))?;
             return Ok(Weighed {
                 nodes,
                 ln_integral: measured.ln_integral,
-                error: error.max(confirmed),
+                error: error.max(confirmed).max(of_marks),
                 frame,
                 factor,
             });
         }
     }
     Err(Absent::failed("the quadrature over the within and between sd did not reach its promised accuracy"))
+}
+
+/// With marked readings: how far two rules for the integral over the level, or the long-run mean, at a node are
+/// apart, a rounding at least; an error where they disagree.
+fn error_of_marks(plane: &Plane, node: &Node) -> Result<f64, Absent> {
+    if !plane.is_marked() {
+        return Ok(0.0);
+    }
+    let error = (plane.marks_by_panels(node) - node.ln_marks).abs().max(f64::EPSILON);
+    if error.is_nan() || error > CONFIRMED {
+        return Err(Absent::failed(format!(
+            "two quadrature rules disagree by {error:e} over marked readings"
+        )));
+    }
+    Ok(error)
 }
 
 /// The same integrals by Gauss–Legendre panels over the box that holds the mass; an error where they

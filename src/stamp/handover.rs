@@ -24,15 +24,30 @@ pub fn handover(findings: &Findings) -> Handover {
 
 fn handed(series: &SeriesFindings, findings: &Findings) -> Handed {
     let posterior = series.posterior.as_ref();
-    let pieces = posterior.map_or(Ok(&[][..]), Posterior::pieces).unwrap_or_default();
     Handed {
         name: series.name.clone(),
         model: posterior.map(|posterior| posterior.model.clone()).map_err(|absent| absent.reason.clone()),
         readings: posterior.map_or(Evidence::Nothing, |posterior| posterior.readings.clone()),
-        pieces: pieces.iter().map(handed_piece).collect(),
+        pieces: posterior.map_or(Vec::new(), pieces),
         part_weights: posterior.map_or(Vec::new(), Posterior::part_weights),
         ledger: posterior.map_or(Vec::new(), |posterior| ledger(series, posterior, findings)),
     }
+}
+
+/// Where levels are held as densities the next level's are points, and stand for pieces without width.
+fn pieces(posterior: &Posterior) -> Vec<HandedPiece> {
+    let Some(points) = posterior.next_level_points() else {
+        return posterior.pieces().unwrap_or_default().iter().map(handed_piece).collect();
+    };
+    let handed = |(weight, level, reading_sd): (f64, f64, f64)| HandedPiece {
+        weight,
+        next_level: Some((level, 0.0)),
+        level: None,
+        long_run_mean: None,
+        between_sd: None,
+        reading_sd,
+    };
+    points.into_iter().map(handed).collect()
 }
 
 fn handed_piece(piece: &Piece) -> HandedPiece {
@@ -42,7 +57,7 @@ fn handed_piece(piece: &Piece) -> HandedPiece {
         // N(M, τ² + V), methods §1; in a random walk M and V are the level's own.
         next_level: periods
             .map(|part| (part.long_run_mean, part.long_run_var + part.between_sd * part.between_sd)),
-        level: (piece.level_mean, piece.level_var),
+        level: Some((piece.level_mean, piece.level_var)),
         long_run_mean: periods.map(|part| (part.long_run_mean, part.long_run_var)),
         between_sd: periods.map(|part| part.between_sd),
         reading_sd: piece.reading_sd,

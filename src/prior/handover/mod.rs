@@ -52,7 +52,8 @@ pub struct HandedPiece {
     pub weight: f64,
     /// `None` where the prior is no model of periods.
     pub next_level: Option<(f64, f64)>,
-    pub level: (f64, f64),
+    /// `None` where levels are held as densities (marked readings): the pieces are then the next level's.
+    pub level: Option<(f64, f64)>,
     pub long_run_mean: Option<(f64, f64)>,
     pub between_sd: Option<f64>,
     pub reading_sd: f64,
@@ -128,6 +129,9 @@ impl Handed {
                 "the prior is no model of periods: take it from the history, or state between_sd",
             );
         }
+        if self.pieces.iter().any(|piece| piece.level.is_none()) {
+            object.because("level", "with marked readings the pieces are points of the next level");
+        }
         object
             .put("readings", evidence_json(&self.readings))
             .put("pieces", Json::List(self.pieces.iter().copied().map(HandedPiece::to_json).collect()))
@@ -144,7 +148,7 @@ impl HandedPiece {
         Object::new()
             .put("weight", Json::number(self.weight))
             .put("next_level", self.next_level.map_or(Json::Null, pair))
-            .put("level", pair(self.level))
+            .put("level", self.level.map_or(Json::Null, pair))
             .put("long_run_mean", self.long_run_mean.map_or(Json::Null, pair))
             .put("between_sd", self.between_sd.map_or(Json::Null, Json::number))
             .put("reading_sd", Json::number(self.reading_sd))

@@ -63,7 +63,7 @@ fn piece(at: &At<'_>) -> Result<HandedPiece, String> {
     Ok(HandedPiece {
         weight: at.number("weight")?,
         next_level: pair_if("next_level")?,
-        level: pair("level")?,
+        level: pair_if("level")?,
         long_run_mean: pair_if("long_run_mean")?,
         between_sd: at.number_if("between_sd")?,
         reading_sd: at.number("reading_sd")?,
@@ -166,15 +166,17 @@ mod tests {
 
     fn handed() -> impl Strategy<Value = Handed> {
         let pair = || (number(), number());
-        let piece = (number(), prop::option::of(pair()), pair(), prop::option::of(pair()), number())
-            .prop_map(|(weight, next_level, level, long_run_mean, reading_sd)| HandedPiece {
+        let maybe = || prop::option::of(pair());
+        let piece = (number(), maybe(), maybe(), maybe(), number()).prop_map(
+            |(weight, next_level, level, long_run_mean, reading_sd)| HandedPiece {
                 weight,
                 next_level,
                 level,
                 long_run_mean,
                 between_sd: next_level.map(|next| next.0),
                 reading_sd,
-            });
+            },
+        );
         let line = (evidence(), prop::option::of(1..9u64), prop::option::of("[0-9a-f]{64}")).prop_map(
             |(evidence, n, sha256)| LedgerLine { period: Period::new("2024"), evidence, n, sha256 },
         );
