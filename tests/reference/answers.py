@@ -22,6 +22,7 @@ from scipy.optimize import brentq
 from brute_data import read
 from brute_model import Posterior
 from brute_normal import LD, Mix, big, density, ld, lower, mp_legendre, solve_ld, upper, zq
+from brute_ranking import difference_with_bias, ranking
 
 
 def between(a, b):
@@ -177,12 +178,14 @@ def answer(post, q, every):
     ask, log = q['ask'], post.log
     lim = post.limit
     name = q.get('of_period', 'this')
+    if ask in ('level interval', 'level chance') and 'true ' + name in post.laws:
+        name = 'true ' + name
     sig = post.laws['sigma']
     value = lambda t: ('end', post.out(t))
     prob = lambda p: ('chance', big(p))
     centre = lambda mix, what: value(mix.quantile(mp.mpf(0.5)) if log or not exists(post, what, 1) else mix.mean())
     if ask == 'classes':
-        mix = post.mix('this')
+        mix = post.mix('true this' if 'true this' in post.laws else 'this')
         cuts = [lim(b) for b in q['bounds']]
         chances = [mix.cdf(cuts[0])] + [np.sum(mix.w * between((a - mix.m) / mix.s, (b - mix.m) / mix.s)) for a, b in zip(cuts, cuts[1:])] + [mix.sf(cuts[-1])]
         return {'chances.%d' % k: prob(c) for k, c in enumerate(chances)}
@@ -194,7 +197,7 @@ def answer(post, q, every):
         if ask == 'level chance':
             return {'chance': prob(chance(mix, q, lim))}
         out = {k: value(t) for k, t in ends(mix, q, log).items()}
-        return {'estimate': centre(mix, name), **out}
+        return {'estimate': centre(mix, name.removeprefix('true ')), **out}
     if ask == 'reading interval':
         m, of = q.get('readings', 1), q.get('of', 'each')
         u2 = ld(mp.mpf(q['uncertainty']) ** 2) if 'uncertainty' in q else 0
@@ -290,6 +293,7 @@ def answer(post, q, every):
                 mix = Mix(post.w, m - ld(o.mean - post.shift), v + (ld(o.u**2) if o.u is not None else sig**2 / o.n))
         else:
             a, b = (every['posts'][s] for s in q['series'])
+            biased = a.model.bias2 and a.model.kind == 'stated'
             (ma, va), (mb, vb) = a.laws['this'], b.laws['this']
             d = ld(a.shift - b.shift)
             if a.model.kind == 'peers':       # one model of all levels
@@ -299,7 +303,9 @@ def answer(post, q, every):
                 mix = Mix(a.w, d, va + a.laws['sigma'] ** 2 / b.model.present.n)
             W = (a.w[:, None] * b.w).ravel() if len(a.w) * len(b.w) < 10**7 else np.zeros(1)
             ok = W > 1e-26
-            if a.model.kind != 'peers' and a.model.within['from'] != 'peers':
+            if biased:
+                mix = difference_with_bias(a, b, d)
+            elif a.model.kind != 'peers' and a.model.within['from'] != 'peers':
                 mix = Mix(W[ok], (ma[:, None] - mb + d).ravel()[ok] if len(W) > 1 else ma - mb + d, (va[:, None] + vb).ravel()[ok])
         w = lambda t: ('end', back(t))
         out = {k: w(t) for k, t in ends(mix, q, log).items()}
@@ -327,7 +333,7 @@ def laws(post):
     for name, shown in names.items():
         if name == 'reading' and post.model.within['from'] == 'none': continue
         if name != 'reading' and name not in post.laws: continue
-        mix = post.mix('this', post.laws['sigma']**2) if name == 'reading' else post.mix(name)
+        mix = post.mix('this', post.laws['sigma']**2) if name == 'reading' else post.mix('true ' + name if 'true ' + name in post.laws else name)
         here = {t: ('end', post.out(mix.quantile(p))) for t, p in TAILS.items()}
         what = heavy if name == 'reading' else name
         prefix = 'log_' if post.log else ''
@@ -345,77 +351,6 @@ def laws(post):
             if exists(post, which, 2): here['sd'] = ('sd', big(sd))
             out[shown] = here
     return out
-
-
-def ranking(posts, q):
-    """Chance of the highest (lowest) level and expected rank of every series."""
-    names = [s for s in posts if s in q.get('only', posts)]
-    sign = 1 if q.get('first', 'highest') == 'highest' else -1
-    first = posts[names[0]]
-    shift = [ld(posts[s].shift - first.shift) for s in names]
-    out = {}
-    if first.model.kind != 'peers' and first.model.within['from'] != 'peers':
-        laws = [posts[s].mix('this') for s in names]
-        laws = [Mix(l.w, sign * (l.m + d), l.s**2) for l, d in zip(laws, shift)]
-        edges = set()
-        for l in laws:
-            heavy = l.w > 1e-3
-            width = l.s[heavy].min() / 3
-            away = width * np.arange(0, 31)
-            if len(l.w) > 1:       # on to where a heavy tail is below 1e-24
-                away = np.concatenate([away, away[-1] * LD(1.3) ** np.arange(1, 75)])
-            edges |= set(l.quantile(mp.mpf(0.5)) + sign * d for d in away for sign in (-1, 1))
-        edges = np.array(sorted(edges), dtype=LD)
-        nodes, weights = mp_legendre(24)
-        half = np.diff(edges) / 2
-        t = ((edges[:-1] + edges[1:]) / 2)[:, None] + half[:, None] * nodes
-        w, t = (half[:, None] * weights).ravel(), t.ravel()
-        each = lambda f: np.array([[f(l, x) for x in t] for l in laws], dtype=LD)
-        f, F, G = each(Mix.pdf), each(Mix.cdf), each(Mix.sf)
-        for i, s in enumerate(names):
-            others = [j for j in range(len(names)) if j != i]
-            out[s] = np.sum(w * f[i] * np.prod(F[others], axis=0)), 1 + sum(np.sum(w * f[i] * G[j]) for j in others)
-    else:
-        obs = [(posts[s].model.present, d) for s, d in zip(names, shift)]
-        ok = first.w > 1e-21
-        weight, sigma = first.w[ok], (first.laws['sigma'] + 0 * first.w)[ok]
-        s2 = [sigma**2 / o.n for o, _ in obs]
-        x = [ld(o.mean - posts[s].shift) + d for (o, d), s in zip(obs, names)]
-        if first.model.kind == 'peers':
-            tau2 = (first.laws['tau'] ** 2 + 0 * first.w)[ok]
-            prec = sum(1 / (tau2 + v) for v in s2)
-            mu, var = sum(a / (tau2 + v) for a, v in zip(x, s2)) / prec, 1 / prec
-            pull = [(tau2 / (tau2 + v), v / (tau2 + v)) for v in s2]
-            zs = np.arange(-10.5, 10.6, 0.25).astype(LD)
-        else:
-            mu, var, pull, zs = 0 * sigma, 0 * sigma, [(1, 0)] * len(x), np.zeros(1, dtype=LD)
-        g = density(zs)
-        z = np.arange(-10.5, 10.6, 0.2).astype(LD)
-        h = density(z)
-        total = {s: LD(0) for s in names}
-        for k, zm in enumerate(zs):
-            m = [sign * (b * a + c * (mu + np.sqrt(var) * zm)) for a, (b, c) in zip(x, pull)]
-            r = [np.sqrt(b * v) for (b, _), v in zip(pull, s2)]
-            for i, s in enumerate(names):
-                t = m[i][:, None] + r[i][:, None] * z if np.ndim(m[i]) else m[i] + r[i][:, None] * z
-                inside = np.ones_like(t)
-                for j in range(len(names)):
-                    if j != i:
-                        inside = inside * lower((t - (m[j][:, None] if np.ndim(m[j]) else m[j])) / r[j][:, None])
-                total[s] += g[k] * np.sum(weight * (inside @ h))
-        scale = weight.sum() * g.sum() * h.sum()
-        for i, s in enumerate(names):
-            rank = LD(1)
-            for j in range(len(names)):
-                if j != i:
-                    (bi, ci), (bj, cj) = pull[i], pull[j]
-                    slope = cj - ci
-                    mean = bj * x[j] - bi * x[i] + slope * mu
-                    sd = np.sqrt(bj * s2[j] + bi * s2[i] + slope * slope * var)
-                    rank += np.sum(weight * lower(sign * mean / sd)) / weight.sum()
-            out[s] = total[s] / scale, rank
-    return {f'{s}:{n}': ('chance' if n == 'chance' else 'count', big(v)) for s, (c, r) in out.items()
-            for n, v in (('chance', c), ('expected_rank', r))}
 
 
 BESIDE = ('level interval', 'level chance', 'reading interval', 'reading chance', 'share beyond', 'percentile', 'characteristic value', 'classes')

@@ -36,6 +36,11 @@ class Model:
         self.changes = any(q['ask'] in ('change', 'difference') for q in spec['question'])
         earlier = sorted((p for p in own if int(p) < int(now)), key=int)
         self.shift = shift
+        # One b ~ N(0, u_b^2) in all readings: `this`, `next` and `long run` are as measured, `true ...` without it.
+        bias = spec.get('series', {}).get(series, {}).get('bias') or spec['quantity'].get('bias')
+        self.bias2 = ld(mp.mpf(bias['sd']) ** 2) if bias else LD(0)
+        self.sd_h = None         # fixed sigma of the history beside an unknown one of this period
+        self.move = None         # (centre, stretch, shift) of the prior's pieces: see `moved`
         P = self.prior
         self.kind = P['from']
         if self.kind == 'peers':
@@ -172,12 +177,38 @@ class Model:
         return float(np.log((np.std(xs) if len(xs) > 1 else 0) + 1e-12 + (float(self.scale) if self.scale else 0)))
 
     def at(self, s=None, h=None, t=None, present=True):
+        if self.move is not None:
+            return self.moved(s, h, t, present)
+        return self.at_once(s, h, t, present)
+
+    def moved(self, s, h, t, present):
+        """The prior of this level at each (sigma, tau), N(m, v), as N(q + c (m - q) + d, c^2 v), then the present readings."""
+        lw, laws = self.at_once(s, h, t, False)
+        assert self.bias2 == 0 and not self.own_uniform
+        q, c, d = self.move
+        m, v = laws['this']
+        m, v = q + c * (m - q) + d, c * c * v
+        laws = {k: laws[k] for k in ('sigma', 'tau', 'constant')}
+        laws.update(this=(m, v), v0=v, x=None, s2=None)
+        if not present:
+            return lw, laws
+        now, sigma = self.present, laws['sigma']
+        if s is not None and self.df_now:
+            more, constant = power(s, self.df_now, self.ss_now)
+            lw, laws['constant'] = lw + more, laws['constant'] + constant
+        x = ld(now.mean - self.shift) + 0 * sigma
+        s2 = ld(now.u**2) + 0 * sigma if now.u is not None else sigma**2 / now.n
+        laws['lw'], laws['x'], laws['s2'] = lw, x, s2
+        self.single(lw, laws, m, v)
+        return laws.pop('lw'), laws
+
+    def at_once(self, s=None, h=None, t=None, present=True):
         """Arrays of ln sigma, ln sigma of the history, ln tau -> ln weight (with Jacobians), laws."""
         shape = np.broadcast(*[a for a in (s, h, t) if a is not None]).shape if self.axes else (1,)
         zero = np.zeros(shape, dtype=LD)
         sigma = (np.exp(s) if s is not None else self.sd) + zero
         tau = (np.exp(t) if t is not None else (self.tau if self.tau is not None else LD(0))) + zero
-        sigma_h = np.exp(h) + zero if h is not None else sigma
+        sigma_h = np.exp(h) + zero if h is not None else sigma if self.sd_h is None else self.sd_h + zero
         lw, constant = zero.copy(), LD(0)
         if s is not None:
             if self.own_uniform:
@@ -219,15 +250,23 @@ class Model:
                 v0 = sigma**2 / ld(P['worth_readings'])
             else:
                 v0 = self.v0 + zero
-            self.single(lw, laws, self.m0 + zero, v0)
+            self.single(lw, laws, self.m0 + zero, v0 + self.bias2)
             lw = laws.pop('lw')
+            self.true(laws, {'this': (v0, v0)}, v0 + self.bias2)
         elif self.kind == 'stated':          # about the long run
             if now is None:
-                laws['this'] = (self.m0 + zero, self.v0 + tau**2)
+                laws['this'] = (self.m0 + zero, self.v0 + self.bias2 + tau**2)
             else:
+                if self.changes and self.sd is not None:      # the two periods alone
+                    pairs = {}
+                    for name, xa, va in self.history(sigma_h):
+                        self.about(lw, pairs, [(name, xa, va), ('now', x, s2)], tau, flat=False)
+                    laws.update({k: v for k, v in pairs.items() if k.startswith('change')})
                 self.about(lw, laws, [('now', x, s2)], tau, flat=False)
                 lw = laws.pop('lw')
-            laws['v0'] = self.v0 + tau**2
+            laws['v0'] = self.v0 + self.bias2 + tau**2
+            self.true(laws, {'this': (self.v0 + tau**2, self.v0 + tau**2), 'next': (self.v0 + tau**2, self.v0 + 0 * tau),
+                             'long run': (self.v0 + 0 * tau, self.v0 + 0 * tau)}, laws['v0'])
         elif pattern == 'about a mean' and 'weight_of_history' in P:
             obs = self.history(sigma_h)
             self.about(lw, laws, obs, tau, flat=True)
@@ -249,7 +288,24 @@ class Model:
             lw = laws.pop('lw')
         if self.kind == 'peers':
             laws.pop('next', None), laws.pop('long run', None)
+        if self.bias2 and self.kind not in ('stated', 'quantiles'):
+            # b is unseen behind a flat mean: independent of the levels as measured.
+            for name in ('this', 'next', 'long run'):
+                if name in laws:
+                    laws['true ' + name] = (laws[name][0], laws[name][1] + self.bias2)
         return lw, laws
+
+    def true(self, laws, of, before):
+        """With a bias: true levels by conditioning each (variance, covariance with this level) on the reading of variance
+        `before` + s^2."""
+        if not self.bias2:
+            return
+        for name, (var, cov) in of.items():
+            if laws['x'] is None:
+                laws['true ' + name] = (self.m0 + 0 * var, var)
+            else:
+                gain = cov / (before + laws['s2'])
+                laws['true ' + name] = (self.m0 + gain * (laws['x'] - self.m0), var - gain * cov)
 
     def history(self, sigma_h):
         if not hasattr(self, 'shifted'):
@@ -269,12 +325,13 @@ class Model:
 
     def about(self, lw, laws, obs, tau, flat):
         w = [1 / (tau**2 + v) for _, _, v in obs]
-        prec = sum(w) + (0 if flat else 1 / self.v0)
-        mu = (sum(a * x for a, (_, x, _) in zip(w, obs)) + (0 if flat else self.m0 / self.v0)) / prec
+        v_run = None if flat else self.v0 + self.bias2
+        prec = sum(w) + (0 if flat else 1 / v_run)
+        mu = (sum(a * x for a, (_, x, _) in zip(w, obs)) + (0 if flat else self.m0 / v_run)) / prec
         var = 1 / prec
         lw = lw + sum(np.log(a) for a in w) / 2 - np.log(prec) / 2 - sum(a * (x - mu) ** 2 for a, (_, x, _) in zip(w, obs)) / 2
         if not flat:
-            lw = lw - (mu - self.m0) ** 2 / (2 * self.v0)
+            lw = lw - (mu - self.m0) ** 2 / (2 * v_run)
         laws['lw'] = lw
         laws['long run'], laws['next'] = (mu, var), (mu, tau**2 + var)
         given = {}
