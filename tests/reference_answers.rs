@@ -21,7 +21,7 @@ const OF_END: f64 = 1e-10;
 /// Specs that take more than a few seconds without optimisation: two or three unknown spreads under a dozen
 /// alternatives, or shares and percentiles over them. `cargo test --release reference_answers -- --include-ignored`
 /// runs them too.
-const LONG: [&str; 18] = [
+const LONG: [&str; 19] = [
     "09-history-uniform-known",
     "10-history-uniform-history",
     "11-history-half-normal",
@@ -40,25 +40,33 @@ const LONG: [&str; 18] = [
     "44-two-sigmas",
     "47-stated-df-history",
     "53-narrow-far-known",
+    "79-rules-stated-readings",
 ];
 
 fn folder() -> PathBuf {
     Path::new(env!("CARGO_MANIFEST_DIR")).join("tests/reference")
 }
 
-/// The number of that name; `chances.3` is the fourth of a list.
+/// The number of that name: `chances.3` is the fourth of a list, `conditions.1.limits.0` the first of that list in the
+/// second row, `conditions.1.limits.len` how many it has.
 fn number(figures: &Figures, name: &str) -> Result<f64, String> {
-    if let Some((list, place)) = name.split_once('.') {
-        let place: usize = place.parse().map_err(|_| format!("no place {place}"))?;
-        return match figures.get(list) {
-            Some(Item::Numbers(numbers, _)) => {
-                numbers.get(place).copied().ok_or_else(|| format!("{} numbers only", numbers.len()))
-            }
+    let Some((list, rest)) = name.split_once('.') else {
+        return match figures.get(name) {
+            Some(Item::Number(Ok(value), _)) => Ok(*value),
+            Some(Item::Whole(Some(count))) => Ok(*count as f64),
             other => Err(format!("{other:?}")),
         };
-    }
-    match figures.get(name) {
-        Some(Item::Number(Ok(value), _)) => Ok(*value),
+    };
+    let place = |text: &str| text.parse::<usize>().map_err(|_| format!("no place {text}"));
+    match figures.get(list) {
+        Some(Item::Numbers(numbers, _)) if rest == "len" => Ok(numbers.len() as f64),
+        Some(Item::Numbers(numbers, _)) => {
+            numbers.get(place(rest)?).copied().ok_or_else(|| format!("{} numbers only", numbers.len()))
+        }
+        Some(Item::Rows(rows)) => {
+            let (row, inner) = rest.split_once('.').ok_or("a row has no value of its own")?;
+            number(rows.get(place(row)?).ok_or_else(|| format!("{} rows only", rows.len()))?, inner)
+        }
         other => Err(format!("{other:?}")),
     }
 }
@@ -94,6 +102,7 @@ fn given(
     match basis {
         "prior_only" => number(&answer.prior_only, name),
         "readings_only" => number(&answer.readings_only, name),
+        "rule" => number(&answer.rule_figures, name),
         _ => number(&answer.figures, name),
     }
 }
@@ -128,6 +137,8 @@ fn error_in_promises(kind: &str, got: f64, wanted: f64, spread: f64) -> f64 {
         "chance" if wanted < SMALLEST_RELATIVE => ABSOLUTE_OF_CHANCE,
         "chance" | "count" => RELATIVE_OF_CHANCE * wanted,
         "sd" => OF_END * wanted,
+        // A count of things is right or wrong.
+        "whole" => 0.1,
         _ => OF_END * wanted.abs().max(spread),
     };
     // A figure that is no number must fail.
@@ -210,6 +221,10 @@ fn compare(wanted: impl Fn(&str) -> bool, at_least: usize) {
                 let ask = asked(&findings, question);
                 let figures = figures.as_object().expect("figures");
                 let ends = figures.get("lower").zip(figures.get("upper"));
+                // The levels of an operating characteristic span a range of their own.
+                let levels =
+                    ["0", "40"].map(|row| figures.get(&format!("operating_characteristic.{row}.level")));
+                let ends = ends.or(levels[0].zip(levels[1]));
                 let spread = match ends.or(figures.get("0.025").zip(figures.get("0.975"))) {
                     Some((lower, upper)) => (value(upper) - value(lower)) / 4.0,
                     None => 0.0,

@@ -16,16 +16,8 @@ pub struct Reading {
 /// Chooses by the first bytes of the file and the spec.
 pub fn choose(first: &[u8], named: Option<&str>, file: &str) -> Result<Reading, Fault> {
     let marked = Encoding::for_bom(first);
-    let wanted = match named {
-        None => None,
-        Some(label) => match Encoding::for_label(label.trim().as_bytes()) {
-            Some(encoding) => Some(encoding),
-            None => {
-                return Err(Fault::wrong("unknown-encoding", format!("\"{label}\" names no encoding"))
-                    .expected("a name such as \"utf-8\", \"windows-1252\", \"iso-8859-15\", \"utf-16le\""));
-            }
-        },
-    };
+    // The plan takes no name that is not known.
+    let wanted = named.and_then(|label| Encoding::for_label(label.trim().as_bytes()));
     let (encoding, mark_bytes) = match (marked, wanted) {
         (Some((marked, _)), Some(wanted)) if marked != wanted => {
             let message = format!(

@@ -107,6 +107,8 @@ impl Tally {
 #[derive(Debug, Clone, Default)]
 pub struct Group {
     pub members: Vec<Member>,
+    /// One of them has a mark.
+    pub marked: bool,
 }
 
 #[derive(Debug, Clone, Copy)]
@@ -360,8 +362,8 @@ impl Gather {
         let groups = &mut self.cells[number].groups;
         match groups.get_mut(replicate) {
             Some(group) => {
-                let marked = |member: &Member| member.observed.mark != Mark::None;
-                if marked(&member) || group.members.iter().any(marked) {
+                group.marked |= member.observed.mark != Mark::None;
+                if group.marked {
                     faults.note("marked-replicate", || {
                         let message = format!(
                             "the replicates \"{}\" are several rows, one of them with a mark: their average is not known",
@@ -376,7 +378,8 @@ impl Gather {
                 group.members.push(member);
             }
             None => {
-                groups.insert(replicate.into(), Group { members: vec![member] });
+                let marked = member.observed.mark != Mark::None;
+                groups.insert(replicate.into(), Group { members: vec![member], marked });
             }
         }
     }

@@ -187,25 +187,10 @@ fn read_values(
     let SourceKind::Readings { coverage, marks, .. } = &source.what else {
         return;
     };
+    // The plan gives values in the spec one series and one period, and as many uncertainties as values.
     let (SeriesOf::Always(series), PeriodOf::Always(period)) = (&source.series, &source.period) else {
-        faults.push(
-            Fault::wrong("values-without-columns", "values in the spec have no columns")
-                .at(source.span.place())
-                .repair("use in_series and in_period"),
-        );
         return;
     };
-    if let Some(uncertainties) = uncertainties
-        && uncertainties.len() != values.len()
-    {
-        let message = format!("{} values, but {} uncertainties", values.len(), uncertainties.len());
-        faults.push(
-            Fault::wrong("uncertainties-differ", message)
-                .at(source.span.place())
-                .expected("one uncertainty for each value"),
-        );
-        return;
-    }
     let factor = match coverage {
         Coverage::Factor(factor) => *factor,
         Coverage::Column(_) => 1.0,

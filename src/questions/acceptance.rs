@@ -18,6 +18,9 @@ use crate::posterior::{self, Basis};
 use crate::quantity::{Absent, Beyond, Figure, Scale};
 use std::cell::RefCell;
 
+/// Beyond so many errors of the readings' mean, a place that cannot be computed is passed over.
+const FAR_OFF: f64 = 12.0;
+
 /// A rule on one series' answer, with the means to ask what it would say elsewhere.
 pub struct World<'a> {
     pub question: &'a dyn Question,
@@ -155,10 +158,24 @@ impl<'a> World<'a> {
     /// Every place where a condition begins or ceases to hold, rising.
     pub fn crossings(&self) -> Result<Vec<Crossing>, Absent> {
         let conditions = self.conditions()?;
-        let places = self.places();
-        let mut figures = Vec::with_capacity(places.len());
-        for place in &places {
-            figures.push(self.figures(*place)?);
+        let mut places = Vec::new();
+        let mut figures = Vec::new();
+        for place in self.places() {
+            let compared = |figures: Figures| -> Result<Figures, Absent> {
+                for (_, _, condition, _) in &conditions {
+                    rule::figure(&figures, figure_of(*condition))?;
+                }
+                Ok(figures)
+            };
+            match self.figures(place).and_then(compared) {
+                Ok(there) => {
+                    places.push(place);
+                    figures.push(there);
+                }
+                // So far from what was read that no posterior reaches its accuracy, nothing is looked for.
+                Err(absent) if absent.failed && (place - self.mean).abs() > FAR_OFF * self.mean_sd => {}
+                Err(absent) => return Err(absent),
+            }
         }
         let mut crossings = Vec::new();
         for (verdict, index, condition, against) in conditions {

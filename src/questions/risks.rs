@@ -9,8 +9,8 @@
 
 use super::acceptance::{self, Range, World};
 use super::figures::{Figures, Item, Meaning};
-use super::moved::{self, Move};
-use super::terms;
+use super::moved;
+use super::{Linear, beyond, terms};
 use crate::data::evidence::Evidence;
 use crate::math::{fm, normal, quadrature};
 use crate::plan::Condition;
@@ -28,23 +28,16 @@ pub fn figures(world: &World<'_>, ranges: &[Range]) -> Figures {
     let accepting = linear.and_then(|linear| acceptance::accepting(world.rule, linear.beyond));
     if let (Some(linear), Some((verdict, condition))) = (linear, accepting) {
         let small_is_good = world.rule.verdicts[verdict].conditions[condition].0 == Condition::ChanceAtMost;
-        let specific = match &world.movable {
-            Some(movable) => {
-                let (out, within) = movable.split(Move::NONE);
-                Ok(if small_is_good { out } else { within })
-            }
-            None => Err(Absent::because("the chance is not that of one level lying beyond")),
-        };
-        figures = figures.number("specific_risk", specific, Meaning::Chance);
+        let bad = if small_is_good { linear.beyond } else { complement(linear.beyond) };
+        figures = figures.number("specific_risk", specific(world, linear, bad), Meaning::Chance);
         let accepted: Vec<(f64, f64)> = ranges
             .iter()
             .filter(|range| range.verdict == verdict)
             .map(|range| (range.from, range.to))
             .collect();
-        let bad = if small_is_good { linear.beyond } else { complement(linear.beyond) };
         let simple = linear.when == When::This && linear.variance == 0.0;
         let global = if simple {
-            of_prior(world, shifted(bad, linear.shift), &accepted)
+            of_prior(world, bad, &accepted)
         } else {
             Err(Absent::because("a global risk is given for rules on this period's level"))
         };
@@ -62,6 +55,19 @@ pub fn figures(world: &World<'_>, ranges: &[Range]) -> Figures {
     figures
         .with("verdicts", Item::Texts(says))
         .with("operating_characteristic", Item::Rows(characteristic(world, ranges)))
+}
+
+/// The chance, given prior and readings, of lying where the claim fails.
+fn specific(world: &World<'_>, linear: Linear, bad: Beyond) -> Figure {
+    let posterior = world.subject.posterior.clone()?;
+    let of = |sigma: f64| world.question.linear(world.subject, sigma);
+    let law = if linear.true_level && linear.variance == 0.0 {
+        posterior.level_shifted(linear.when, &|sigma| of(sigma).map_or(f64::NAN, |own| own.shift))?
+    } else {
+        let given = |sigma| of(sigma).map_or((f64::NAN, f64::NAN), |own| (own.shift, own.variance));
+        posterior.affine(linear.when, 1.0, &given)?
+    };
+    Ok(beyond::chance(&law, bad))
 }
 
 /// What lies beyond, seen from the other side (ends aside).
@@ -84,7 +90,7 @@ fn shifted(beyond: Beyond, shift: f64) -> Beyond {
     }
 }
 
-/// Both global risks over the prior's pieces.
+/// Both global risks over the prior's pieces; what is asked about may lie further from the level where σ is larger.
 fn of_prior(world: &World<'_>, bad: Beyond, accepted: &[(f64, f64)]) -> Result<(f64, f64), Absent> {
     let own = world.subject.posterior.clone()?;
     if own.model.level == LevelPrior::Flat {
@@ -106,6 +112,8 @@ fn of_prior(world: &World<'_>, bad: Beyond, accepted: &[(f64, f64)]) -> Result<(
             ));
         }
         let level = (piece.level_mean, piece.level_var.sqrt());
+        let shift = world.question.linear(world.subject, piece.reading_sd).map_or(0.0, |own| own.shift);
+        let bad = shifted(bad, shift);
         let (accepted_badly, rejected_wrongly) = global_risks(level, mean_var.sqrt(), bad, accepted)?;
         consumer += piece.weight * accepted_badly;
         producer += piece.weight * rejected_wrongly;

@@ -5,6 +5,7 @@
 //! before it is kept.
 
 mod hostile;
+mod large;
 
 use reassay::diagnostics::render::{Look, render};
 use reassay::diagnostics::{Fault, Faults};
@@ -61,17 +62,6 @@ fn every_faulty_spec_gets_the_message_on_record() {
 /// The folders whose faults must each have a case here.
 const COVERED: &[&str] = &["src/spec", "src/plan", "src/data"];
 
-/// Codes that no case here shows: bounds that take a large file to reach (tested beside their code),
-/// and what the plan finds before the data are read.
-const SHOWN_ELSEWHERE: &[&str] = &[
-    "record-too-long",
-    "too-many-replicates",
-    "too-many-singles",
-    "uncertainties-differ",
-    "unknown-encoding",
-    "values-without-columns",
-];
-
 #[test]
 fn every_kind_of_fault_has_a_case() {
     let mut codes = BTreeSet::new();
@@ -91,7 +81,7 @@ fn every_kind_of_fault_has_a_case() {
             shown.extend(faults.into_iter().map(|fault| fault.code.to_string()));
         }
     }
-    shown.extend(SHOWN_ELSEWHERE.iter().map(|code| code.to_string()));
+    shown.extend(large::CODES.iter().map(|code| code.to_string()));
     let missing: Vec<&String> = codes.difference(&shown).collect();
     assert!(codes.len() > 15, "only {codes:?} were found in the sources");
     assert!(missing.is_empty(), "no case in tests/faults shows {missing:?}");

@@ -23,6 +23,7 @@ from brute_data import read
 from brute_model import Posterior
 from brute_normal import LD, Mix, big, density, ld, lower, mp_legendre, solve_ld, upper, zq
 from brute_ranking import difference_with_bias, ranking
+from brute_rules import rule_figures
 
 
 def between(a, b):
@@ -377,7 +378,7 @@ def solve(path):
     with open(path, 'rb') as f:
         spec = tomllib.load(f)
     data, log, now = read(spec)
-    results, models = [], {}
+    results, models, scans = [], {}, {}
     for fine in (False, True):
         posts = {}
         out = {}
@@ -385,7 +386,7 @@ def solve(path):
         for s in names:
             posts[s] = Posterior(spec, data, s, now, log, fine)
             posts[s].other = 2 / 3 if fine else 1
-        every = {'posts': posts, 'data': data, 'now': now}
+        every = {'posts': posts, 'data': data, 'now': now, 'scans': scans}
         for s in names:
             post = posts[s]
             here = {}
@@ -395,6 +396,11 @@ def solve(path):
             for q in spec['question']:
                 if q['ask'] not in ('difference', 'ranking'):
                     here[q['id']] = answer(post, q, every)
+            for q in spec['question']:
+                if 'rule' in q:
+                    def make(other, move=None, present=True):
+                        return Posterior(spec, other, s, now, log, fine, present, models={}, move=move, shift=post.shift)
+                    here[q['id'] + '.rule'] = rule_figures(post, q, every, answer, make)
             here.update(beside(spec, data, s, now, log, fine, every, models.setdefault(s, {})))
             for name, figures in laws(post).items():
                 here['posterior.' + name] = figures

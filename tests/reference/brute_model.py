@@ -40,6 +40,7 @@ class Model:
         bias = spec.get('series', {}).get(series, {}).get('bias') or spec['quantity'].get('bias')
         self.bias2 = ld(mp.mpf(bias['sd']) ** 2) if bias else LD(0)
         self.sd_h = None         # fixed sigma of the history beside an unknown one of this period
+        self.quick = False
         self.move = None         # (centre, stretch, shift) of the prior's pieces: see `moved`
         P = self.prior
         self.kind = P['from']
@@ -408,7 +409,11 @@ class Model:
         v = call([g.ravel() for g in grid])
         i = int(np.argmax(v))
         x = np.array([g.ravel()[i] for g in grid])
-        for _ in range(3):
+        for half in ([1.5 * 0.55**i for i in range(14)] if self.quick else []):       # one of many like solutions: near is enough
+            at = np.linspace(-half, half, 21 if k == 1 else 9)
+            grid = [g.ravel() for g in np.meshgrid(*[c + at for c in x], indexing='ij')]
+            x = np.array([g[int(np.argmax(call(grid)))] for g in grid])
+        for _ in range(0 if self.quick else 3):
             r = minimize(lambda p: -float(call([np.array([q]) for q in p])[0]), x, method='Nelder-Mead',
                          options={'xatol': 1e-7, 'fatol': 1e-10, 'maxiter': 2000, 'initial_simplex': np.vstack([x] + [x + 0.3 * e for e in np.eye(k)])})
             x = r.x
@@ -473,19 +478,24 @@ class Model:
 
 
 class Posterior:
-    def __init__(self, spec, data, series, now, log, fine, present=True, models=None):
+    def __init__(self, spec, data, series, now, log, fine, present=True, models=None, move=None, shift=None):
         """`present` false leaves this period's readings out."""
         self.present = present
         first = data[series].get(now) or list(data[series].values())[-1]
-        self.shift = mp.mpf(first.mean)
+        self.shift = mp.mpf(first.mean) if shift is None else shift
         self.log, self.spec, self.series = log, spec, series
         P = spec['prior']
-        mk = lambda prior=None: Model(spec, data, series, now, log, prior, self.shift)
+        def mk(prior=None):
+            model = Model(spec, data, series, now, log, prior, self.shift)
+            model.quick = shift is not None
+            return model
         cache = spec.setdefault('_models', {}) if models is None else models
         if P['from'] == 'mixture':
             parts = []
             for i, part in enumerate(P['parts']):
                 model = cache.setdefault((series, i), mk(part))
+                if move is not None:
+                    model.move = move
                 w, laws, z = model.nodes(fine, present)
                 z0 = model.nodes(fine, present=False)[2]
                 parts.append((ld(part['weight']), w, laws, z - z0))
@@ -499,10 +509,12 @@ class Posterior:
                 if isinstance(first, tuple):
                     self.laws[k] = tuple(np.concatenate([l[k][i] + np.zeros(len(w), dtype=LD) for _, w, l, _ in parts]) for i in (0, 1))
                 else:
-                    self.laws[k] = np.concatenate([l[k] + np.zeros(len(w), dtype=LD) for _, w, l, _ in parts])
+                    self.laws[k] = None if parts[0][2][k] is None else np.concatenate([l[k] + np.zeros(len(w), dtype=LD) for _, w, l, _ in parts])
             self.model = mk(P['parts'][0])
         else:
             self.model = cache.setdefault(series, mk())
+            if move is not None:
+                self.model.move = move
             self.w, self.laws, _ = self.model.nodes(fine, present)
 
     def mix(self, name, extra=0):
