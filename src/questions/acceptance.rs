@@ -12,9 +12,11 @@ use super::moved::{self, Movable, Move};
 use super::rule::{self, figure_of, first_holding, threshold};
 use super::{Question, Subject, risks, terms, tipping};
 use crate::data::PeriodData;
+use crate::data::evidence::Evidence;
 use crate::math::{fm, roots};
 use crate::plan::{Condition, Rule, Threshold};
 use crate::posterior::{self, Basis};
+use crate::prior::Model;
 use crate::quantity::{Absent, Beyond, Figure, Scale};
 use std::cell::RefCell;
 
@@ -82,13 +84,19 @@ impl<'a> World<'a> {
     /// The figures that the conditions compare, had the readings' mean been this.
     pub fn figures(&self, mean: f64) -> Result<Figures, Absent> {
         let by = mean - self.mean;
-        if let Some(movable) = &self.movable {
+        if let Some(movable) = &self.movable
+            && movable.reaches(Move::readings(by))
+        {
             let chance = movable.chance(Move::readings(by));
             return Ok(Figures::default().number("chance", Ok(chance), Meaning::Chance));
         }
         let own = self.subject.posterior.clone()?;
-        let evidence = moved::moved(&own.readings, by);
-        let posterior = posterior::solve(&own.model, &evidence, Basis::Both)?;
+        self.solved(&own.model, moved::moved(&own.readings, by))
+    }
+
+    /// The figures under another model or other readings.
+    pub fn solved(&self, model: &Model, evidence: Evidence) -> Result<Figures, Absent> {
+        let posterior = posterior::solve(model, &evidence, Basis::Both)?;
         let period = self.subject.period.map(|period| PeriodData {
             period: period.period.clone(),
             evidence,
@@ -121,7 +129,8 @@ impl<'a> World<'a> {
     /// limit, wider and wider apart beyond.
     fn places(&self) -> Vec<f64> {
         const NEAR: i32 = 6;
-        const FAR: [f64; 9] = [8.0, 12.0, 16.0, 24.0, 32.0, 48.0, 64.0, 96.0, 128.0];
+        const FAR: [f64; 15] =
+            [8.0, 10.0, 12.0, 16.0, 20.0, 24.0, 28.0, 32.0, 36.0, 40.0, 48.0, 56.0, 64.0, 96.0, 128.0];
         let mut centres = vec![self.mean];
         if let Some(movable) = &self.movable {
             let shift = movable.parts().iter().map(|part| part.weight * part.linear.shift).sum::<f64>();

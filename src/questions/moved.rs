@@ -210,6 +210,29 @@ impl Movable {
         self.split(by).0
     }
 
+    /// Whether the pieces at hand still hold the whole posterior after the move. They were made where the
+    /// unmoved one lies; a far move shifts its weight to where they are sparse or end, and then the model has to
+    /// be solved again.
+    pub fn reaches(&self, by: Move) -> bool {
+        const AT_THE_EDGE: f64 = 1e-22;
+        const SEEN: f64 = 1e-13;
+        if self.parts.len() == 1 {
+            return true;
+        }
+        let logs: Vec<f64> = self.parts.iter().map(|part| part.ln_factor(by)).collect();
+        let top = self.parts.iter().zip(&logs).map(|(part, ln)| fm::ln(part.weight) + ln);
+        let top = top.fold(f64::NEG_INFINITY, f64::max);
+        let (mut whole, mut edge) = (0.0, 0.0);
+        for (part, ln) in self.parts.iter().zip(logs) {
+            let weight = fm::exp(fm::ln(part.weight) + ln - top);
+            whole += weight;
+            if part.weight < AT_THE_EDGE {
+                edge += weight;
+            }
+        }
+        edge <= SEEN * whole
+    }
+
     /// The prior's share of the level, Σ w B, after the move.
     pub fn prior_share(&self, by: Move) -> f64 {
         let logs: Vec<f64> = self.parts.iter().map(|part| part.ln_factor(by)).collect();

@@ -13,7 +13,7 @@ use super::terms;
 use crate::data::evidence::Evidence;
 use crate::math::fm;
 use crate::posterior::{self, Basis, When};
-use crate::prior::LevelPrior;
+use crate::prior::{Adjust, LevelPrior, Model};
 use crate::quantity::{Absent, Figure};
 
 /// `tipping_prior_mean`, `tipping_prior_readings`.
@@ -47,7 +47,13 @@ fn prior_of<'a>(world: &'a World<'_>) -> Result<(&'a Movable, f64, f64), Absent>
 
 /// The verdict after a move of the prior.
 fn verdict(world: &World<'_>, movable: &Movable, by: Move) -> Result<usize, Absent> {
-    let figures = Figures::default().number("chance", Ok(movable.chance(by)), Meaning::Chance);
+    let figures = if movable.reaches(by) {
+        Figures::default().number("chance", Ok(movable.chance(by)), Meaning::Chance)
+    } else {
+        let own = world.subject.posterior.clone()?;
+        let adjust = Adjust { centre: by.centre, stretch: by.stretch, shift: by.prior };
+        world.solved(&Model { adjust: Some(adjust), ..own.model.clone() }, own.readings.clone())?
+    };
     first_holding(world.rule, &figures, world.subject.plan, world.subject.series)
 }
 

@@ -153,7 +153,7 @@ def rule_figures(post, q, every, answer, make):
     conds = conditions(rule)
     if scan is None:
         centres = [x0] + [log_of(L) for L in limits_of(q)] + [log_of(t) for _, _, k, t in conds if FIGURE[k] != 'chance']
-        offsets = [mp.mpf(k) * 3 / 4 for k in range(9)] + [8, 10, 13, 17, 22, 30, 40, 60]
+        offsets = [mp.mpf(k) * 3 / 4 for k in range(9)] + [8, 10, 13, 17, 22, 30, 40, 60, 80, 100, 128]
         places = sorted({c + sign * d * mean_sd for c in centres for d in offsets for sign in (-1, 1)})
         places = [p for i, p in enumerate(places) if i == 0 or p - places[i - 1] > 0.3 * mean_sd]
         found = [at(p) for p in places]
