@@ -103,7 +103,13 @@ fn given(
         "prior_only" => number(&answer.prior_only, name),
         "readings_only" => number(&answer.readings_only, name),
         "rule" => number(&answer.rule_figures, name),
-        _ => number(&answer.figures, name),
+        "" => number(&answer.figures, name),
+        alternative => {
+            let under = found.sensitivity.iter().find(|under| under.alternative == alternative);
+            let under = under.ok_or("no such alternative")?;
+            let of = under.answers.iter().find(|(own, ..)| own == id).ok_or("not asked under it")?;
+            number(&of.1, name)
+        }
     }
 }
 

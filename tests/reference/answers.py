@@ -19,6 +19,7 @@ import json, sys, tomllib, glob, os, time
 import numpy as np
 import mpmath as mp
 from scipy.optimize import brentq
+from brute_alternatives import ASKED, alternatives
 from brute_data import read
 from brute_model import Posterior
 from brute_normal import LD, Mix, big, density, ld, lower, mp_legendre, solve_ld, upper, zq
@@ -401,6 +402,14 @@ def solve(path):
                     def make(other, move=None, present=True):
                         return Posterior(spec, other, s, now, log, fine, present, models={}, move=move, shift=post.shift)
                     here[q['id'] + '.rule'] = rule_figures(post, q, every, answer, make)
+            if spec['review'].get('particulars', {}).get('Reference') == 'sensitivity':
+                def under(other, move=None, present=True, sd_h=None):
+                    other = {k: v for k, v in other.items() if k != '_models'}
+                    return Posterior(other, data, s, now, log, fine, present, models={}, move=move, shift=post.shift, sd_h=sd_h)
+                for name, other in alternatives(spec, post, data, now, under):
+                    for q in spec['question']:
+                        if q['ask'] in ASKED and 'at_least' not in q and q.get('of_period', 'this') == 'this':
+                            here[q['id'] + '.' + name] = answer(other, q, every)
             here.update(beside(spec, data, s, now, log, fine, every, models.setdefault(s, {})))
             for name, figures in laws(post).items():
                 here['posterior.' + name] = figures

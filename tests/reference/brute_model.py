@@ -126,11 +126,20 @@ class Model:
             heavy.append(n - (2 if self.kind == 'flat' else 1))
         if self.has_tau and self.between != 'half-normal':
             heavy.append(len(self.hist) + (1 if self.present else 0) - (2 if self.between == 'uniform' else 0))
+        self.widen(heavy)
+        self.axes = (['s'] if self.sd is None else []) + (['h'] if self.two_sigmas else []) + (['t'] if self.has_tau else [])
+
+    def widen(self, heavy):
         for a in heavy:
             for k in (1, 2):
                 if a > k:
                     self.cut = max(self.cut, min(150, 36 / (1 - k / a)))
-        self.axes = (['s'] if self.sd is None else []) + (['h'] if self.two_sigmas else []) + (['t'] if self.has_tau else [])
+
+    def known_history(self, sd):
+        """Sigma unknown in this period alone; the history keeps a known one."""
+        self.sd_h = sd
+        self.two_sigmas = False
+        self.axes = [a for a in self.axes if a != 'h']
 
     # plug-ins, sigma known
     def known(self):
@@ -478,7 +487,7 @@ class Model:
 
 
 class Posterior:
-    def __init__(self, spec, data, series, now, log, fine, present=True, models=None, move=None, shift=None):
+    def __init__(self, spec, data, series, now, log, fine, present=True, models=None, move=None, shift=None, sd_h=None):
         """`present` false leaves this period's readings out."""
         self.present = present
         first = data[series].get(now) or list(data[series].values())[-1]
@@ -488,6 +497,10 @@ class Posterior:
         def mk(prior=None):
             model = Model(spec, data, series, now, log, prior, self.shift)
             model.quick = shift is not None
+            if model.quick and model.has_tau and model.between == 'uniform':
+                model.widen([len(model.hist) - 2])     # the prior's own sd is asked for
+            if sd_h is not None:
+                model.known_history(sd_h)
             return model
         cache = spec.setdefault('_models', {}) if models is None else models
         if P['from'] == 'mixture':
