@@ -4,6 +4,7 @@
 //! halved until two agree (Takahasi & Mori 1974).
 
 use super::marked::Points;
+use super::own_sd::OwnSd;
 use super::{Posterior, When};
 use crate::math::fm;
 use crate::quantity::{Absent, Figure};
@@ -123,6 +124,9 @@ impl Posterior {
         if let Some(reason) = &self.inner.no_sd {
             return Err(reason.clone());
         }
+        if let (When::This, Some(own)) = (when, &self.inner.own_sd) {
+            return self.expect_beside(own, how_many, g);
+        }
         let groups = self.by_sigma(when)?;
         let mut values = vec![0.0; how_many];
         let mut fixed = vec![0.0; how_many];
@@ -153,6 +157,45 @@ impl Posterior {
                 return Ok(before);
             }
             step *= 0.5;
+        }
+        Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
+    }
+
+    /// The same where σ is this period's alone: over the level, and given it over σ.
+    fn expect_beside(
+        &self,
+        own: &OwnSd,
+        how_many: usize,
+        g: &dyn Fn(f64, f64, &mut [f64]),
+    ) -> Result<Vec<f64>, Absent> {
+        let units = &self.inner.units;
+        let mut values = vec![0.0; how_many];
+        let mut before: Option<Vec<f64>> = None;
+        let mut finer = 1.0;
+        for round in 0..HALVINGS {
+            let of_sd = own.sd_given_level(finer);
+            let mut sums = vec![0.0; how_many];
+            for (level, weight) in own.level.weights(1 << round) {
+                let size = own.scatter.squares(level).sqrt();
+                for (x, share) in &of_sd {
+                    let weight = weight * share;
+                    if weight > NEGLIGIBLE {
+                        g(units.sd_out(level), units.sd_out(size * fm::exp(*x)), &mut values);
+                        for (sum, value) in sums.iter_mut().zip(values.iter()) {
+                            *sum += weight * value;
+                        }
+                    }
+                }
+            }
+            if sums.iter().any(|sum| !sum.is_finite()) {
+                return Err(Absent::failed("an expectation over the posterior is not a number"));
+            }
+            let near = |(old, new): (&f64, &f64)| (new - old).abs() <= (AGREED * new.abs()).max(SMALLEST);
+            if before.as_ref().is_some_and(|before| before.iter().zip(&sums).all(near)) {
+                return Ok(sums);
+            }
+            before = Some(sums);
+            finer *= std::f64::consts::FRAC_1_SQRT_2;
         }
         Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
     }

@@ -39,6 +39,22 @@ fn polynomials(x: f64) -> [f64; POINTS + 1] {
     p
 }
 
+/// Of a function's values at the rule's nodes: the size of the last two terms of its Legendre series.
+pub(super) fn last_terms(values: &[f64; POINTS]) -> f64 {
+    static TERMS: OnceLock<[[f64; POINTS]; 2]> = OnceLock::new();
+    let terms = TERMS.get_or_init(|| {
+        let mut terms = [[0.0; POINTS]; 2];
+        for (i, (x, w)) in rule().iter().enumerate() {
+            let p = polynomials(*x);
+            for (term, k) in terms.iter_mut().zip([POINTS - 2, POINTS - 1]) {
+                term[i] = 0.5 * (2.0 * k as f64 + 1.0) * w * p[k];
+            }
+        }
+        terms
+    });
+    terms.iter().map(|term| term.iter().zip(values).map(|(t, v)| t * v).sum::<f64>().abs()).sum()
+}
+
 /// A positive density over panels, as Legendre series of the density itself.
 #[derive(Debug, Clone, PartialEq)]
 pub(super) struct Panels {
@@ -195,6 +211,27 @@ impl Panels {
             None if self.panels.first().is_some_and(|p| t < p.lo) => 1.0,
             None => 0.0,
         }
+    }
+
+    /// The panels' ends.
+    pub fn ends(&self) -> impl Iterator<Item = (f64, f64)> {
+        self.panels.iter().map(|panel| (panel.lo, panel.hi))
+    }
+
+    /// Gauss points t with w, every panel in `parts`: Σ w g(t) is ∫ g · density / ∫ density.
+    pub fn weights(&self, parts: usize) -> Vec<(f64, f64)> {
+        let mut weights = Vec::with_capacity(POINTS * parts * self.panels.len());
+        for panel in &self.panels {
+            let half = 0.5 * (panel.hi - panel.lo) / parts as f64;
+            for part in 0..parts {
+                let middle = panel.lo + (2 * part + 1) as f64 * half;
+                weights.extend(rule().iter().map(|(x, w)| {
+                    let t = middle + half * x;
+                    (t, w * half * panel.density(t).max(0.0) / self.total)
+                }));
+            }
+        }
+        weights
     }
 
     /// Σ over Gauss points: ∫ g · density / ∫ density.

@@ -3,6 +3,7 @@
 
 mod about_mean;
 mod axis;
+mod beside;
 mod between;
 mod build;
 mod chances;
@@ -22,6 +23,7 @@ mod marked_laws;
 mod marks;
 mod memo;
 mod moments;
+mod own_sd;
 mod plane;
 mod predictive;
 mod ranking;
@@ -42,6 +44,7 @@ use crate::data::evidence::Evidence;
 use crate::math::mixture::NormalMixture;
 use crate::prior::Model;
 use crate::quantity::{Absent, Figure};
+use beside::Added;
 pub use law::Law;
 use moments::moment;
 pub use solve::solve;
@@ -180,6 +183,11 @@ impl Posterior {
         factor: f64,
         shift_and_variance: &dyn Fn(f64) -> (f64, f64),
     ) -> Result<Law, Absent> {
+        if let (When::This, Some(own)) = (when, &self.inner.own_sd)
+            && let Some((shift, added)) = Added::of(self.inner.usual_sd(own), shift_and_variance)
+        {
+            return self.inner.of_own_sd(own, factor, shift, added).map(|law| law.moved(self.origin()));
+        }
         let uses_sd = {
             let size = self.pieces()?.iter().map(|p| p.reading_sd).find(|s| *s > 0.0).unwrap_or(1.0);
             shift_and_variance(size) != shift_and_variance(2.0 * size)
@@ -227,6 +235,11 @@ impl Posterior {
         self.inner.no_sd.clone().map_or(Ok(()), Err)
     }
 
+    /// Whether σ is this period's alone, so that the level is held as a density.
+    pub fn has_own_sd(&self) -> bool {
+        self.inner.own_sd.is_some()
+    }
+
     /// Whether levels are held as densities along lines (marked readings, here or in earlier periods).
     pub fn is_marked(&self) -> bool {
         self.inner.is_marked()
@@ -267,6 +280,9 @@ impl Posterior {
                 Err(Absent::because("with marked readings the prior has no one weight"))
             }
             Basis::Both => {
+                if let Some(own) = &self.inner.own_sd {
+                    return Ok(own.prior_weight());
+                }
                 let nodes = self.inner.nodes()?;
                 Ok(nodes.pieces.iter().zip(&nodes.prior_shares).map(|(p, b)| p.weight * b).sum())
             }

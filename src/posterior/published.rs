@@ -143,6 +143,112 @@ fn a_mixture_prior_and_data_in_conflict() {
     near(level.quantile(0.025).unwrap(), 53.13665179531665, 1e-12);
 }
 
+/// σ of this period alone: integrals over the level, σ taken out in closed form, and sums over nodes of σ are two
+/// roads to the same laws.
+#[test]
+fn the_level_alone_agrees_with_nodes_of_its_sd() {
+    let readings = Evidence::Sums { n: 5, mean: 10.9, ss: Some(4.0 * 0.7 * 0.7), rest: 0.0 };
+    let stated = LevelPrior::Stated { mean: 10.0, sd: 0.4 };
+    let history = || {
+        let periods = [(6, 9.6, 0.5), (5, 10.3, 0.9), (7, 10.1, 0.6), (4, 9.2, 0.8)]
+            .map(|(n, mean, sd)| Evidence::Sums { n, mean, ss: Some((n as f64 - 1.0) * sd * sd), rest: 0.0 });
+        LevelPrior::Periods(about_mean(Between::HalfNormal(0.6), periods.to_vec()))
+    };
+    for (within, level) in [
+        (Within::Readings, stated.clone()),
+        (Within::Worth { sd: 0.5, df: 7.0 }, stated),
+        (Within::Readings, LevelPrior::LongRun { mean: 10.0, sd: 0.5, between_sd: 0.3 }),
+        (Within::ReadingsBeside { history_sd: 0.7 }, history()),
+    ] {
+        let model = model(within, level);
+        let (level, nodes) = (
+            solve(&model, &readings, Basis::Both).unwrap(),
+            solve::solve_on_nodes(&model, &readings, Basis::Both).unwrap(),
+        );
+        assert!(level.has_own_sd() && !nodes.has_own_sd(), "{model:?}");
+        near(level.prior_weight().unwrap(), nodes.prior_weight().unwrap(), 1e-10);
+        let laws = |p: &Posterior| {
+            let mut laws = vec![
+                p.level(When::This).unwrap(),
+                p.reading(When::This, 1, None).unwrap(),
+                p.reading(When::This, 40, None).unwrap(),
+                p.affine(When::This, 0.4, &|s| (3.0, 0.05 * s * s)).unwrap(),
+                p.within_sd().unwrap(),
+            ];
+            // Over nodes of several spreads these take a minute, or are refused.
+            if matches!(p.model.level, LevelPrior::Stated { .. }) {
+                laws.push(p.affine(When::This, 1.0, &|s| (1.6 * s, 0.0)).unwrap());
+                laws.push(p.affine(When::This, 1.0, &|s| (-0.02 * s, 0.0)).unwrap());
+                laws.push(p.level_shifted(When::This, &|s| 0.5 * s * s).unwrap());
+            }
+            laws
+        };
+        for (i, (a, b)) in laws(&level).iter().zip(&laws(&nodes)).enumerate() {
+            let spread = b.quantile(0.75).unwrap() - b.quantile(0.25).unwrap();
+            // Nodes hold laws that move with σ to 1e−6 only.
+            for p in [1e-5, 0.025, 0.3, 0.5] {
+                let both = [(a.quantile(p), b.quantile(p)), (a.upper_quantile(p), b.upper_quantile(p))];
+                for (x, y) in both.map(|(x, y)| (x.unwrap(), y.unwrap())) {
+                    assert!((x - y).abs() < 1e-10 * spread.max(y.abs()), "{model:?} {i} {p}: {x} {y}");
+                    assert!(
+                        (a.cdf(y) / b.cdf(y) - 1.0).abs() < 1e-9,
+                        "{model:?} {i} {p} {} {}",
+                        a.cdf(y),
+                        b.cdf(y)
+                    );
+                    assert!(
+                        (a.sf(y) / b.sf(y) - 1.0).abs() < 1e-9,
+                        "{model:?} {i} {p} {} {}",
+                        a.sf(y),
+                        b.sf(y)
+                    );
+                    assert!(
+                        (a.density(y) / b.density(y) - 1.0).abs() < 1e-8,
+                        "{model:?} {i} {p} {y}: {} {}",
+                        a.density(y),
+                        b.density(y)
+                    );
+                }
+            }
+            match (a.mean(), b.mean()) {
+                (Ok(x), Ok(y)) => assert!((x / y - 1.0).abs() < 1e-9, "mean {model:?} {i} {x} {y}"),
+                (x, y) => assert!(x.is_err() == y.is_err(), "{i}"),
+            }
+            // The second moment of σ² hangs on nodes so far out that they are left out.
+            match (a.sd(), b.sd()) {
+                _ if i == 7 => {}
+                (Ok(x), Ok(y)) => assert!((x / y - 1.0).abs() < 1e-8, "sd {model:?} {i} {x} {y}"),
+                (x, y) => assert!(x.is_err() == y.is_err(), "{i}"),
+            }
+        }
+        let beyond = |p: &Posterior| {
+            let place = p.origin();
+            p.expect(When::This, &|level, sd| crate::math::normal::sf((11.5 - place - level) / sd)).unwrap()
+        };
+        near(beyond(&level), beyond(&nodes), 1e-10);
+    }
+}
+
+/// The same model's far tails and moments by mpmath, 30 digits: ∫ N(θ; 10, 0.16) S(θ)^{−5/2} P(…| θ) dθ,
+/// S = 1.96 + 5 (θ − 10.9)², P by the incomplete gamma function.
+#[test]
+fn the_level_alone_in_its_far_tails() {
+    let readings = Evidence::Sums { n: 5, mean: 10.9, ss: Some(1.96), rest: 0.0 };
+    let stated = LevelPrior::Stated { mean: 10.0, sd: 0.4 };
+    let posterior = solve(&model(Within::Readings, stated), &readings, Basis::Both).unwrap();
+    let percentile = posterior.affine(When::This, 1.0, &|s| (1.6 * s, 0.0)).unwrap();
+    near(percentile.sf(124.558681735706), 9.9999999999999715205336066811e-10, 1e-12);
+    near(percentile.sf(124.63667715647328), 9.96603155998142888664390957554e-10, 1e-12);
+    near(percentile.mean().unwrap(), 11.9990941664463750666818443903, 1e-13);
+    near(percentile.sd().unwrap(), 0.676600817562379127716675814596, 1e-12);
+    let within = posterior.within_sd().unwrap();
+    near(within.mean().unwrap(), 0.961829540714202463415934466512, 1e-12);
+    near(within.sd().unwrap(), 0.472461657104026332442472575826, 1e-12);
+    let arithmetic = posterior.level_shifted(When::This, &|s| 0.5 * s * s).unwrap();
+    near(arithmetic.mean().unwrap(), 11.0343349427156391448007969398, 1e-13);
+    near(arithmetic.sd().unwrap(), 0.927097901929559951688175278689, 1e-12);
+}
+
 /// The pieces and the closed form are two roads to the same law.
 #[test]
 fn pieces_agree_with_the_closed_form() {

@@ -1,5 +1,6 @@
 //! Model and readings in, pieces out.
 
+use super::beside::{Added, Beside};
 use super::build::{BiasOf, Built, Part, build};
 
 use super::closed::Conjugate;
@@ -8,8 +9,9 @@ use super::marginal::{self, Weighted};
 use super::marked::{self, Points};
 use super::marked_given::given;
 use super::moments::{Bounds, moment};
+use super::own_sd::OwnSd;
 use super::plane::{BetweenSd, Coordinate, Node, Plane, Sd};
-use super::shapes::Spread;
+use super::shapes::{MovedPanels, Spread};
 use super::units::Units;
 use super::weighing::{Weighed, weigh};
 use super::{Basis, PeriodsPart, Piece, Posterior, When};
@@ -31,6 +33,8 @@ pub(super) struct Inner {
     pub bias_sd: f64,
     /// The closed form, where there is one.
     pub conjugate: Option<Conjugate>,
+    /// The level, where σ is this period's alone.
+    pub own_sd: Option<Arc<OwnSd>>,
     /// The laws of the levels themselves, made when first asked for.
     pub levels: [OnceLock<Result<Law, Absent>>; 3],
     /// With marked readings, points of the next level and of the long-run mean.
@@ -72,9 +76,22 @@ pub(super) struct TrueLevel {
 /// `Basis::PriorOnly` leaves the readings out, `Basis::ReadingsOnly` puts a flat prior in the place
 /// of the level's prior (the within sd stays as the model has it).
 pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posterior, Absent> {
+    solved(model, readings, basis, true)
+}
+
+/// The same by sums over nodes alone: the second road.
+#[cfg(test)]
+pub(super) fn solve_on_nodes(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posterior, Absent> {
+    solved(model, readings, basis, false)
+}
+
+fn solved(
+    model: &Model,
+    readings: &Evidence,
+    basis: Basis,
+    by_level_alone: bool,
+) -> Result<Posterior, Absent> {
     let built = build(model, readings, basis)?;
-    let weighed = weigh_parts(model, readings, &built, basis)?;
-    let nodes = Nodes::new(&built.parts, &built.units, built.bias_sd, weighed)?;
     let bounds = built.parts.iter().map(|p| p.bounds).reduce(Bounds::both);
     let bounds = bounds.ok_or_else(|| Absent::failed("a posterior without parts"))?;
     let models_periods =
@@ -83,9 +100,25 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
         [part] => Conjugate::of(part, &built.units),
         _ => None,
     };
-    let quadrature_error = nodes.error;
+    let own_sd = match &built.parts[..] {
+        [part] if by_level_alone && conjugate.is_none() && built.bias_sd == 0.0 => {
+            OwnSd::of(&part.plane, &part.bounds)
+        }
+        _ => None,
+    };
+    // What the level alone cannot answer is summed over nodes, when first asked for.
+    let own_sd = own_sd.and_then(Result::ok).map(Arc::new);
+    let (quadrature_error, nodes) = match &own_sd {
+        Some(own) => (own.error, OnceLock::new()),
+        None => {
+            let weighed = weigh_parts(model, readings, &built, basis)?;
+            let nodes = Nodes::new(&built.parts, &built.units, built.bias_sd, weighed)?;
+            (nodes.error, OnceLock::from(Ok(nodes)))
+        }
+    };
     let inner = Inner {
         conjugate,
+        own_sd,
         levels: Default::default(),
         other_points: Default::default(),
         spreads: Default::default(),
@@ -96,7 +129,7 @@ pub fn solve(model: &Model, readings: &Evidence, basis: Basis) -> Result<Posteri
         units: built.units,
         bias_sd: built.units.sd_out(built.bias_sd),
         parts: built.parts,
-        nodes: OnceLock::from(Ok(nodes)),
+        nodes,
     };
     Ok(Posterior {
         model: model.clone(),
@@ -291,6 +324,35 @@ impl Inner {
         Ok(weighted(&self.parts, &self.nodes()?.weighed))
     }
 
+    /// A usual σ, outer units.
+    pub fn usual_sd(&self, own: &OwnSd) -> f64 {
+        self.units.sd_out((own.scatter.squares(own.scatter.centre()) / own.scatter.df).sqrt())
+    }
+
+    /// The law of factor · level + shift + what is added, from the origin.
+    pub fn of_own_sd(&self, own: &Arc<OwnSd>, factor: f64, shift: f64, added: Added) -> Result<Law, Absent> {
+        let scale = self.units.scale;
+        match added {
+            Added::Nothing if factor > 0.0 => {
+                let first = own.level.expect(&|t| t);
+                let var = || own.level.expect(&|t| (t - first) * (t - first));
+                let scale = factor * scale;
+                let mean = moment(1.0, self.bounds.level, "the level", || scale * first + shift);
+                let sd = moment(2.0, self.bounds.level, "the level", || scale * var().sqrt());
+                let panels = own.level.clone();
+                Ok(Law::new(Arc::new(MovedPanels { panels, shift, scale }), mean, sd))
+            }
+            _ => {
+                let inner = match added {
+                    Added::Variance(h) => Added::Variance(h * scale),
+                    other => other,
+                };
+                let bound = self.bounds.level.min(self.bounds.sd);
+                Beside::law(own, (factor, inner), (scale, shift), bound, "a reading")
+            }
+        }
+    }
+
     pub fn within_sd(&self) -> Result<Law, Absent> {
         self.spreads[0].get_or_init(|| self.within_sd_anew()).clone()
     }
@@ -308,6 +370,10 @@ impl Inner {
         }
         if let Some(conjugate) = &self.conjugate {
             return Ok(conjugate.within_sd(self.bounds.sd));
+        }
+        if let Some(own) = &self.own_sd {
+            let of_sd = (0.0, Added::Sd(1.0));
+            return Beside::law(own, of_sd, (self.units.scale, 0.0), self.bounds.sd, "the within sd");
         }
         let panels = marginal::panels(&self.weighted()?, Coordinate::Sd, self.bounds.sd)?;
         self.spread(panels, self.bounds.sd, "the within sd")

@@ -13,7 +13,7 @@ const AGREED_IN_TAILS: f64 = 4e-10;
 /// The first grid's steps, in widths; each further one has shorter ones.
 const FIRST: f64 = 0.46;
 /// How fast the steps of σ grow.
-const STRETCH_OF_SD: f64 = 0.08;
+pub(super) const STRETCH_OF_SD: f64 = 0.08;
 const RATIO: f64 = 0.85;
 const ROUNDS: usize = 14;
 /// And the second rule to this.

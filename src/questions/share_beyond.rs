@@ -127,8 +127,8 @@ fn one_sided(beyond: Beyond) -> Option<(f64, f64)> {
     }
 }
 
-/// The same with marked readings, where the level is held as a density: by the law of θ ± z σ itself.
-fn marked_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upper: bool) -> Figure {
+/// The same where the level is held as a density: by the law of θ ± z σ itself.
+fn bound_by_laws(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upper: bool) -> Figure {
     let failed = RefCell::new(None);
     let excess = |z: f64| -> f64 {
         match posterior.affine(When::This, 1.0, &|sigma| (sign * z * sigma, 0.0)) {
@@ -160,8 +160,8 @@ fn marked_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upp
 
 /// The bound from pieces alone: first on those at hand, then on pieces fine enough for that share.
 fn one_sided_bound(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, upper: bool) -> Figure {
-    if posterior.is_marked() {
-        return marked_bound(posterior, (limit, sign), tail, upper);
+    if posterior.is_marked() || posterior.has_own_sd() {
+        return bound_by_laws(posterior, (limit, sign), tail, upper);
     }
     let limit = limit - posterior.origin();
     let root_on = |pieces: &[Piece]| -> Figure {
