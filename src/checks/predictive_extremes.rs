@@ -27,8 +27,11 @@ pub const SOURCE: &str = "Gelman, Meng & Stern 1996";
 const STATISTIC: &str = "extreme reading";
 /// Half width, in sds of the level, of the range of the quadrature: what lies beyond has chance 2e-19.
 const REACH: f64 = 9.0;
-/// Widest step, in sds of the level.
-const STEP: f64 = 0.125;
+/// Widest step, in sds of the level, and in within sds: the power of Phi turns over within a third of one or so.
+const STEP: f64 = 0.5;
+const STEP_OF_READING: f64 = 0.12;
+/// Lighter pieces, against all, are left out: no printed digit of a p-value shows them.
+const UNSEEN: f64 = 1e-17;
 /// Most steps a piece is given; the posterior of the level is never so wide against the within sd.
 const MOST_STEPS: usize = 20_000;
 
@@ -49,9 +52,13 @@ pub struct Piece {
 /// P(largest of n new readings <= x) and P(>= x).
 pub fn largest(pieces: &[Piece], n: usize, x: f64) -> Option<Tails> {
     let (mut weight, mut lower, mut upper) = (0.0, 0.0, 0.0);
+    let whole: f64 = pieces.iter().map(|piece| piece.weight).sum();
     for piece in pieces.iter().filter(|piece| piece.weight != 0.0) {
         if !(piece.weight > 0.0 && piece.reading_sd > 0.0 && piece.level_sd >= 0.0) {
             return None;
+        }
+        if piece.weight < UNSEEN * whole {
+            continue;
         }
         let tail = largest_of_piece(piece, n as f64, x)?;
         weight += piece.weight;
@@ -78,7 +85,7 @@ fn largest_of_piece(piece: &Piece, n: f64, x: f64) -> Option<Tails> {
     if slope == 0.0 {
         return power(centre, n);
     }
-    let step = STEP / slope.max(1.0);
+    let step = STEP.min(STEP_OF_READING / slope);
     let half = fm::ceil(REACH / step) as usize;
     if half > MOST_STEPS {
         return None;

@@ -149,7 +149,7 @@ fn of_posterior(subject: &Subject<'_>, plain: &[f64]) -> Vec<Check> {
     let spread_is_unknown = !matches!(subject.model.within, Within::Known(_) | Within::None);
     if let Evidence::Sums { n, ss: Some(ss), .. } = subject.readings
         && spread_is_unknown
-        && let Ok(pieces) = posterior.pieces()
+        && let Ok(pieces) = posterior.summed()
     {
         let nodes: Vec<predictive_spread::SdNode> = pieces
             .iter()
@@ -159,7 +159,7 @@ fn of_posterior(subject: &Subject<'_>, plain: &[f64]) -> Vec<Check> {
         checks.push(predictive_spread::check(*n as usize, *ss, &nodes, alone));
     }
     let pieces: Vec<predictive_extremes::Piece> = posterior
-        .pieces()
+        .summed()
         .unwrap_or_default()
         .iter()
         .map(|piece| predictive_extremes::Piece {

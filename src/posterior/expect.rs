@@ -5,9 +5,10 @@
 
 use super::marked::Points;
 use super::own_sd::OwnSd;
-use super::{Posterior, When};
+use super::{Piece, Posterior, When};
 use crate::math::fm;
 use crate::quantity::{Absent, Figure};
+use std::borrow::Cow;
 
 /// Two steps must agree to this, relative; below `SMALLEST` absolutely.
 const AGREED: f64 = 1e-11;
@@ -198,6 +199,27 @@ impl Posterior {
             finer *= std::f64::consts::FRAC_1_SQRT_2;
         }
         Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
+    }
+
+    /// Pieces whose sums are integrals over the level and σ: those held, or points where σ is this period's alone.
+    pub fn summed(&self) -> Result<Cow<'_, [Piece]>, Absent> {
+        let Some(own) = &self.inner.own_sd else { return Ok(Cow::Borrowed(self.pieces()?)) };
+        let units = &self.inner.units;
+        let of_sd = own.sd_given_level(1.0);
+        let mut points = Vec::new();
+        for (level, weight) in own.level.weights(1) {
+            let size = own.scatter.squares(level).sqrt();
+            let of_sd = of_sd.iter().map(|(x, share)| (x, weight * share)).filter(|(_, w)| *w > NEGLIGIBLE);
+            points.extend(of_sd.map(|(x, weight)| Piece {
+                weight,
+                level_mean: units.value_out(level),
+                level_apart: units.sd_out(level),
+                level_var: 0.0,
+                reading_sd: units.sd_out(size * fm::exp(*x)),
+                periods: None,
+            }));
+        }
+        Ok(Cow::Owned(points))
     }
 
     fn by_sigma(&self, when: When) -> Result<Vec<Group>, Absent> {

@@ -14,6 +14,7 @@ use super::told::Told;
 use super::weighing::{self, floor};
 use crate::math::{fm, roots};
 use crate::quantity::Absent;
+use std::cell::RefCell;
 use std::sync::OnceLock;
 
 /// Two grids must agree to this about the middle, and in the tails.
@@ -24,6 +25,8 @@ const RATIO: f64 = 0.85;
 const ROUNDS: usize = 14;
 /// And the level's whole mass, by panels, with the sum over σ's own lattice to this.
 const CONFIRMED: f64 = 1e-9;
+/// Normals so much (ln) lower than the highest at a place are left out there: all of them are below 1e−14 of it.
+const UNSEEN: f64 = 41.0;
 /// A level with moments up to this only is followed further out.
 const HEAVY: f64 = 6.0;
 
@@ -330,6 +333,7 @@ struct Density<'a> {
     ln_top: f64,
     /// (ln of weight over sd, mean, 1/(2 var)).
     normals: Vec<(f64, f64, f64)>,
+    exponents: RefCell<Vec<f64>>,
 }
 
 impl<'a> Density<'a> {
@@ -341,20 +345,20 @@ impl<'a> Density<'a> {
             .map(|b| (b.ln_prior - whole - 0.5 * fm::ln(b.var) - fm::HALF_LN_TWO_PI, b.mean, 0.5 / b.var))
             .collect();
         let ln_top = if scatter.readings > 0.0 { ln_chance(of_sd, scatter, scatter.mean, 0.0) } else { 0.0 };
-        Density { scatter, ln_top, normals }
+        Density { scatter, ln_top, normals, exponents: RefCell::default() }
     }
 
     fn at(&self, level: f64) -> f64 {
-        let ln = self.scatter.ln_likelihood(level) + self.ln_top;
-        let mut sum = 0.0;
-        for (height, mean, half) in &self.normals {
+        // Exponents first: most of them cannot be seen beside the largest.
+        let mut exponents = self.exponents.borrow_mut();
+        exponents.clear();
+        exponents.extend(self.normals.iter().map(|(height, mean, half)| {
             let d = level - mean;
-            let exponent = height + ln - half * (d * d);
-            if exponent > -700.0 {
-                sum += fm::exp(exponent);
-            }
-        }
-        sum
+            height - half * (d * d)
+        }));
+        let top = exponents.iter().copied().fold(f64::NEG_INFINITY, f64::max);
+        let sum: f64 = exponents.iter().filter(|ln| **ln > top - UNSEEN).map(|ln| fm::exp(ln - top)).sum();
+        sum * fm::exp(top + self.scatter.ln_likelihood(level) + self.ln_top)
     }
 }
 
@@ -382,7 +386,7 @@ impl Reach {
         let heavy = bounds.level <= HEAVY;
         let mut highest = fm::exp(mode.ln_height);
         let mut walk = |direction: f64, beyond: f64| {
-            let (mut edges, mut step, mut t, mut low) = (Vec::new(), 1.2 * width, mode.x, 0);
+            let (mut edges, mut step, mut t, mut low) = (Vec::new(), 1.8 * width, mode.x, 0);
             for _ in 0..400 {
                 t += direction * step;
                 let here = density.at(t);
@@ -394,7 +398,7 @@ impl Reach {
                 if low >= 2 && direction * (t - beyond) > 0.0 {
                     break;
                 }
-                step *= 1.25;
+                step *= 1.6;
             }
             edges
         };
