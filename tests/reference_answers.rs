@@ -4,10 +4,10 @@
 //! max(|end|, a quarter of the interval it belongs to, an sd where the law is normal and the interval holds 95 %).
 
 use reassay::findings::Findings;
+use reassay::findings::laws::LawFigures;
 use reassay::quantity::{Absent, Scale};
 use reassay::questions::figures::{Figures, Item};
 use reassay::spec::table::{Kind, Table};
-use reassay::stamp::laws::{self, LawFigures};
 use serde_json::Value;
 use std::collections::{BTreeMap, BTreeSet};
 use std::fs;
@@ -71,17 +71,8 @@ fn number(figures: &Figures, name: &str) -> Result<f64, String> {
     }
 }
 
-/// The laws of every series' posterior, as answers.json has them; made once, for they take their time.
-type Laws = BTreeMap<String, Vec<(&'static str, Result<LawFigures, Absent>)>>;
-
 /// What the program gives for one figure; a question over several series has no series of its own.
-fn given(
-    findings: &Findings,
-    of_series: &mut Laws,
-    series: &str,
-    question: &str,
-    name: &str,
-) -> Result<f64, String> {
+fn given(findings: &Findings, series: &str, question: &str, name: &str) -> Result<f64, String> {
     if series.is_empty() {
         let across = findings.across.iter().find(|across| across.id == question).ok_or("not asked")?;
         let (member, name) = name.split_once(':').unwrap_or(("", name));
@@ -90,9 +81,7 @@ fn given(
     }
     let found = findings.series.iter().find(|found| found.name == series).ok_or("no such series")?;
     if let Some(law) = question.strip_prefix("posterior.") {
-        let posterior = found.posterior.as_ref().map_err(|absent| absent.reason.clone())?;
-        let made = || laws::of_posterior(posterior);
-        return of_law(of_series.entry(series.to_string()).or_insert_with(made), law, name);
+        return of_law(&found.laws.posterior, law, name);
     }
     if question == "prior_weight" {
         return found.influence.prior_weight.clone().map_err(|absent| absent.reason);
@@ -221,7 +210,6 @@ fn compare(wanted: impl Fn(&str) -> bool, at_least: usize) {
         };
         println!("{spec}: {:.1} s", began.elapsed().as_secs_f64());
         let model = model_of(&findings);
-        let mut of_series = Laws::new();
         for (series, questions) in expected["series"].as_object().expect("series") {
             for (question, figures) in questions.as_object().expect("questions") {
                 let ask = asked(&findings, question);
@@ -240,7 +228,7 @@ fn compare(wanted: impl Fn(&str) -> bool, at_least: usize) {
                     let wanted = value(figure);
                     let kind = figure["kind"].as_str().expect("a kind");
                     let place = format!("{spec} {series} {question} ({ask}) {name}");
-                    match given(&findings, &mut of_series, series, question, name) {
+                    match given(&findings, series, question, name) {
                         Err(why) => wrong.push(format!("{place}: expected {wanted}, there is none: {why}")),
                         Ok(got) => {
                             let error = error_in_promises(kind, got, wanted, spread);

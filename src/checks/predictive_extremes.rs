@@ -31,7 +31,7 @@ const REACH: f64 = 9.0;
 const STEP: f64 = 0.5;
 const STEP_OF_READING: f64 = 0.12;
 /// Lighter pieces, against all, are left out: no printed digit of a p-value shows them.
-const UNSEEN: f64 = 1e-17;
+const UNSEEN: f64 = 1e-15;
 /// Most steps a piece is given; the posterior of the level is never so wide against the within sd.
 const MOST_STEPS: usize = 20_000;
 

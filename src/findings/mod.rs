@@ -2,6 +2,7 @@
 
 pub mod cautions;
 pub mod compared;
+pub mod laws;
 pub mod many;
 
 use crate::checks::Check;
@@ -15,6 +16,7 @@ use crate::quantity::{Absent, Figure};
 use crate::questions::figures::Figures;
 use crate::questions::rule::Given;
 use crate::working::Step;
+use laws::Laws;
 
 #[derive(Debug)]
 pub struct Findings {
@@ -53,6 +55,7 @@ pub struct SeriesFindings {
     pub prior: Result<Posterior, Absent>,
     pub readings_only: Result<Posterior, Absent>,
     pub posterior: Result<Posterior, Absent>,
+    pub laws: Laws,
     pub influence: Influence,
     pub answers: Vec<Answer>,
     pub checks: Vec<Check>,

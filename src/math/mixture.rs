@@ -4,6 +4,7 @@ use super::error::{MathError, Result, inside_unit};
 use super::fm;
 use super::normal;
 use super::roots::{Tolerance, newton_increasing, solve};
+use std::collections::BTreeMap;
 
 #[derive(Debug, Clone, Copy, PartialEq)]
 struct Part {
@@ -23,6 +24,8 @@ pub struct NormalMixture {
     parts: Vec<Part>,
     /// Weight of every [`BLOCK`] parts and all after them.
     rest: Vec<f64>,
+    /// Parts of like sd put together, with their weight, mean and variance: enough to begin a search with.
+    rough: Vec<Part>,
     /// The highest density that any part has at its own mean.
     peak: f64,
     mean: f64,
@@ -38,6 +41,24 @@ const UNSEEN: f64 = 1e-17;
 const COARSE: f64 = 1e-7;
 /// So many parts are added between two looks at what is left.
 const BLOCK: usize = 16;
+
+/// Parts whose sds share an eighth of an octave, as one with their weight, mean and variance.
+fn put_together(parts: &[Part]) -> Vec<Part> {
+    let mut groups: BTreeMap<u64, (f64, f64, f64)> = BTreeMap::new();
+    let centre = parts.first().map_or(0.0, |p| p.mean);
+    for p in parts.iter().filter(|p| p.weight > UNSEEN && p.sd > 0.0) {
+        let (weight, first, second) = groups.entry(p.sd.to_bits() >> 49).or_default();
+        let away = p.mean - centre;
+        *weight += p.weight;
+        *first += p.weight * away;
+        *second += p.weight * (away * away + p.sd * p.sd);
+    }
+    let made = groups.into_values().map(|(weight, first, second)| {
+        let away = first / weight;
+        Part { weight, mean: centre + away, sd: (second / weight - away * away).max(0.0).sqrt() }
+    });
+    made.filter(|p| p.sd > 0.0).collect()
+}
 
 /// One tail and the density at one place.
 struct Shape {
@@ -88,7 +109,8 @@ impl NormalMixture {
         }
         rest.reverse();
         let narrowest = kept.iter().map(|p| p.sd).filter(|sd| *sd > 0.0).fold(f64::INFINITY, f64::min);
-        Ok(Self { parts: kept, rest, peak: 0.4 / narrowest, mean, width })
+        let rough = put_together(&kept);
+        Ok(Self { parts: kept, rest, rough, peak: 0.4 / narrowest, mean, width })
     }
 
     /// One normal distribution.
@@ -295,19 +317,33 @@ impl NormalMixture {
         if self.parts.len() <= BLOCK {
             return newton(guess, closeness, UNSEEN);
         }
-        // The heaviest parts lead near; from there two steps over all of them double the digits twice.
-        let near = newton(guess, 0.1 * ROUGH, COARSE)?;
-        let step = |t: f64| {
-            let (gap, slope) = self.gap(t, lower, ln_wanted, UNSEEN);
-            t - gap / slope
-        };
-        let nearer = step(near);
-        if (nearer - near).abs() < 1e-3 * self.width {
-            let there = step(nearer);
-            let close = 1e-8 * self.width;
-            if (there - nearer).abs() <= close.min(1e-2 * (nearer - near).abs().max(closeness * self.width)) {
-                return Ok(there);
+        // Parts put together lead near; from there every step over all of them doubles the digits.
+        let near = match &self.rough[..] {
+            [] => guess,
+            rough => {
+                let rough = Self {
+                    parts: rough.to_vec(),
+                    rest: vec![1.0; rough.len().div_ceil(BLOCK)],
+                    rough: Vec::new(),
+                    ..*self
+                };
+                let tolerance = Tolerance { relative: 1e-15, absolute: ROUGH * self.width, cap: 500 };
+                newton_increasing(|t| rough.gap(t, lower, ln_wanted, 0.0), guess, lo, hi, tolerance)
+                    .unwrap_or(guess)
             }
+        };
+        let (mut t, mut last) = (near, 0.1 * self.width);
+        for _ in 0..6 {
+            let (gap, slope) = self.gap(t, lower, ln_wanted, UNSEEN);
+            let next = t - gap / slope;
+            let moved = (next - t).abs();
+            if moved <= 1e-8 * self.width {
+                return Ok(next);
+            }
+            if moved.is_nan() || moved > 0.1 * last || next < lo || next > hi {
+                break;
+            }
+            (t, last) = (next, moved);
         }
         newton(near, closeness, UNSEEN)
     }

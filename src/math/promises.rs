@@ -40,6 +40,7 @@ pub const SMALLEST: f64 = 1e-300;
 /// Every promise, functions in the order of their modules. Where a function has several rows, the first whose `up_to`
 /// holds counts.
 pub const PROMISES: &[Promise] = &[
+    promise("exp", "fm::exp", f64::INFINITY, 2.3e-16, Measure::Relative),
     promise("normal_cdf", "normal::cdf", f64::INFINITY, 1e-15, Measure::Relative),
     promise("normal_sf", "normal::sf", f64::INFINITY, 1e-15, Measure::Relative),
     promise("normal_logcdf", "normal::ln_cdf", f64::INFINITY, 1e-15, Measure::Relative),

@@ -3,7 +3,7 @@
 
 use super::build::Part;
 use super::grid::{self, MOST, Place};
-use super::legendre::Panels;
+use super::legendre::{Curve, Panels};
 use super::plane::{BetweenSd, Coordinate, Node, Sd};
 use super::told::Told;
 use super::weighing::Weighed;
@@ -197,14 +197,19 @@ pub(super) fn panels(parts: &[Weighted<'_>], wanted: Coordinate, bound: f64) -> 
             if ln.is_nan() || ln <= mode.ln_height - depth {
                 break;
             }
-            step *= 1.3;
+            step *= 1.6;
         }
         edges
     };
     let mut edges: Vec<f64> = edge(-1.5 * mode.left).into_iter().rev().collect();
     edges.push(mode.x);
     edges.extend(edge(1.5 * mode.right));
-    let density = |x: f64| fm::exp(ln_all(x));
+    // Logarithms are smoother than densities: a few panels of them spare many sums over the other spreads.
+    let curve = Curve::on(&ln_all, &edges, 4e-12);
+    if let Some(e) = trouble.borrow_mut().take() {
+        return Err(e);
+    }
+    let density = |x: f64| fm::exp(curve.as_ref().and_then(|curve| curve.at(x)).unwrap_or_else(|| ln_all(x)));
     let made =
         if bound <= HEAVY { Panels::with_tails(&density, &edges) } else { Panels::new(&density, &edges) };
     if let Some(e) = trouble.borrow_mut().take() {

@@ -7,7 +7,7 @@
 //! prior(θ) is the mixture that the earlier periods leave over their own (σ, τ). Inner units.
 
 use super::grid::{self, MOST, Place, Weighted, failed};
-use super::legendre::Panels;
+use super::legendre::{Curve, Panels};
 use super::moments::Bounds;
 use super::plane::{Coordinate, Level, Plane, Sd};
 use super::told::Told;
@@ -139,7 +139,7 @@ impl OwnSd {
         } else {
             0.0
         };
-        let of_sd: Vec<(f64, f64)> = lattice(df, step_of(df + 1.0), reach, 1e-20)
+        let of_sd: Vec<(f64, f64)> = lattice(df, step_of(df + 1.0), reach, 1e-16)
             .into_iter()
             .map(|(x, weight)| (scatter.ss * fm::exp(2.0 * x), weight))
             .collect();
@@ -202,7 +202,13 @@ impl OwnSd {
             (before, reach)
         };
         let density = Density::new(&before, &of_sd, &scatter);
-        let at = |level: f64| density.at(level);
+        // The logarithm is smoother than the density: a few panels of it spare many sums over the prior's normals.
+        let curve =
+            if dims == 0 { None } else { Curve::on(&|level| density.ln_at(level), &reach.edges, 2e-12) };
+        let at = |level: f64| match curve.as_ref().and_then(|curve| curve.at(level)) {
+            Some(ln) => fm::exp(ln),
+            None => density.at(level),
+        };
         let level = if bounds.level <= HEAVY {
             Panels::with_tails(&at, &reach.edges)?
         } else {
@@ -349,6 +355,10 @@ impl<'a> Density<'a> {
     }
 
     fn at(&self, level: f64) -> f64 {
+        fm::exp(self.ln_at(level))
+    }
+
+    fn ln_at(&self, level: f64) -> f64 {
         // Exponents first: most of them cannot be seen beside the largest.
         let mut exponents = self.exponents.borrow_mut();
         exponents.clear();
@@ -358,7 +368,7 @@ impl<'a> Density<'a> {
         }));
         let top = exponents.iter().copied().fold(f64::NEG_INFINITY, f64::max);
         let sum: f64 = exponents.iter().filter(|ln| **ln > top - UNSEEN).map(|ln| fm::exp(ln - top)).sum();
-        sum * fm::exp(top + self.scatter.ln_likelihood(level) + self.ln_top)
+        fm::ln(sum) + (top + self.scatter.ln_likelihood(level) + self.ln_top)
     }
 }
 
@@ -381,7 +391,7 @@ impl Reach {
         }
         let start = (0..=8).map(|i| low + (high - low) * f64::from(i) / 8.0);
         let start = start.max_by(|a, b| density.at(*a).total_cmp(&density.at(*b))).unwrap_or(low);
-        let mode = roots::mode(|t| fm::ln(density.at(t)), start, size).map_err(failed)?;
+        let mode = roots::mode(|t| density.ln_at(t), start, size).map_err(failed)?;
         let width = mode.width();
         let heavy = bounds.level <= HEAVY;
         let mut highest = fm::exp(mode.ln_height);

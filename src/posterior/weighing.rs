@@ -74,8 +74,8 @@ impl Gauge {
             high: [mean + 7.0 * widest_sd; 2],
             middle: top.mean - 0.7 * sd,
         };
-        // Outward until no more is left than wanted, and not so far that there is nothing.
-        let some: Vec<Node> = nodes.iter().step_by(1 + nodes.len() / 2000).copied().collect();
+        // Outward until no more is left than wanted, and not so far that there is nothing: some nodes tell where.
+        let some: Vec<Node> = nodes.iter().step_by(1 + nodes.len() / 400).copied().collect();
         let (mut down, mut up) = (7.0, 7.0);
         for _ in 0..24 {
             let now = gauge.measure(&some, 0.0);
@@ -276,16 +276,23 @@ fn difference_by_panels(
     // Ends of the box: nodes above 2e-12 of the highest; beyond them, a width more.
     let top = nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
     let heavy = || nodes.iter().filter(|n| n.ln_weight - n.ln_cell > top - 27.0);
+    // Of every line of the last coordinate: where it lies and its ends.
+    let mut lines: Vec<(f64, f64, f64)> = Vec::new();
+    for node in heavy() {
+        let (first, last) = (node.place[0], node.place[frame.dims - 1]);
+        match lines.last_mut() {
+            Some((at, lo, hi)) if *at == first => (*lo, *hi) = (lo.min(last), hi.max(last)),
+            _ => lines.push((first, last, last)),
+        }
+    }
     let panels = |d: usize, lo: f64, hi: f64| {
         let width = (coarse * frame.width[d]).min(0.5 * coarse);
         let count = ((hi - lo) / width).ceil().max(1.0);
         (count as usize, (hi - lo) / count)
     };
-    let ends = |d: usize, near: Option<(f64, f64)>| {
-        let close = |n: &&Node| near.is_none_or(|(u, step)| (n.place[0] - u).abs() <= step);
-        heavy()
-            .filter(close)
-            .fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), n| (lo.min(n.place[d]), hi.max(n.place[d])))
+    let ends = |near: Option<(f64, f64)>| {
+        let close = lines.iter().filter(|(at, ..)| near.is_none_or(|(u, step)| (at - u).abs() <= step));
+        close.fold((f64::INFINITY, f64::NEG_INFINITY), |(lo, hi), line| (lo.min(line.1), hi.max(line.2)))
     };
     let node_at = plane.nodes();
     let mut found: Vec<Node> = Vec::new();
@@ -305,11 +312,12 @@ fn difference_by_panels(
             }
         }
     };
-    let (lo, hi) = ends(0, None);
     let mut place = [0.0; MOST];
     if frame.dims == 1 {
-        along_last(&mut place, 0.0, (lo, hi));
+        along_last(&mut place, 0.0, ends(None));
     } else {
+        let at = |(lo, hi): (f64, f64), line: &(f64, f64, f64)| (lo.min(line.0), hi.max(line.0));
+        let (lo, hi) = lines.iter().fold((f64::INFINITY, f64::NEG_INFINITY), at);
         let step = 2.0 * frame.width[0];
         let (lo, hi) = (lo - frame.width[0], hi + frame.width[0]);
         let (count, size) = panels(0, lo, hi);
@@ -317,7 +325,7 @@ fn difference_by_panels(
             let middle = lo + (panel as f64 + 0.5) * size;
             for (x, w) in legendre::rule() {
                 place[0] = middle + 0.5 * size * x;
-                let inner = ends(1, Some((place[0], step)));
+                let inner = ends(Some((place[0], step)));
                 if inner.0 <= inner.1 {
                     along_last(&mut place, fm::ln(0.5 * size * w), inner);
                 }

@@ -4,6 +4,7 @@ use super::{Rendered, StampText, render};
 use crate::data::evidence::Evidence;
 use crate::data::{Data, Facts, Fate, InputFile, Mark, PeriodData, ReadingRow, RowCounts, SeriesData};
 use crate::diagnostics::{Caution, Faults};
+use crate::findings::laws::Laws;
 use crate::findings::{Answer, Findings, Influence, SeriesFindings, UnderAlternative};
 use crate::plan::Plan;
 use crate::quantity::{Absent, Period};
@@ -117,6 +118,7 @@ fn series(name: &str, over: f64, verdict: &str) -> SeriesFindings {
         prior: Err(absent()),
         readings_only: Err(absent()),
         posterior: Err(absent()),
+        laws: Laws::of(&Err(absent()), &Err(absent())),
         influence: Influence { prior_weight: Ok(0.25), prior_readings: Ok(1.5) },
         answers: vec![
             answer(

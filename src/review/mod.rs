@@ -9,6 +9,7 @@ use crate::checks::{Check, Concern, suite};
 use crate::data::evidence::Evidence;
 use crate::data::{self, Data, PeriodData, SeriesData};
 use crate::diagnostics::{Caution, Fault, Faults, Outcome};
+use crate::findings::laws::Laws;
 use crate::findings::{self, AcrossFindings, Answer, Findings, Influence, SeriesFindings, UnderAlternative};
 use crate::plan::{Plan, QuestionPlan};
 use crate::posterior::{self, Basis, Posterior};
@@ -402,6 +403,7 @@ fn findings_of(
         prior: worked.prior.clone(),
         readings_only: worked.readings_only.clone(),
         posterior: worked.posterior.clone(),
+        laws: Laws::of(&worked.prior, &worked.posterior),
         influence: Influence {
             prior_weight: posterior.clone().and_then(Posterior::prior_weight),
             prior_readings: posterior.and_then(Posterior::prior_readings),

@@ -5,11 +5,11 @@
 //! alternative's id. A figure that does not exist has an empty value; answers.json says why. Laws have
 //! the ids `prior.level`, `posterior.level` and so on, with nothing asked.
 
+use crate::findings::laws::LawFigures;
 use crate::findings::{Findings, SeriesFindings};
 use crate::quantity::{Figure, Scale};
 use crate::questions::figures::{Figures, Item, Meaning};
 use crate::questions::rule::Given;
-use crate::stamp::laws::{self, LawFigures};
 
 const HEAD: [&str; 7] = ["series", "id", "ask", "alternative", "field", "value", "unit"];
 
@@ -45,17 +45,15 @@ struct Table {
 
 fn one_series(series: &SeriesFindings, scale: Scale, table: &mut Table) {
     let row = |id, ask, alternative| Row { series: &series.name, id, ask, alternative };
-    if let Ok(law) = laws::of_prior(series) {
-        table.law(&row("prior.level", "", ""), &law, true);
+    if let Ok(law) = &series.laws.prior {
+        table.law(&row("prior.level", "", ""), law, true);
     }
-    if let Ok(posterior) = &series.posterior {
-        for (name, law) in laws::of_posterior(posterior) {
-            // On the log scale a sd is a factor, and has no unit.
-            let in_unit = scale == Scale::Linear || !name.ends_with("_sd");
-            if let Ok(law) = law {
-                let id = format!("posterior.{name}");
-                table.law(&Row { series: &series.name, id: &id, ask: "", alternative: "" }, &law, in_unit);
-            }
+    for (name, law) in &series.laws.posterior {
+        // On the log scale a sd is a factor, and has no unit.
+        let in_unit = scale == Scale::Linear || !name.ends_with("_sd");
+        if let Ok(law) = law {
+            let id = format!("posterior.{name}");
+            table.law(&Row { series: &series.name, id: &id, ask: "", alternative: "" }, law, in_unit);
         }
     }
     let influence = row("influence", "", "");

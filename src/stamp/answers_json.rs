@@ -2,15 +2,14 @@
 
 use crate::data::Data;
 use crate::findings::compared::{Changed, Foretold, Prediction, Relation, SeriesThen};
+use crate::findings::laws::{LawFigures, Laws};
 use crate::findings::many::{OverSeries, WrongVerdicts};
 use crate::findings::{AcrossFindings, Answer, Findings, SeriesFindings, UnderAlternative};
 use crate::json::{Json, Object, of_toml, reason_against};
 use crate::plan::{Action, Limit, Plan};
-use crate::posterior::Posterior;
 use crate::quantity::Absent;
 use crate::questions::figures::{Figures, Item};
 use crate::questions::rule::Given;
-use crate::stamp::laws::{self, LawFigures};
 
 pub const FORMAT: &str = "reassay-answers/1";
 
@@ -156,7 +155,7 @@ fn prediction(prediction: &Prediction) -> Json {
 
 fn one_series(series: &SeriesFindings, plan: &Plan, data: &Data) -> Json {
     let prior = Object::new().text("from", series.prior_from.as_str());
-    let prior = put_law(prior, "level", &laws::of_prior(series)).done();
+    let prior = put_law(prior, "level", &series.laws.prior).done();
     let influence = Object::new()
         .figure("prior_weight", &series.influence.prior_weight)
         .figure("prior_readings", &series.influence.prior_readings)
@@ -165,7 +164,7 @@ fn one_series(series: &SeriesFindings, plan: &Plan, data: &Data) -> Json {
         .text("name", series.name.as_str())
         .put("readings", readings(series, plan, data))
         .put("prior", prior)
-        .put("posterior", posterior(&series.posterior))
+        .put("posterior", posterior(&series.laws))
         .put("influence", influence)
         .put("answers", Json::List(series.answers.iter().map(answer).collect()))
         .put("checks", Json::List(series.checks.iter().map(check).collect()))
@@ -205,18 +204,8 @@ fn readings(series: &SeriesFindings, plan: &Plan, data: &Data) -> Json {
         .done()
 }
 
-fn posterior(posterior: &Result<Posterior, Absent>) -> Json {
-    const NAMES: [&str; 6] =
-        ["level", "next_level", "long_run_mean", "within_sd", "between_sd", "next_reading"];
-    match posterior {
-        Ok(posterior) => laws::of_posterior(posterior)
-            .iter()
-            .fold(Object::new(), |object, (name, law)| put_law(object, name, law))
-            .done(),
-        Err(absent) => {
-            NAMES.iter().fold(Object::new(), |object, name| object.absent(name, &absent.reason)).done()
-        }
-    }
+fn posterior(laws: &Laws) -> Json {
+    laws.posterior.iter().fold(Object::new(), |object, (name, law)| put_law(object, name, law)).done()
 }
 
 fn put_law(object: Object, name: &str, law: &Result<LawFigures, Absent>) -> Object {

@@ -5,7 +5,6 @@ pub mod sums;
 mod listing;
 
 // What a review leaves.
-pub mod laws;
 pub mod answers_csv;
 pub mod answers_json;
 pub mod handover;

@@ -18,6 +18,7 @@ type Outcome = Result<f64, String>;
 fn compute(function: &str, v: &[f64]) -> Outcome {
     let said = |r: reassay::math::error::Result<f64>| r.map_err(|e| e.to_string());
     match function {
+        "exp" => Ok(fm::exp(v[0])),
         "normal_cdf" => Ok(normal::cdf(v[0])),
         "normal_sf" => Ok(normal::sf(v[0])),
         "normal_logcdf" => Ok(normal::ln_cdf(v[0])),

@@ -1,6 +1,5 @@
-//! The laws of a series' quantities as plain figures: what answers.json and answers.csv say of them.
+//! The laws of a series' quantities as plain figures: what a review's answers say of them.
 
-use crate::findings::SeriesFindings;
 use crate::math::fm;
 use crate::posterior::{Law, Posterior, When};
 use crate::prior::Within;
@@ -44,9 +43,33 @@ impl LawFigures {
     }
 }
 
-/// The laws that a posterior has, by the names of answers.json, each or why it does not exist.
-pub fn of_posterior(posterior: &Posterior) -> Vec<(&'static str, Result<LawFigures, Absent>)> {
-    let scale = posterior.model.scale;
+/// The laws of one series, made once, for they take their time.
+#[derive(Debug, Clone, PartialEq)]
+pub struct Laws {
+    /// The prior of the level.
+    pub prior: Result<LawFigures, Absent>,
+    /// By the names of answers.json, each or why it does not exist.
+    pub posterior: Vec<(&'static str, Result<LawFigures, Absent>)>,
+}
+
+impl Laws {
+    pub fn of(prior: &Result<Posterior, Absent>, posterior: &Result<Posterior, Absent>) -> Laws {
+        let prior = prior
+            .as_ref()
+            .map_err(Absent::clone)
+            .and_then(|prior| prior.level(When::This).map(|law| LawFigures::of(&law, prior.model.scale)));
+        Laws { prior, posterior: of_posterior(posterior) }
+    }
+}
+
+/// The laws that a posterior has.
+fn of_posterior(posterior: &Result<Posterior, Absent>) -> Vec<(&'static str, Result<LawFigures, Absent>)> {
+    const NAMES: [&str; 6] =
+        ["level", "next_level", "long_run_mean", "within_sd", "between_sd", "next_reading"];
+    let posterior = match posterior {
+        Ok(posterior) => posterior,
+        Err(absent) => return NAMES.map(|name| (name, Err(absent.clone()))).to_vec(),
+    };
     let next_reading = match posterior.model.within {
         Within::None => {
             Err(Absent::because("every reading brings its own uncertainty: ask `reading interval` with one"))
@@ -54,18 +77,13 @@ pub fn of_posterior(posterior: &Posterior) -> Vec<(&'static str, Result<LawFigur
         _ => posterior.reading(When::This, 1, None),
     };
     let laws = [
-        ("level", posterior.level(When::This)),
-        ("next_level", posterior.level(When::Next)),
-        ("long_run_mean", posterior.level(When::LongRun)),
-        ("within_sd", posterior.within_sd()),
-        ("between_sd", posterior.between_sd()),
-        ("next_reading", next_reading),
+        posterior.level(When::This),
+        posterior.level(When::Next),
+        posterior.level(When::LongRun),
+        posterior.within_sd(),
+        posterior.between_sd(),
+        next_reading,
     ];
-    laws.map(|(name, law)| (name, law.map(|law| LawFigures::of(&law, scale)))).to_vec()
-}
-
-/// The prior of the level.
-pub fn of_prior(series: &SeriesFindings) -> Result<LawFigures, Absent> {
-    let prior = series.prior.as_ref().map_err(Absent::clone)?;
-    prior.level(When::This).map(|law| LawFigures::of(&law, prior.model.scale))
+    let figures = laws.map(|law| law.map(|law| LawFigures::of(&law, posterior.model.scale)));
+    NAMES.into_iter().zip(figures).collect()
 }
