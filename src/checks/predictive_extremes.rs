@@ -25,8 +25,8 @@ pub const ID: &str = "posterior predictive extremes";
 pub const SOURCE: &str = "Gelman, Meng & Stern 1996";
 
 const STATISTIC: &str = "extreme reading";
-/// Half width, in sds of the level, of the range of the quadrature: what lies beyond has chance 2e-19.
-const REACH: f64 = 9.0;
+/// Half width, in sds of the level, of the range of the quadrature: what lies beyond has chance 1e-15.
+const REACH: f64 = 8.0;
 /// Widest step, in sds of the level, and in within sds: the power of Phi turns over within a third of one or so.
 const STEP: f64 = 0.5;
 const STEP_OF_READING: f64 = 0.12;
@@ -105,7 +105,8 @@ fn largest_of_piece(piece: &Piece, n: f64, x: f64) -> Option<Tails> {
 /// Phi(z)^n and 1 - Phi(z)^n, each without loss.
 fn power(z: f64, n: f64) -> Option<Tails> {
     let ln = n * tails::ln_normal_lower(z)?;
-    Some(Tails { lower: fm::exp(ln), upper: -fm::exp_m1(ln) })
+    let upper = -fm::exp_m1(ln);
+    Some(Tails { lower: if upper < 0.5 { 1.0 - upper } else { fm::exp(ln) }, upper })
 }
 
 /// Checks the largest and the smallest of `n` readings against the posterior.

@@ -139,7 +139,7 @@ impl OwnSd {
         } else {
             0.0
         };
-        let of_sd: Vec<(f64, f64)> = lattice(df, step_of(df + 1.0), reach, 1e-16)
+        let of_sd: Vec<(f64, f64)> = lattice(df, step_of(df + 1.0, 1e-12), reach, 1e-14)
             .into_iter()
             .map(|(x, weight)| (scatter.ss * fm::exp(2.0 * x), weight))
             .collect();
@@ -204,7 +204,7 @@ impl OwnSd {
         let density = Density::new(&before, &of_sd, &scatter);
         // The logarithm is smoother than the density: a few panels of it spare many sums over the prior's normals.
         let curve =
-            if dims == 0 { None } else { Curve::on(&|level| density.ln_at(level), &reach.edges, 2e-12) };
+            if dims == 0 { None } else { Curve::on(&|level| density.ln_at(level), &reach.edges, 1e-11) };
         let at = |level: f64| match curve.as_ref().and_then(|curve| curve.at(level)) {
             Some(ln) => fm::exp(ln),
             None => density.at(level),
@@ -261,7 +261,7 @@ impl OwnSd {
 
     /// ln σ less ½ ln S(θ), with weights whose sum is 1: for sums over σ given the level. `finer` shortens its steps.
     pub fn sd_given_level(&self, finer: f64) -> Vec<(f64, f64)> {
-        lattice(self.scatter.df, finer * step_of(self.scatter.df), 0.0, 1e-27)
+        lattice(self.scatter.df, finer * step_of(self.scatter.df, 1e-15), 0.0, 1e-27)
     }
 }
 
@@ -281,7 +281,7 @@ fn ln_chance(of_sd: &[(f64, f64)], scatter: &Scatter, mean: f64, var: f64) -> f6
     for (sd2, weight) in of_sd {
         let mean_var = sd2 * per_reading;
         let away = least - exponent(error, var, mean_var);
-        if away > -60.0 {
+        if away > -35.0 {
             sum += weight * fm::exp(away) / (var + mean_var).sqrt();
         }
     }
@@ -318,14 +318,14 @@ fn lattice(df: f64, step: f64, further: f64, smallest: f64) -> Vec<(f64, f64)> {
     all
 }
 
-/// A step of ln σ with which the trapezoid rule is exact to 1e−15: its error is the Fourier transform of the density,
+/// A step of ln σ with which the trapezoid rule is as exact as wanted: its error is the Fourier transform of the density,
 /// |Γ(df/2 + iy)|/Γ(df/2) at y = π/step, here by Stirling's formula.
-fn step_of(df: f64) -> f64 {
-    let a = 0.5 * df;
+fn step_of(df: f64, wanted: f64) -> f64 {
+    let (a, ln_wanted) = (0.5 * df, fm::ln(wanted));
     let mut y = std::f64::consts::PI / 0.25;
     loop {
         let ln_size = 0.5 * (a - 0.5) * fm::ln(a * a + y * y) - y * fm::atan(y / a) - a + fm::HALF_LN_TWO_PI;
-        if ln_size - fm::ln_gamma(a) < -34.5 {
+        if ln_size - fm::ln_gamma(a) < ln_wanted {
             return std::f64::consts::PI / y;
         }
         y *= 1.04;
