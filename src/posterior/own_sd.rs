@@ -111,7 +111,7 @@ impl OwnSd {
         let apart = match plane.level {
             Level::Normal { .. } | Level::LongRun { .. } => true,
             Level::AboutMean { .. } | Level::Walk(_) => plane.history_sd.is_some(),
-            Level::Flat | Level::PerReading { .. } | Level::AboutMeanMarked(_) => false,
+            Level::Flat | Level::PerReading { .. } => false,
         };
         if !apart || plane.is_marked() || axis.uniform || axis.sums.ss <= 0.0 {
             return None;

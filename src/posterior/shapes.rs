@@ -102,6 +102,42 @@ impl Continuous for OnPanels {
     }
 }
 
+/// shift + scale · x, the density of x on panels, scale above 0.
+#[derive(Debug)]
+pub(super) struct MovedPanels {
+    pub panels: Panels,
+    pub shift: f64,
+    pub scale: f64,
+}
+
+impl MovedPanels {
+    fn x(&self, t: f64) -> f64 {
+        (t - self.shift) / self.scale
+    }
+}
+
+impl Continuous for MovedPanels {
+    fn cdf(&self, t: f64) -> f64 {
+        self.panels.cdf(self.x(t))
+    }
+
+    fn sf(&self, t: f64) -> f64 {
+        self.panels.sf(self.x(t))
+    }
+
+    fn density(&self, t: f64) -> f64 {
+        self.panels.density(self.x(t)) / self.scale
+    }
+
+    fn quantile(&self, p: f64) -> Figure {
+        Ok(self.shift + self.scale * self.panels.quantile(p)?)
+    }
+
+    fn upper_quantile(&self, q: f64) -> Figure {
+        Ok(self.shift + self.scale * self.panels.upper_quantile(q)?)
+    }
+}
+
 /// The density of a law on panels, from its 1e-16 quantile to its upper one.
 pub(super) fn panels_of(law: &Law) -> Result<Panels, Absent> {
     Panels::new(&|t| law.density(t), &edges_of(law, 16)?)
