@@ -167,15 +167,14 @@ impl Beside {
         let (place, spread) = added.place(own.scatter.squares(centre), df);
         let level = factor.abs() * (own.level.upper_quantile(0.16)? - own.level.quantile(0.16)?);
         let (middle, width) = (factor * centre + place, level + spread);
-        // E σ = √(S/2) Γ((ν−1)/2)/Γ(ν/2); E σ² = S/(ν−2); E σ⁴ = S²/((ν−2)(ν−4)).
-        let of_root =
-            fm::exp(fm::ln_gamma(0.5 * (df - 1.0)) - fm::ln_gamma(0.5 * df)) / std::f64::consts::SQRT_2;
+        // E σ² = S/(ν−2), Var σ² = 2 S²/((ν−2)² (ν−4)).
+        let (mean_of_root, var_of_root) = chi_square::of_inverse_root(df);
         let first = |t: f64| {
             let s = own.scatter.squares(t);
             factor * (t - centre)
                 + match added {
                     Added::Nothing | Added::Normal(_) => 0.0,
-                    Added::Sd(z) => z * s.sqrt() * of_root,
+                    Added::Sd(z) => z * s.sqrt() * mean_of_root,
                     Added::Variance(h) => h * s / (df - 2.0),
                 }
         };
@@ -184,10 +183,10 @@ impl Beside {
             match added {
                 Added::Nothing => 0.0,
                 Added::Normal(share) => share * s / (df - 2.0),
-                Added::Sd(z) => z * z * s * (1.0 / (df - 2.0) - of_root * of_root),
+                Added::Sd(z) => z * z * s * var_of_root,
                 Added::Variance(h) => {
-                    let mean = s / (df - 2.0);
-                    h * h * mean * (s / (df - 4.0) - mean)
+                    let mean = h * s / (df - 2.0);
+                    2.0 * mean * mean / (df - 4.0)
                 }
             }
         };

@@ -70,14 +70,10 @@ impl Conjugate {
 
     pub fn within_sd(&self, bound: f64) -> Law {
         let (df, s) = (self.df, self.sd);
-        // E σ = s √(ν/2) Γ((ν−1)/2)/Γ(ν/2); E σ² = s² ν/(ν−2).
-        let first =
-            || s * (0.5 * df).sqrt() * fm::exp(fm::ln_gamma(0.5 * (df - 1.0)) - fm::ln_gamma(0.5 * df));
-        let mean = moment(1.0, bound, "the within sd", first);
-        let sd = moment(2.0, bound, "the within sd", || {
-            let m = first();
-            (s * s * df / (df - 2.0) - m * m).max(0.0).sqrt()
-        });
+        let size = s * df.sqrt();
+        let (mean_of_root, var_of_root) = chi_square::of_inverse_root(df);
+        let mean = moment(1.0, bound, "the within sd", || size * mean_of_root);
+        let sd = moment(2.0, bound, "the within sd", || size * var_of_root.sqrt());
         Law::new(Arc::new(RootInverseChi { df, s }), mean, sd)
     }
 }
