@@ -17,6 +17,9 @@ const RELATIVE_OF_CHANCE: f64 = 1e-9;
 const SMALLEST_RELATIVE: f64 = 1e-12;
 const ABSOLUTE_OF_CHANCE: f64 = 1e-21;
 const OF_END: f64 = 1e-10;
+/// Plans of readings to come are averages over what may come, no answers about what was measured: widths (of the size of
+/// 1 in the specs here) and chances of verdicts.
+const OF_PLAN: f64 = 1e-6;
 
 /// Specs that take more than a few seconds without optimisation: two or three unknown spreads under a dozen
 /// alternatives, or shares and percentiles over them. `cargo test --release reference_answers -- --include-ignored`
@@ -132,6 +135,7 @@ fn error_in_promises(kind: &str, got: f64, wanted: f64, spread: f64) -> f64 {
         "chance" if wanted < SMALLEST_RELATIVE => ABSOLUTE_OF_CHANCE,
         "chance" | "count" => RELATIVE_OF_CHANCE * wanted,
         "sd" => OF_END * wanted,
+        "plan" => OF_PLAN,
         // A count of things is right or wrong.
         "whole" => 0.1,
         _ => OF_END * wanted.abs().max(spread),

@@ -5,6 +5,10 @@
 //! sum of squares SS will arise from it, x̄ ~ N(m0, v0 + σ²/n), SS ~ σ² χ²_{n−1}; they will update the whole
 //! mixture, and the rule will be applied to what comes out. Widths and chances are averaged over what may
 //! come: in closed form for one piece, else by the trapezoid rule over x̄ (for widths) and ln SS.
+//!
+//! With a bias b common to all readings they tell of the level as measured, φ = θ + b, and of θ only through it: given
+//! φ, θ has a variance that no number of readings lowers. Data-made priors: u_b². A stated long run N(M, V0), whose mean
+//! as measured is now N(M', V'): K u_b² + (1 − K)² V' τ²/(V' + τ²), K = V0/(V0 + u_b²).
 //! Source: O'Hagan & Stevens 2001, Medical Decision Making 21.
 
 use super::figures::{Figures, Meaning};
@@ -13,7 +17,8 @@ use super::{Linear, Question, Subject, beyond, steps, terms};
 use crate::math::mixture::NormalMixture;
 use crate::math::{fm, normal, roots};
 use crate::plan::Rule;
-use crate::posterior::When;
+use crate::posterior::{Piece, When};
+use crate::prior::{LevelPrior, Model};
 use crate::quantity::{Absent, Beyond, Figure};
 
 /// Parts lighter than this are left out: a plan is not asked for more digits.
@@ -36,6 +41,16 @@ struct Part {
     var: f64,
     sigma: f64,
     linear: Option<Linear>,
+    told: Told,
+}
+
+/// What the level as measured, N(mean, var), tells of the one that is asked about: given it, that one is
+/// N(own + slope·(it − mean), rest).
+#[derive(Debug, Clone, Copy)]
+struct Told {
+    own: f64,
+    slope: f64,
+    rest: f64,
 }
 
 /// One piece of the next posterior.
@@ -50,11 +65,6 @@ impl Outlook {
     pub fn of(subject: &Subject<'_>, question: Option<&dyn Question>) -> Result<Outlook, Absent> {
         let posterior = subject.posterior.clone()?;
         posterior.level(When::Next)?;
-        if posterior.model.bias_sd > 0.0 {
-            return Err(Absent::because(
-                "with a bias common to all readings, more readings are not planned here",
-            ));
-        }
         let own = terms::own_uncertainty(subject, None)?.unwrap_or(0.0);
         let mut parts = Vec::new();
         for piece in posterior.pieces()?.iter().filter(|piece| piece.weight > NEGLIGIBLE) {
@@ -75,7 +85,13 @@ impl Outlook {
                     }
                 },
             };
-            parts.push(Part { weight: piece.weight, mean, var, sigma: piece.reading_sd, linear });
+            let of_true_level = linear.is_none_or(|linear: Linear| linear.true_level);
+            let told = if of_true_level && posterior.model.bias_sd > 0.0 {
+                true_level(&posterior.model, piece, mean, var)?
+            } else {
+                Told { own: mean, slope: 1.0, rest: 0.0 }
+            };
+            parts.push(Part { weight: piece.weight, mean, var, sigma: piece.reading_sd, linear, told });
         }
         let whole: f64 = parts.iter().map(|part| part.weight).sum();
         for part in &mut parts {
@@ -159,8 +175,8 @@ impl Outlook {
                 let apart = mean - part.mean;
                 After {
                     ln_weight: fm::ln(*weight) - 0.5 * (fm::ln(total) + apart * apart / total),
-                    mean: part.mean + part.var / total * apart,
-                    var: part.var * error / total,
+                    mean: part.told.own + part.told.slope * part.var / total * apart,
+                    var: part.told.rest + part.told.slope * part.told.slope * (part.var * error / total),
                 }
             })
             .collect()
@@ -173,8 +189,9 @@ impl Outlook {
         let failed = |error: crate::math::error::MathError| Absent::failed(error.to_string());
         if let [part] = self.parts.as_slice() {
             let error = self.mean_var(part, n);
+            let left = part.var * error / (part.var + error);
             return Ok(normal::upper_quantile(tail).map_err(failed)?
-                * (part.var * error / (part.var + error)).sqrt());
+                * (part.told.rest + part.told.slope * part.told.slope * left).sqrt());
         }
         let mut expected = 0.0;
         for (share, ss) in self.squares(n) {
@@ -229,6 +246,13 @@ impl Outlook {
         Ok(expected)
     }
 
+    /// The half width with ever more readings; above 0 with a bias only.
+    pub fn half_width_at_last(&self, probability: f64) -> Figure {
+        let z = normal::upper_quantile(0.5 * (1.0 - probability))
+            .map_err(|error| Absent::failed(error.to_string()))?;
+        Ok(z * self.parts.iter().map(|part| part.weight * part.told.rest.sqrt()).sum::<f64>())
+    }
+
     /// The chance of each verdict of a rule after n readings.
     pub fn verdicts(&self, n: u64, rule: &Rule, subject: &Subject<'_>) -> Result<Vec<f64>, Absent> {
         let n = n as f64;
@@ -279,15 +303,19 @@ impl Outlook {
         for part in &self.parts {
             let Some(linear) = part.linear else { continue };
             let sd = part.var.sqrt();
-            if linear.variance == 0.0 {
+            let left = linear.variance + part.told.rest;
+            if left == 0.0 {
                 // The chance is then 1 or 0.
                 let (out, inside) = beyond::normal_split(linear.beyond, part.mean + linear.shift, sd);
                 chances[verdict_at(1.0, rule, subject)?] += part.weight * out;
                 chances[verdict_at(0.0, rule, subject)?] += part.weight * inside;
                 continue;
             }
-            let scatter = linear.variance.sqrt();
-            let chance = |level: f64| beyond::normal_split(linear.beyond, level + linear.shift, scatter).0;
+            let scatter = left.sqrt();
+            let chance = |level: f64| {
+                let own = part.told.own + part.told.slope * (level - part.mean);
+                beyond::normal_split(linear.beyond, own + linear.shift, scatter).0
+            };
             let within = |from: f64, to: f64| between((from - part.mean) / sd, (to - part.mean) / sd);
             let places = self.places(scatter);
             add_verdicts(&mut chances, part.weight, rule, subject, &thresholds, &places, &chance, &within)?;
@@ -322,6 +350,31 @@ impl Outlook {
         places.dedup_by(|a, b| (*a - *b).abs() < 0.2 * size);
         places
     }
+}
+
+/// The next true level given the next level as measured, N(mean, var).
+fn true_level(model: &Model, piece: &Piece, mean: f64, var: f64) -> Result<Told, Absent> {
+    let u2 = model.bias_sd * model.bias_sd;
+    let (m0, v0) = match &model.level {
+        LevelPrior::Periods(_) | LevelPrior::Peers(_) => return Ok(Told { own: mean, slope: 1.0, rest: u2 }),
+        LevelPrior::LongRun { mean, sd, .. } => (*mean, sd * sd),
+        _ => {
+            return Err(Absent::because(
+                "with a bias and a prior of several parts, more readings are not planned",
+            ));
+        }
+    };
+    let Some(periods) = piece.periods else {
+        return Err(Absent::because("nothing is known of the next period's level"));
+    };
+    let k = v0 / (v0 + u2);
+    let tau2 = periods.between_sd * periods.between_sd;
+    let long_var = periods.long_run_var;
+    Ok(Told {
+        own: mean - (1.0 - k) * (periods.long_run_mean - m0),
+        slope: (tau2 + k * long_var) / var,
+        rest: k * u2 + (1.0 - k) * (1.0 - k) * long_var * tau2 / var,
+    })
 }
 
 /// ln of the density of SS ~ σ² χ²_df, without what does not depend on σ or SS.

@@ -10,7 +10,8 @@
 //! raise an assurance: numbers up to `up_to` are searched (one piece: every number; else every one up to
 //! 30, beyond by tenths, and between the last that fails and the first that serves). However many readings
 //! are taken, an assurance has a limit, the chance that the next level itself lies on the right side; where
-//! that is less than wanted the answer is null and says so.
+//! that is less than wanted the answer is null and says so. A bias common to all readings leaves a half width that no
+//! number of them lowers; where that is wider than wanted the answer is null too.
 //!
 //! Assumes that the next period's level comes from the model of periods, and its readings from the same within
 //! sd. On the log scale a half width is a factor above 1.
@@ -240,6 +241,15 @@ impl ReadingsNeeded {
                 });
             }
         }
+        if let Aim::HalfWidth(wanted) = self.aim {
+            let limit = outlook.half_width_at_last(self.probability)?;
+            if limit >= wanted {
+                return Err(Absent::because(format!(
+                    "no number of readings gives this half width: the bias common to all of them leaves {}",
+                    self.width_text(limit, subject)
+                )));
+            }
+        }
         let mut last = 0;
         let mut n = 1;
         loop {
@@ -268,14 +278,22 @@ impl ReadingsNeeded {
         Ok(n)
     }
 
-    fn row(&self, outlook: &Outlook, subject: &Subject<'_>, n: u64) -> Figures {
+    fn width_text(&self, width: f64, subject: &Subject<'_>) -> String {
+        match self.scale {
+            Scale::Linear => format!("{width:.3}{}", subject.unit()),
+            Scale::Log => format!("a factor {:.4}", fm::exp(width)),
+        }
+    }
+
+    /// `widths` looks at the level itself, `outlook` at what the rule is on.
+    fn row(&self, outlook: &Outlook, widths: &Outlook, subject: &Subject<'_>, n: u64) -> Figures {
         let (in_unit, meaning) = match self.scale {
             Scale::Linear => ((|width| width) as fn(f64) -> f64, Meaning::Spread),
             Scale::Log => (fm::exp as fn(f64) -> f64, Meaning::Ratio),
         };
         let row = Figures::default().with("readings", Item::Whole(Some(n))).number(
             "half_width",
-            outlook.half_width(n, self.probability).map(in_unit),
+            widths.half_width(n, self.probability).map(in_unit),
             meaning,
         );
         match &self.aim {
@@ -308,7 +326,8 @@ impl Question for ReadingsNeeded {
             figures =
                 figures.number("assurance_limit", limit, Meaning::Chance).with("verdicts", Item::Texts(says));
         }
-        let rows = self.tried.iter().map(|n| self.row(&outlook, subject, *n)).collect();
+        let widths = Outlook::of(subject, None).unwrap_or_else(|_| outlook.clone());
+        let rows = self.tried.iter().map(|n| self.row(&outlook, &widths, subject, *n)).collect();
         figures.with("table", Item::Rows(rows))
     }
 

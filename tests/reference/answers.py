@@ -22,6 +22,7 @@ from scipy.optimize import brentq
 from brute_alternatives import ASKED, alternatives
 from brute_data import read
 from brute_model import Posterior
+from brute_needed import needed
 from brute_normal import LD, Mix, big, density, ld, lower, mp_legendre, solve_ld, upper, zq
 from brute_ranking import difference_with_bias, ranking
 from brute_rules import rule_figures
@@ -318,6 +319,8 @@ def answer(post, q, every):
             b = ld(mp.log(mp.mpf(q['band']))) if log else ld(q['band'])
             out['band_chance'] = prob(np.sum(mix.w * (lower((b - mix.m) / mix.s) - lower((-b - mix.m) / mix.s))))
         return out
+    if ask == 'readings needed':
+        return needed(post, q, every['spec'])
     if ask == 'sd interval':
         return {k: ('end', big(t)) for k, t in sd_interval(post, q).items()}
     raise NotImplementedError(ask)
@@ -387,7 +390,7 @@ def solve(path):
         for s in names:
             posts[s] = Posterior(spec, data, s, now, log, fine)
             posts[s].other = 2 / 3 if fine else 1
-        every = {'posts': posts, 'data': data, 'now': now, 'scans': scans}
+        every = {'posts': posts, 'data': data, 'now': now, 'scans': scans, 'spec': spec}
         for s in names:
             post = posts[s]
             here = {}
@@ -431,6 +434,8 @@ def solve(path):
                 u = coarse[s][qid][name][1]
                 scale = max(abs(v), width if kind in ('end', 'sd') else mp.mpf(10) ** -21)
                 err = abs(u - v) / scale
+                if kind == 'plan':      # in doubles, of the size of 1: held to 1e-11
+                    err = abs(u - v) / 1000
                 if err > worst: worst, where = err, (s, qid, name)
                 table.setdefault(s, {}).setdefault(qid, {})[name] = {'kind': kind, 'value': mp.nstr(v, 17, strip_zeros=False)}
     return table, worst, where, nodes
