@@ -24,7 +24,7 @@ const OF_PLAN: f64 = 1e-6;
 /// Specs that take more than a few seconds without optimisation: two or three unknown spreads under a dozen
 /// alternatives, or shares and percentiles over them. `cargo test --release reference_answers -- --include-ignored`
 /// runs them too.
-const LONG: [&str; 19] = [
+const LONG: [&str; 22] = [
     "09-history-uniform-known",
     "10-history-uniform-history",
     "11-history-half-normal",
@@ -43,7 +43,10 @@ const LONG: [&str; 19] = [
     "44-two-sigmas",
     "47-stated-df-history",
     "53-narrow-far-known",
+    "78-rules-history-known",
     "79-rules-stated-readings",
+    "89-needed-history",
+    "94-share-readings",
 ];
 
 fn folder() -> PathBuf {

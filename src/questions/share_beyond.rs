@@ -9,6 +9,10 @@
 //! depends on how far θ lies from their middle, c: given σ it exceeds p where |θ − c| exceeds (inside:
 //! stays under) the distance d(σ) at which the share is p, found by solving for it.
 //!
+//! The shortest interval is the shortest single one: [Q(r), Q(r + P)] with the tail r below it for which it is shortest.
+//! A share piles up at 0 where readings beyond are rare and σ or the level is not well known: then it begins at 0 itself
+//! (or ends at 1).
+//!
 //! Assumes normal readings (lognormal on the log scale) out to the limit; readings are meant as measured.
 //!
 //! Source: the share is a percentile read backwards; Hahn & Meeker, Statistical Intervals, 1991,
@@ -22,8 +26,8 @@ use super::beyond::{self, ANY_SIDE, About, Asked};
 use super::figures::{Figures, Meaning};
 use super::terms::{self, Interval};
 use super::{Linear, Question, QuestionKind, Subject, steps};
-use crate::diagnostics::{Caution, Fault, Faults};
-use crate::math::{normal, roots};
+use crate::diagnostics::{Caution, Faults};
+use crate::math::{fm, normal, roots};
 use crate::plan::{Plan, QuestionPlan};
 use crate::posterior::{Piece, Posterior, When};
 use crate::quantity::{Absent, Beyond, Figure};
@@ -59,18 +63,16 @@ fn read(asked: &QuestionPlan, plan: &Plan, faults: &mut Faults) -> Option<Box<dy
     let beyond = beyond::read(&mut reader, plan, ANY_SIDE, true);
     let probability = terms::read_probability(&mut reader);
     let interval = Interval::read(&mut reader, Interval::UpperBound);
-    if interval == Interval::Shortest {
-        let fault = Fault::wrong(
-            "no-such-quantity",
-            "the shortest interval of a share is not offered: a share is bounded by 0",
-        )
-        .expected("interval = \"upper bound\", \"lower bound\" or \"central\"")
-        .repair("write interval = \"upper bound\"");
-        reader.fault_at("interval", fault);
-    }
     let more_than = reader.probability("more_than").map(|share| share.get());
     reader.finish_beside(&[language::QUESTION]);
     Some(Box::new(ShareBeyond { beyond: beyond?, probability, interval, more_than }))
+}
+
+/// What the shortest interval leaves below it.
+enum Tail {
+    AtZero,
+    AtOne,
+    Inside(f64),
 }
 
 /// A share, by the normal quantile that stands for it: p = Φ(−z), 1 − p = Φ(z). Both are then exact.
@@ -240,7 +242,7 @@ fn distance(half: f64, sigma: f64, outside: f64, inside: f64) -> Result<f64, cra
         if outside <= 0.5 {
             normal::sf(h - t) + normal::sf(h + t) - outside
         } else {
-            inside - crate::math::fm::exp(normal::ln_interval(t - h, t + h))
+            inside - fm::exp(normal::ln_interval(t - h, t + h))
         }
     };
     if excess(0.0) >= 0.0 {
@@ -301,6 +303,102 @@ impl ShareBeyond {
         }
     }
 
+    /// The shortest single interval: over the tail `r` left below it, the length is looked at on a grid of ln r and
+    /// ln (1 − P − r), then its derivative is solved for between the neighbours of the shortest.
+    fn shortest(&self, subject: &Subject<'_>) -> (Figure, Figure) {
+        let both = |absent: Absent| (Err(absent.clone()), Err(absent));
+        match self.shortest_tail(subject) {
+            Ok(Tail::Inside(r)) => {
+                let left = 1.0 - self.probability - r;
+                (self.bound(subject, r, false), self.bound(subject, left, true))
+            }
+            Ok(Tail::AtZero) => (
+                self.support(subject).map(|(least, _)| least),
+                self.bound(subject, 1.0 - self.probability, true),
+            ),
+            Ok(Tail::AtOne) => (
+                self.bound(subject, 1.0 - self.probability, false),
+                self.support(subject).map(|(_, most)| most),
+            ),
+            Err(absent) => both(absent),
+        }
+    }
+
+    /// The least and the largest share there can be: with a known σ two limits leave some readings outside wherever the
+    /// level lies.
+    fn support(&self, subject: &Subject<'_>) -> Result<(f64, f64), Absent> {
+        let (posterior, beyond) = self.known(subject)?;
+        let (lower, upper, outside) = match beyond {
+            Beyond::Above(_) | Beyond::Below(_) => return Ok((0.0, 1.0)),
+            Beyond::Outside(lower, upper) => (lower, upper, true),
+            Beyond::Between(lower, upper) => (lower, upper, false),
+        };
+        let pieces = posterior.pieces()?;
+        let Some(sigma) = pieces.first().map(|piece| piece.reading_sd) else { return Ok((0.0, 1.0)) };
+        if pieces.iter().any(|piece| piece.reading_sd != sigma) {
+            return Ok((0.0, 1.0));
+        }
+        let h = 0.5 * (upper - lower) / sigma;
+        Ok(if outside { (2.0 * normal::sf(h), 1.0) } else { (0.0, fm::exp(normal::ln_interval(-h, h))) })
+    }
+
+    fn shortest_tail(&self, subject: &Subject<'_>) -> Result<Tail, Absent> {
+        let all = 1.0 - self.probability;
+        // y = ln (r / (all − r)): both ends are far out.
+        let tail =
+            |y: f64| if y < 0.0 { all * fm::exp(y) / (1.0 + fm::exp(y)) } else { all / (1.0 + fm::exp(-y)) };
+        let ends = |y: f64| -> Result<(f64, f64), Absent> {
+            Ok((self.bound(subject, tail(y), false)?, self.bound(subject, tail(-y), true)?))
+        };
+        let length = |y: f64| ends(y).map(|(low, high)| high - low);
+        const FARTHEST: f64 = 14.0;
+        let places: Vec<f64> = (-7..=7).map(|k| 2.0 * f64::from(k)).collect();
+        let mut best = (f64::INFINITY, 0);
+        for (index, y) in places.iter().enumerate() {
+            let here = length(*y)?;
+            if here < best.0 {
+                best = (here, index);
+            }
+        }
+        let (least, most) = self.support(subject)?;
+        let at_zero = self.bound(subject, all, true)? - least;
+        let at_one = most - self.bound(subject, all, false)?;
+        if at_zero <= best.0 || at_one <= best.0 {
+            return Ok(if at_zero <= at_one { Tail::AtZero } else { Tail::AtOne });
+        }
+        // The derivative by y, by differences of seventh order.
+        const STEP: f64 = 0.02;
+        const WEIGHTS: [f64; 3] = [0.75, -0.15, 1.0 / 60.0];
+        let failed = RefCell::new(None);
+        let slope = |y: f64| -> f64 {
+            let mut sum = 0.0;
+            for (k, weight) in WEIGHTS.iter().enumerate() {
+                let by = STEP * (k as f64 + 1.0);
+                match (length(y + by), length(y - by)) {
+                    (Ok(after), Ok(before)) => sum += weight * (after - before),
+                    (Err(absent), _) | (_, Err(absent)) => {
+                        failed.borrow_mut().get_or_insert(absent);
+                        return f64::NAN;
+                    }
+                }
+            }
+            sum
+        };
+        let middle = places[best.1];
+        let (from, to) = ((middle - 2.0).max(-FARTHEST - 1.0), (middle + 2.0).min(FARTHEST + 1.0));
+        let (first, last) = (slope(from), slope(to));
+        let root = if first < 0.0 && last > 0.0 {
+            roots::solve(&slope, from, to, roots::Tolerance::new(0.0, 1e-9))
+                .map_err(|error| Absent::failed(error.to_string()))
+        } else {
+            Err(Absent::failed("the shortest interval was not found"))
+        };
+        match failed.into_inner() {
+            Some(absent) => Err(absent),
+            None => root.map(|y| Tail::Inside(tail(y))),
+        }
+    }
+
     fn more_than(&self, subject: &Subject<'_>, share: f64) -> Figure {
         let (posterior, beyond) = self.known(subject)?;
         let z = normal::upper_quantile(share).map_err(|error| Absent::failed(error.to_string()))?;
@@ -318,7 +416,8 @@ impl Question for ShareBeyond {
             Interval::UpperBound => {
                 (terms::no_other_end(self.interval), self.bound(subject, left_over, true))
             }
-            Interval::Central | Interval::Shortest => {
+            Interval::Shortest => self.shortest(subject),
+            Interval::Central => {
                 (self.bound(subject, 0.5 * left_over, false), self.bound(subject, 0.5 * left_over, true))
             }
         };

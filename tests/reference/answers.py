@@ -18,7 +18,6 @@ Sources: Gelman et al., Bayesian Data Analysis, 3rd ed., sections 2.5, 3.2, 5.4;
 import json, sys, tomllib, glob, os, time
 import numpy as np
 import mpmath as mp
-from scipy.optimize import brentq
 from brute_alternatives import ASKED, alternatives
 from brute_data import read
 from brute_model import Posterior
@@ -26,6 +25,7 @@ from brute_needed import needed
 from brute_normal import LD, Mix, big, density, ld, lower, mp_legendre, solve_ld, upper, zq
 from brute_ranking import difference_with_bias, ranking
 from brute_rules import rule_figures
+from brute_share import share_beyond
 
 
 def between(a, b):
@@ -236,30 +236,7 @@ def answer(post, q, every):
         out = {'estimate': ('count', big(sum(k * v for k, v in enumerate(b))))}
         return {**out, **{'chances.%d' % k: prob(v) for k, v in enumerate(b)}}
     if ask == 'share beyond':
-        one = post.mix(name, sig**2)
-        est = chance(one, q, lim)
-        m, v = post.laws[name]
-        s, r = sig + 0 * m, np.sqrt(v)
-        above = 'above' in q
-        L = lim(q['above'] if above else q['below'])
-        # P(share <= Phi(-c)): above, theta + c sigma <= L; below, theta - c sigma >= L
-        at_most = (lambda c: np.sum(post.w * lower((L - c * s - m) / r))) if above else (lambda c: np.sum(post.w * lower((m - L - c * s) / r)))
-        more = (lambda c: np.sum(post.w * upper((L - c * s - m) / r))) if above else (lambda c: np.sum(post.w * upper((m - L - c * s) / r)))
-        slope = (lambda c: -np.sum(post.w * density((L - c * s - m) / r) * s / r)) if above else (lambda c: -np.sum(post.w * density((m - L - c * s) / r) * s / r))
-        out = {'estimate': prob(est)}
-        p = mp.mpf(q.get('probability', 0.95))
-        kind = q.get('interval', 'upper bound')
-        def bound(pp):
-            pl, pu = ld(pp), ld(1 - pp)
-            f = (lambda c: at_most(c) - pl) if pp <= 0.5 else (lambda c: pu - more(c))
-            a = brentq(lambda c: float(f(LD(c))), -60, 60, xtol=1e-10)
-            c = solve_ld(f, slope, LD(a))
-            return prob(upper(c)[()])
-        if kind in ('upper bound', 'central'): out['upper'] = bound(p if kind == 'upper bound' else (1 + p) / 2)
-        if kind in ('lower bound', 'central'): out['lower'] = bound(1 - p if kind == 'lower bound' else (1 - p) / 2)
-        if 'more_than' in q:
-            out['chance'] = prob(more(ld(-zq(q['more_than']))))
-        return out
+        return share_beyond(post, q, lim, prob, chance(post.mix(name, sig**2), q, lim))
     if ask in ('percentile', 'characteristic value'):
         if ask == 'characteristic value':
             mix = post.mix(name, sig**2)

@@ -228,6 +228,26 @@ fn sample_sizes_for_a_half_width() {
     assert!(why(&needed(&prior, "half_width = 0.01\nup_to = 100"), "readings_needed").reason.contains("100"));
 }
 
+/// A bias b ~ N(0, u²) common to all readings: however many they are, the level as measured is all they tell, and given
+/// it b ~ N(…, u² − u⁴/(v + u²)), v the variance of the true level before them.
+#[test]
+fn a_bias_leaves_a_half_width_that_no_number_of_readings_lowers() {
+    let (v, u2) = (4.0, 0.09f64);
+    let plain = before(40.0, v, Within::Known(1.5));
+    let biased = both(&Model { bias_sd: 0.3, ..plain.model.clone() }, &Evidence::Nothing);
+    let floor = 1.959963984540054 * (u2 - u2 * u2 / (v + u2)).sqrt();
+    let figures = needed(&biased, &format!("half_width = {}", 0.999 * floor));
+    assert!(why(&figures, "readings_needed").reason.contains("the bias common to all of them leaves 0.58"));
+    // And with n readings: the variance of the true level given their mean.
+    let figures = needed(&biased, &format!("half_width = {}\ntry = [3, 40]", 1.1 * floor));
+    assert!(value(&figures, "readings_needed") > 40.0);
+    let Some(Item::Rows(rows)) = figures.get("table") else { panic!("{figures:?}") };
+    for (row, n) in rows.iter().zip([3.0, 40.0]) {
+        let left = v - v * v / (v + u2 + 2.25 / n);
+        near(value(row, "half_width"), 1.959963984540054 * left.sqrt(), 1e-12);
+    }
+}
+
 const RULED: &str = "[[question]]\nid = \"over\"\nask = \"level chance\"\nabove = 45\n[question.rule]\nverdicts = [ \
                      { say = \"above\", chance_at_least = 0.95 }, { say = \"not above\", chance_at_most = 0.05 }, { say = \"not decided\" } ]\n";
 

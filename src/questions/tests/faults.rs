@@ -38,7 +38,6 @@ fn each_wrong_way_has_its_code() {
         ("ask = \"reading chance\"\nabove = 50\nof = \"mean\"", "missing-key"),
         ("ask = \"count beyond\"\nabove = 50", "missing-key"),
         ("ask = \"count beyond\"\nabove = 50\nreadings = 1001", "out-of-range"),
-        ("ask = \"share beyond\"\nabove = 50\ninterval = \"shortest\"", "no-such-quantity"),
         ("ask = \"share beyond\"\nabove = 50\nmore_than = 5", "out-of-range"),
         ("ask = \"percentile\"", "missing-key"),
         ("ask = \"percentile\"\npercentile = 0.95", "out-of-range"),
