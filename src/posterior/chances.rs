@@ -1,8 +1,8 @@
 //! What the marked readings of one period say of its level: ln of the product of their chances. Equal marks
 //! are counted, not repeated. Inner units.
 
+use super::lattice::Lattice;
 use super::marks::Mark;
-use super::smoothed::smoothed;
 
 /// A period's marked readings.
 #[derive(Debug, Clone, PartialEq, Default)]
@@ -36,13 +36,13 @@ impl Chances {
         self.marks.iter().map(|(mark, count)| count / (sigma2 + mark.u2)).sum()
     }
 
-    /// ln E exp(Σ ln P(mark | θ, σ²)) over θ ~ N(mean, var).
-    pub fn ln_expected(&self, mean: f64, var: f64, sigma2: f64) -> f64 {
+    /// ln E exp(Σ ln P(mark | θ, σ²)) over θ ~ N(mean, var); the lattice is this σ²'s.
+    pub fn ln_expected(&self, mean: f64, var: f64, sigma2: f64, lattice: &Lattice) -> f64 {
         if let [(mark, 1.0)] = self.marks[..] {
             // One reading's bounds: level and scatter add to one normal law.
             return mark.ln_chance(mean, sigma2 + var);
         }
-        smoothed(&|theta| self.ln_at(theta, sigma2), mean, var, self.sharpness(sigma2)).ln
+        lattice.integral(&|theta| self.ln_at(theta, sigma2), mean, var).ln
     }
 
     /// A place to begin the search for where they would have the level, with nothing else known.

@@ -7,17 +7,21 @@ use super::build::Part;
 use super::chances::Chances;
 use super::factor::Factor;
 use super::grid::{self, Frame};
+use super::lattice::{Lattice, Lattices};
 use super::law::Law;
 use super::legendre::{Curve, Panels};
 use super::marginal::Weighted;
 use super::moments::moment;
 use super::plane::{Coordinate, Node};
 use super::shapes::OnPanels;
-use super::smoothed::smoothed;
 use super::solve::Inner;
+use super::units::Units;
 use super::weighing::floor;
 use crate::math::fm;
 use crate::quantity::Absent;
+use std::cell::RefCell;
+use std::collections::BTreeMap;
+use std::rc::Rc;
 use std::sync::Arc;
 
 /// X | y ~ N(constant + slope · y, var), X in outer units from the posterior's origin; y in inner units.
@@ -45,9 +49,11 @@ pub(super) type AtNode<'a> = dyn Fn(&Part, &Node) -> Given + 'a;
 /// How smooth (relative) densities are that come from curves.
 const OF_CURVES: f64 = 1e-10;
 /// ln of a density is kept on curves to this.
-const OF_LN: f64 = 2e-12;
-/// Nodes so much (ln) lighter than the whole are not seen at a place: 4e−18.
-const UNSEEN: f64 = 40.0;
+const OF_LN: f64 = 1e-11;
+/// Nodes so much (ln) lighter than the heaviest are not seen at a place: 5e−15.
+const UNSEEN: f64 = 33.0;
+/// Steps of the stretched coordinate: half a panel of the curve, two of the density's.
+const EDGE: f64 = 0.5;
 /// Two grids must agree to this at places from tail to tail.
 const AGREED: f64 = 2e-11;
 
@@ -82,19 +88,43 @@ struct Apart<'a> {
     tied: Tied,
     now: (&'a Chances, f64),
     earlier: Option<(&'a Chances, f64, f64)>,
+    lattice: Rc<OfPlace>,
+}
+
+/// The lattice of the marks' chances given X = x as a function of the level, of the x last asked for; nodes with
+/// the same spreads share it.
+#[derive(Default)]
+struct OfPlace {
+    kept: RefCell<Option<(u64, Rc<Lattice>)>>,
+}
+
+impl OfPlace {
+    fn at(&self, x: f64, make: impl FnOnce() -> Lattice) -> Rc<Lattice> {
+        let mut kept = self.kept.borrow_mut();
+        match &*kept {
+            Some((bits, lattice)) if *bits == x.to_bits() => Rc::clone(lattice),
+            _ => Rc::clone(&kept.insert((x.to_bits(), Rc::new(make()))).1),
+        }
+    }
 }
 
 impl<'a> Apart<'a> {
-    fn of(part: &'a Part, node: &Node, tied: Tied) -> Apart<'a> {
+    fn of(part: &'a Part, node: &Node, tied: Tied, lattice: Rc<OfPlace>) -> Apart<'a> {
         let history2 = node.history_sigma * node.history_sigma;
         let periods = &part.plane.marked_periods;
         let earlier = tied.earlier.and_then(|(j, scale)| Some((&periods.get(j)?.chances, history2, scale)));
-        Apart { tied, now: (&part.plane.marks, node.sigma * node.sigma), earlier }
+        Apart { tied, now: (&part.plane.marks, node.sigma * node.sigma), earlier, lattice }
     }
 
-    fn ln(&self, x: f64, y: f64) -> f64 {
+    /// Whether x alone fixes the level.
+    fn is_fixed(&self) -> bool {
+        self.tied.var == 0.0 && self.tied.level[2] == 0.0
+    }
+
+    /// ln of the chance of the marked readings as a function of y, given x; y is expected near `place`.
+    fn given(&self, x: f64, place: f64) -> impl Fn(f64) -> f64 {
         let [a, b, c] = self.tied.level;
-        let f = |theta: f64| {
+        let of_level = move |theta: f64| {
             let (now, sigma2) = self.now;
             let mut ln = now.ln_at(theta, sigma2);
             if let Some((then, history2, scale)) = self.earlier {
@@ -102,7 +132,8 @@ impl<'a> Apart<'a> {
             }
             ln
         };
-        smoothed(&f, a + b * x + c * y, self.tied.var, self.of_level()).ln
+        let lattice = self.lattice.at(x, || Lattice::new(a + b * x + c * place, self.of_level()));
+        move |y| lattice.integral(&of_level, a + b * x + c * y, self.tied.var).ln
     }
 
     /// The most curvature of ln of it along the level.
@@ -118,12 +149,22 @@ impl<'a> Apart<'a> {
 }
 
 impl<'a> OfNode<'a> {
-    fn new((index, part): (usize, &'a Part), node: &Node, ln_share: f64, given: Given) -> OfNode<'a> {
+    fn new(
+        (index, part): (usize, &'a Part),
+        node: &Node,
+        ln_share: f64,
+        given: Given,
+        lattices: &Lattices,
+        places: &mut BTreeMap<[u64; 2], Rc<OfPlace>>,
+    ) -> OfNode<'a> {
         let plane = &part.plane;
-        let apart = given.tied.map(|tied| Apart::of(part, node, tied));
+        let apart = given.tied.map(|tied| {
+            let place = places.entry([node.sigma.to_bits(), node.history_sigma.to_bits()]).or_default();
+            Apart::of(part, node, tied, Rc::clone(place))
+        });
         let apart = apart.filter(|apart| apart.of_level() > 0.0);
         let left_out = apart.as_ref().and_then(|apart| apart.tied.earlier).map(|(j, _)| j);
-        let factor = Factor::of(plane, node, apart.is_none(), left_out);
+        let factor = Factor::of(plane, node, apart.is_none(), left_out, lattices);
         let of_apart = apart.as_ref().map_or(0.0, |apart| apart.sharpness(apart.tied.level[2]));
         let sharpness = factor.sharpness() + of_apart;
         let (_, v) = node.hidden;
@@ -169,9 +210,14 @@ impl<'a> OfNode<'a> {
     fn ln_factor(&self, x: f64) -> f64 {
         let (mean, var) = self.hidden_given(x);
         match &self.apart {
-            None if self.sharpness == 0.0 => 0.0,
-            None => smoothed(&|y| self.factor.ln(y), mean, var, self.sharpness).ln,
-            Some(apart) => smoothed(&|y| self.factor.ln(y) + apart.ln(x, y), mean, var, self.sharpness).ln,
+            None => self.factor.expected_often(mean, var).ln,
+            Some(apart) if apart.is_fixed() => {
+                apart.given(x, mean)(mean) + self.factor.expected_often(mean, var).ln
+            }
+            Some(apart) => {
+                let more = apart.sharpness(apart.tied.level[2]);
+                self.factor.expected_with(mean, var, more, &apart.given(x, mean)).ln
+            }
         }
     }
 
@@ -245,12 +291,21 @@ impl<'a> Density<'a> {
             let whole: f64 = nodes.iter().map(|n| fm::exp(n.ln_weight - top)).sum();
             let ln_whole = top + fm::ln(whole) - fm::ln(*share);
             let by_long_run = part.plane.by_long_run();
+            let lattices = Lattices::default();
+            let mut places = BTreeMap::new();
             for node in nodes {
                 let given = at(part, node);
                 all.exact &= given.tied.is_none();
                 let (y, var) =
                     if by_long_run { (node.long_mean, node.long_var) } else { (node.mean, node.var) };
-                let of = OfNode::new((index, part), node, node.ln_weight - ln_whole, given);
+                let of = OfNode::new(
+                    (index, part),
+                    node,
+                    node.ln_weight - ln_whole,
+                    given,
+                    &lattices,
+                    &mut places,
+                );
                 let spread = given.slope * given.slope * var + given.var;
                 moments.push((of.share, given.constant + given.slope * y, spread));
                 all.nodes.push(of);
@@ -263,61 +318,88 @@ impl<'a> Density<'a> {
         Ok(all)
     }
 
+    /// By how much steps of σ must be shorter where X moves with σ: along σ the density is then as narrow as σ's
+    /// own and that of X at one σ together.
+    fn steps_of_sd(&self, weighted: &[Weighted<'_>], units: &Units, moved: &dyn Fn(f64) -> f64) -> f64 {
+        let mut least = 1.0f64;
+        for (index, Weighted { part, weighed, .. }) in weighted.iter().enumerate() {
+            let at = part.plane.coordinates().iter().position(|c| *c == Coordinate::Sd);
+            let of_part = self.nodes.iter().filter(|node| node.part == index);
+            let heaviest = of_part.max_by(|a, b| a.share.total_cmp(&b.share));
+            if let (Some(d), Some(node)) = (at, heaviest) {
+                let wider = node.sigma * fm::exp(weighed.frame.width[d]);
+                let moves = moved(units.sd_out(wider)) - moved(units.sd_out(node.sigma));
+                let along = moves / node.narrowest();
+                least = least.min(1.0 / (1.0 + along * along).sqrt());
+            }
+        }
+        least
+    }
+
     pub fn ln_at(&self, x: f64) -> f64 {
         ln_sum(self.nodes.iter(), x)
     }
 
-    /// Ends of panels from the mean outward, until nothing is left (1e−30 of the top).
-    fn edges(&self) -> Vec<f64> {
+    /// x at u on a line stretched by sinh about the mean, which follows both the middle and heavy tails.
+    fn stretched(&self, u: f64) -> f64 {
+        self.mean + self.sd * fm::sinh(u)
+    }
+
+    /// The stretched coordinates between which anything is left (1e−30 of the top).
+    fn ends(&self) -> (f64, f64) {
         let (mut least, mut most) = (self.mean, self.mean);
         for node in self.nodes.iter().filter(|node| node.share > 1e-24 && node.hidden.1 < f64::INFINITY) {
             let place = node.given.constant + node.given.slope * node.hidden.0;
             (least, most) = (least.min(place), most.max(place));
         }
-        let top = self.ln_at(self.mean);
-        let outward = |direction: f64| {
-            let (mut edges, mut step, mut t, mut low, mut highest) =
-                (Vec::new(), 0.6 * self.sd, self.mean, 0, top);
-            for _ in 0..400 {
-                t += direction * step;
-                edges.push(t);
-                let here = self.ln_at(t);
+        let mut highest = self.ln_at(self.mean);
+        let mut outward = |direction: f64| {
+            let (mut u, mut low) = (0.0, 0);
+            while low < 2 && u < 700.0 {
+                u += EDGE;
+                let x = self.stretched(direction * u);
+                let here = self.ln_at(x);
                 highest = highest.max(here);
-                low = if here < highest - 69.0 && !(t > least && t < most) { low + 1 } else { 0 };
-                if low >= 2 {
-                    break;
-                }
-                step *= 1.2;
+                low = if here < highest - 69.0 && !(x > least && x < most) { low + 1 } else { 0 };
             }
-            edges
+            direction * u
         };
-        let mut all: Vec<f64> = outward(-1.0).into_iter().rev().collect();
-        all.push(self.mean);
-        all.extend(outward(1.0));
-        all
+        (outward(-1.0), outward(1.0))
+    }
+
+    /// The density on panels.
+    fn on_panels(&self, what: &str) -> Result<Panels, Absent> {
+        let (from, to) = self.ends();
+        let count = ((to - from) / EDGE).round().max(1.0) as usize;
+        let edge = |i: usize, parts: usize| from + (to - from) * i as f64 / parts as f64;
+        let coarse = (count / 2).max(1);
+        let edges: Vec<f64> = (0..=coarse).map(|i| edge(i, coarse)).collect();
+        let curve = Curve::on(&|u| self.ln_at(self.stretched(u)), &edges, OF_LN)
+            .ok_or_else(|| Absent::failed(format!("the density of {what} is not resolved")))?;
+        let density = |x: f64| curve.at(fm::asinh((x - self.mean) / self.sd)).map_or(0.0, fm::exp);
+        let edges: Vec<f64> = (0..=2 * count).map(|i| self.stretched(edge(i, 2 * count))).collect();
+        let panels = Panels::to(&density, &edges, OF_CURVES)?;
+        if (panels.total() - 1.0).abs() > 1e-9 {
+            return Err(Absent::failed(format!(
+                "the density of {what} integrates to {} by panels, not to 1",
+                panels.total()
+            )));
+        }
+        Ok(panels)
     }
 }
 
-/// The law of X over all parts; `moves_with_sd` where X moves with σ itself.
+/// The law of X over all parts; `moved` says by how much X moves with σ itself (outer units), if it does.
 pub(super) fn law(
     inner: &Inner,
     bound: f64,
     what: &str,
-    moves_with_sd: bool,
+    moved: Option<&dyn Fn(f64) -> f64>,
     at: &AtNode<'_>,
 ) -> Result<Law, Absent> {
     let weighted = inner.weighted()?;
-    let density = settled(&weighted, what, moves_with_sd, at)?;
-    let edges = density.edges();
-    let curve = Curve::on(&|t| density.ln_at(t), &edges, OF_LN)
-        .ok_or_else(|| Absent::failed(format!("the density of {what} is not resolved")))?;
-    let panels = Panels::to(&|t| curve.at(t).map_or(0.0, fm::exp), &edges, OF_CURVES)?;
-    if (panels.total() - 1.0).abs() > 1e-9 {
-        return Err(Absent::failed(format!(
-            "the density of {what} integrates to {} by panels, not to 1",
-            panels.total()
-        )));
-    }
+    let density = settled(&weighted, &inner.units, what, moved, at)?;
+    let panels = density.on_panels(what)?;
     let (mut mean, mut sd) = (density.mean, density.sd);
     if !density.exact {
         mean = panels.expect(&|x| x);
@@ -332,21 +414,26 @@ pub(super) fn law(
 /// grid over σ and τ than the sums it was chosen by.
 fn settled<'a>(
     weighted: &[Weighted<'a>],
+    units: &Units,
     what: &str,
-    moves_with_sd: bool,
+    moved: Option<&dyn Fn(f64) -> f64>,
     at: &AtNode<'_>,
 ) -> Result<Density<'a>, Absent> {
     let mut held = Density::new(weighted, 1.0, 1.0, at)?;
     if weighted.iter().all(|w| w.weighed.frame.dims == 0) {
         return Ok(held);
     }
+    let (mut finer, mut finer_sd) = (1.0, 1.0);
+    if let Some(moved) = moved {
+        finer_sd = held.steps_of_sd(weighted, units, moved);
+        held = Density::new(weighted, finer, finer_sd, at)?;
+    }
     let places = [-6.0, -2.0, -0.3, 1.2, 3.0, 7.0].map(|k| held.mean + k * held.sd);
     let measure = |density: &Density<'_>| places.map(|t| fm::exp(density.ln_at(t)));
     let mut before = measure(&held);
-    let (mut finer, mut finer_sd) = (1.0, 1.0);
     for _ in 0..10 {
-        if moves_with_sd {
-            finer_sd *= 0.7;
+        if moved.is_some() {
+            finer_sd *= 0.75;
             finer *= 0.97;
         } else {
             finer *= 0.8;
@@ -356,10 +443,10 @@ fn settled<'a>(
         let top = now.iter().copied().fold(0.0, f64::max);
         let apart = |(a, b): (&f64, &f64)| (a - b).abs() / a.max(*b).max(1e-13 * top);
         let worst = before.iter().zip(&now).map(apart).fold(0.0, f64::max);
-        (before, held) = (now, again);
         if worst <= AGREED {
             return Ok(held);
         }
+        (before, held) = (now, again);
     }
     Err(Absent::failed(format!("the density of {what} did not reach its promised accuracy")))
 }

@@ -15,7 +15,7 @@ impl Posterior {
     /// The level less the long-run mean.
     pub(super) fn change_long_run_marked(&self, bound: f64) -> Result<Law, Absent> {
         let units = &self.inner.units;
-        marked::law(&self.inner, bound, "the change", false, &|part, node| {
+        marked::law(&self.inner, bound, "the change", None, &|part, node| {
             if part.plane.by_long_run() {
                 let (constant, slope, var) = part.plane.level_given_hidden(node);
                 let tied = Tied { level: [0.0, 1.0 / units.scale, 1.0], var: 0.0, earlier: None };
@@ -38,7 +38,7 @@ impl Posterior {
                 ));
             }
         }
-        marked::law(&self.inner, bound, "the change", false, &|part, node| {
+        marked::law(&self.inner, bound, "the change", None, &|part, node| {
             let earlier = self.earlier(part, node, period, own);
             if part.plane.by_long_run() {
                 by_long_run(part, node, earlier, units)

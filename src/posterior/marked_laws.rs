@@ -1,10 +1,14 @@
 //! What a posterior with marked readings answers of its levels and readings.
 
+use super::factor::Factor;
+use super::lattice::Lattices;
 use super::law::Law;
+use super::marginal::Weighted;
 use super::marked::{self, Points, fine_enough};
 use super::marked_given::given;
 use super::{Posterior, When, mixture};
-use crate::quantity::Absent;
+use crate::math::fm;
+use crate::quantity::{Absent, Figure};
 
 impl Posterior {
     /// Points of a level, in outer units from the posterior's origin.
@@ -31,6 +35,34 @@ impl Posterior {
         Some(points.iter().flat_map(of).collect())
     }
 
+    /// Σ w B where earlier periods alone hold marked readings: B = s²/(v0 + s²) at every node, v0 the variance of
+    /// the level before this period's readings.
+    pub(super) fn prior_weight_marked(&self) -> Figure {
+        let mut sum = 0.0;
+        for Weighted { part, weighed, share } in self.inner.weighted()? {
+            let lattices = Lattices::default();
+            let top = weighed.nodes.iter().map(|n| n.ln_weight).fold(f64::NEG_INFINITY, f64::max);
+            let (mut whole, mut of_part) = (0.0, 0.0);
+            for node in &weighed.nodes {
+                let weight = fm::exp(node.ln_weight - top);
+                whole += weight;
+                let Some(at) = part.plane.readings.at(node.sigma * node.sigma) else {
+                    of_part += weight;
+                    continue;
+                };
+                let mut var = node.prior_var;
+                if part.plane.by_long_run() {
+                    let factor = Factor::of(&part.plane, node, false, None, &lattices);
+                    let long_run = factor.expected(node.long_prior_mean, node.long_prior_var);
+                    var = long_run.var + node.tau * node.tau;
+                }
+                of_part += weight * at.var / (var + at.var);
+            }
+            sum += share * of_part / whole;
+        }
+        Ok(sum)
+    }
+
     fn points_finer(&self, when: When, finer: f64) -> Result<Vec<Points>, Absent> {
         let units = &self.inner.units;
         marked::points(&self.inner.weighted()?, finer, &|part, node| {
@@ -53,7 +85,9 @@ impl Posterior {
         if !moves_with_sd && spreads.iter().all(|s| s.1 > 0.0) {
             return self.over_points(when, factor, shift_and_variance, bound, what);
         }
-        marked::law(&self.inner, bound, what, moves_with_sd, &|part, node| {
+        let moved = |sd: f64| shift_and_variance(sd).0;
+        let moved: Option<&dyn Fn(f64) -> f64> = moves_with_sd.then_some(&moved);
+        marked::law(&self.inner, bound, what, moved, &|part, node| {
             let (shift, added) = shift_and_variance(units.sd_out(node.sigma));
             given(units, part, node, when, (factor, shift, added))
         })
@@ -95,7 +129,8 @@ impl Posterior {
             let bias2 = self.inner.bias_sd * self.inner.bias_sd;
             self.affine_marked(when, 1.0, &|sd| (shift(sd), bias2), bound, what)
         } else {
-            marked::law(&self.inner, bound, what, moves_with_sd, &|part, node| {
+            let moved = moves_with_sd.then_some(shift);
+            marked::law(&self.inner, bound, what, moved, &|part, node| {
                 self.inner.true_given(part, node, when, shift(units.sd_out(node.sigma)))
             })
         };

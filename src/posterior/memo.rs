@@ -2,6 +2,7 @@
 //! history says at one (σ, τ). Kept by the bits of the coordinate, so no figure depends on it.
 
 use super::about_mean::LongRun;
+use super::lattice::Lattices;
 use std::cell::Cell;
 
 const SLOTS: usize = 512;
@@ -17,12 +18,17 @@ pub(super) struct Memo {
     /// A table for each coordinate that can be a spread.
     spreads: [Box<[Cell<Option<Slot>>]>; 3],
     long_run: Cell<Option<((u64, u64), LongRun)>>,
+    pub lattices: Lattices,
 }
 
 impl Memo {
     pub fn new() -> Memo {
         let table = || vec![Cell::new(None); SLOTS].into_boxed_slice();
-        Memo { spreads: [table(), table(), table()], long_run: Cell::new(None) }
+        Memo {
+            spreads: [table(), table(), table()],
+            long_run: Cell::new(None),
+            lattices: Lattices::default(),
+        }
     }
 
     /// The spread at coordinate `u` of dimension `dim`, and ln of its density.

@@ -14,6 +14,7 @@ mod factor;
 mod grid;
 pub mod joint;
 pub mod law;
+mod lattice;
 mod legendre;
 mod marginal;
 mod marked;
@@ -31,12 +32,15 @@ mod refined;
 mod shapes;
 mod smoothed;
 mod solve;
+mod table;
 mod told;
 mod units;
 mod walk;
 mod weighing;
 #[cfg(test)]
 mod laws_tests;
+#[cfg(test)]
+mod marked_tests;
 #[cfg(test)]
 mod published;
 
@@ -279,6 +283,7 @@ impl Posterior {
             Basis::Both if self.inner.parts.iter().any(|p| !p.plane.marks.is_empty()) => {
                 Err(Absent::because("with marked readings the prior has no one weight"))
             }
+            Basis::Both if self.is_marked() => self.prior_weight_marked(),
             Basis::Both => {
                 if let Some(own) = &self.inner.own_sd {
                     return Ok(own.prior_weight());

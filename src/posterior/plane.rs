@@ -6,9 +6,9 @@ use super::axis::{SdAxis, TauAxis};
 use super::chances::Chances;
 use super::factor::{Factor, MarkedPeriod, level_given_long_run};
 use super::grid::{MOST, Place, Weighted};
+use super::lattice::Lattices;
 use super::legendre;
 use super::memo::Memo;
-use super::smoothed::smoothed;
 use super::told::Told;
 use super::walk::Walk;
 use crate::math::fm;
@@ -263,7 +263,7 @@ impl Plane {
             self.update(&mut node);
             node.hidden = (node.mean, node.var);
             if self.is_marked() {
-                self.mark(&mut node);
+                self.mark(&mut node, &memo.lattices);
             }
             if node.ln_weight.is_nan() && (sigma == 0.0 || history_sigma == 0.0) {
                 node.ln_weight = f64::NEG_INFINITY;
@@ -358,17 +358,13 @@ impl Plane {
     }
 
     /// What the marked readings make of the node: its weight, and mean and variance of both levels.
-    fn mark(&self, node: &mut Node) {
+    fn mark(&self, node: &mut Node, lattices: &Lattices) {
         let by_long_run = self.by_long_run();
         if by_long_run {
             node.hidden = (node.long_mean, node.long_var);
         }
-        let factor = Factor::of(self, node, true, None);
-        let (mut from, var) = node.hidden;
-        if var == f64::INFINITY {
-            from = factor.place();
-        }
-        let y = smoothed(&|y| factor.ln(y), from, var, factor.sharpness());
+        let (mean, var) = node.hidden;
+        let y = Factor::of(self, node, true, None, lattices).expected(mean, var);
         node.ln_marks = y.ln;
         node.ln_weight += y.ln;
         if by_long_run {
@@ -387,7 +383,7 @@ impl Plane {
     /// ln of what the marked readings multiply a node's weight by, by Gauss–Legendre panels: a rule of its own
     /// to hold against the trapezoid's.
     pub fn marks_by_panels(&self, node: &Node) -> f64 {
-        let factor = Factor::of(self, node, true, None);
+        let factor = Factor::of(self, node, true, None, &Lattices::default());
         let (m, v) = node.hidden;
         let (centre, spread) =
             if self.by_long_run() { (node.long_mean, node.long_var) } else { (node.mean, node.var) };

@@ -5,9 +5,9 @@
 use crate::math::fm;
 
 /// Steps in narrowest sds: exp(−2π²/step²) = 4e−14 is left of the normal whose sd that is.
-const STEP: f64 = 0.8;
+pub(super) const STEP: f64 = 0.8;
 /// Terms so much smaller than the sum are not seen.
-const UNSEEN: f64 = 1e-17;
+pub(super) const UNSEEN: f64 = 1e-16;
 const MOST_TERMS: usize = 100_000;
 
 /// The integral and the first two moments of y under the integrand.

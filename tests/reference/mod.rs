@@ -2,6 +2,7 @@
 
 mod posterior;
 mod posterior_marked;
+mod posterior_marked_histories;
 mod strd;
 
 use std::fs;
