@@ -46,6 +46,8 @@ pub fn of_inverse_root(df: f64) -> (f64, f64) {
 }
 
 #[cfg(test)]
+// The reference's own digits.
+#[allow(clippy::excessive_precision)]
 mod tests {
     use super::*;
 

@@ -232,6 +232,7 @@ fn the_level_alone_agrees_with_nodes_of_its_sd() {
 /// The same model's far tails and moments by mpmath, 30 digits: ∫ N(θ; 10, 0.16) S(θ)^{−5/2} P(…| θ) dθ,
 /// S = 1.96 + 5 (θ − 10.9)², P by the incomplete gamma function.
 #[test]
+#[allow(clippy::excessive_precision)]
 fn the_level_alone_in_its_far_tails() {
     let readings = Evidence::Sums { n: 5, mean: 10.9, ss: Some(1.96), rest: 0.0 };
     let stated = LevelPrior::Stated { mean: 10.0, sd: 0.4 };
