@@ -16,7 +16,7 @@ fn main() {
     let words: Vec<String> = std::env::args().skip(1).filter(|word| !word.starts_with("--")).collect();
     let mut sizes: Vec<usize> = words.iter().filter_map(|word| word.parse().ok()).collect();
     if sizes.is_empty() {
-        sizes = if is_bench { vec![250, 500, 1000, 2000] } else { vec![3] };
+        sizes = if is_bench { vec![100, 250, 500, 1000] } else { vec![3] };
     }
     println!("{:28} {:>8} {:>12} {:>12}", "posterior", "pieces", "solve", "5 questions");
     let wanted: Vec<&String> = words.iter().filter(|word| word.parse::<usize>().is_err()).collect();
