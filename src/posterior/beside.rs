@@ -151,6 +151,8 @@ pub(super) struct Beside {
 /// the rule is exact to twice as many terms, so that its error goes with the square.
 const RESOLVED: f64 = 1e-8;
 const DEPTH: u32 = 40;
+/// What is left out of a chance, relative.
+const UNSEEN: f64 = 1e-17;
 
 impl Beside {
     /// The law, `scale` being the outer size of an inner unit. With `factor` 0 it is K's own. Moments exist below
@@ -210,22 +212,23 @@ impl Beside {
     /// ∫ p(θ) · [K's share at y − factor θ] dθ.
     fn integral(&self, y: f64, wanted: Wanted) -> f64 {
         let (own, df) = (&self.own, self.own.scatter.df);
-        let at = |level: f64| {
-            let density = own.level.density(level);
-            if density == 0.0 {
-                return 0.0;
+        let given = |level: f64, squares: f64| self.added.given(y - self.factor * level, squares, df, wanted);
+        let summed = |half: f64, value: &dyn Fn(usize, f64) -> f64| {
+            let mut values = [0.0; POINTS];
+            let mut sum = 0.0;
+            for (i, (here, (x, w))) in values.iter_mut().zip(rule()).enumerate() {
+                *here = value(i, *x);
+                sum += w * *here;
             }
-            density * self.added.given(y - self.factor * level, own.scatter.squares(level), df, wanted)
+            (half * sum, half * last_terms(&values))
         };
         let panel = |lo: f64, hi: f64| {
             let (half, middle) = (0.5 * (hi - lo), 0.5 * (hi + lo));
-            let mut values = [0.0; POINTS];
-            let mut sum = 0.0;
-            for (value, (x, w)) in values.iter_mut().zip(rule()) {
-                *value = at(middle + half * x);
-                sum += w * *value;
-            }
-            (half * sum, half * last_terms(&values))
+            summed(half, &|_, x| {
+                let level = middle + half * x;
+                let density = own.level.density(level);
+                if density == 0.0 { 0.0 } else { density * given(level, own.scatter.squares(level)) }
+            })
         };
         // A step narrower than a panel may hide between its nodes.
         let hides = |lo: f64, hi: f64| {
@@ -236,15 +239,19 @@ impl Beside {
         };
         let mut total = 0.0;
         let mut waiting = Vec::new();
-        let first: Vec<(f64, f64, f64, f64)> = own
-            .level
-            .ends()
-            .map(|(lo, hi)| {
-                let (sum, last) = panel(lo, hi);
-                total += sum.abs();
-                (lo, hi, sum, last)
-            })
-            .collect();
+        let mut first = Vec::with_capacity(own.heaviest.len());
+        for stretch in &own.heaviest {
+            // A chance is at most what is left of the level.
+            if wanted != Wanted::Density && stretch.rest < UNSEEN * total {
+                break;
+            }
+            let (sum, last) = summed(0.5 * (stretch.hi - stretch.lo), &|i, _| {
+                let (level, density, squares) = stretch.nodes[i];
+                density * given(level, squares)
+            });
+            total += sum.abs();
+            first.push((stretch.lo, stretch.hi, sum, last));
+        }
         let mut result = 0.0;
         for (lo, hi, sum, last) in first {
             waiting.push((lo, hi, sum, last, 0));

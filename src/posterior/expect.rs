@@ -172,20 +172,12 @@ impl Posterior {
         let units = &self.inner.units;
         let mut values = vec![0.0; how_many];
         let mut before: Option<Vec<f64>> = None;
-        let mut finer = 1.0;
         for round in 0..HALVINGS {
-            let of_sd = own.sd_given_level(finer);
             let mut sums = vec![0.0; how_many];
-            for (level, weight) in own.level.weights(1 << round) {
-                let size = own.scatter.squares(level).sqrt();
-                for (x, share) in &of_sd {
-                    let weight = weight * share;
-                    if weight > NEGLIGIBLE {
-                        g(units.sd_out(level), units.sd_out(size * fm::exp(*x)), &mut values);
-                        for (sum, value) in sums.iter_mut().zip(values.iter()) {
-                            *sum += weight * value;
-                        }
-                    }
+            for (level, sd, weight) in own.points(round).iter() {
+                g(units.sd_out(*level), units.sd_out(*sd), &mut values);
+                for (sum, value) in sums.iter_mut().zip(values.iter()) {
+                    *sum += weight * value;
                 }
             }
             if sums.iter().any(|sum| !sum.is_finite()) {
@@ -196,7 +188,6 @@ impl Posterior {
                 return Ok(sums);
             }
             before = Some(sums);
-            finer *= std::f64::consts::FRAC_1_SQRT_2;
         }
         Err(Absent::failed("an expectation over the posterior did not reach its promised accuracy"))
     }
@@ -205,21 +196,16 @@ impl Posterior {
     pub fn summed(&self) -> Result<Cow<'_, [Piece]>, Absent> {
         let Some(own) = &self.inner.own_sd else { return Ok(Cow::Borrowed(self.pieces()?)) };
         let units = &self.inner.units;
-        let of_sd = own.sd_given_level(1.0);
-        let mut points = Vec::new();
-        for (level, weight) in own.level.weights(1) {
-            let size = own.scatter.squares(level).sqrt();
-            let of_sd = of_sd.iter().map(|(x, share)| (x, weight * share)).filter(|(_, w)| *w > NEGLIGIBLE);
-            points.extend(of_sd.map(|(x, weight)| Piece {
-                weight,
-                level_mean: units.value_out(level),
-                level_apart: units.sd_out(level),
-                level_var: 0.0,
-                reading_sd: units.sd_out(size * fm::exp(*x)),
-                periods: None,
-            }));
-        }
-        Ok(Cow::Owned(points))
+        let points = own.points(0);
+        let points = points.iter().map(|(level, sd, weight)| Piece {
+            weight: *weight,
+            level_mean: units.value_out(*level),
+            level_apart: units.sd_out(*level),
+            level_var: 0.0,
+            reading_sd: units.sd_out(*sd),
+            periods: None,
+        });
+        Ok(Cow::Owned(points.collect()))
     }
 
     fn by_sigma(&self, when: When) -> Result<Vec<Group>, Absent> {

@@ -213,9 +213,9 @@ impl Panels {
         }
     }
 
-    /// The panels' ends.
-    pub fn ends(&self) -> impl Iterator<Item = (f64, f64)> {
-        self.panels.iter().map(|panel| (panel.lo, panel.hi))
+    /// The panels' ends and their shares of the whole.
+    pub fn shares(&self) -> impl Iterator<Item = (f64, f64, f64)> {
+        self.panels.iter().map(|panel| (panel.lo, panel.hi, panel.mass / self.total))
     }
 
     /// Gauss points t with w, every panel in `parts`: Σ w g(t) is ∫ g · density / ∫ density.

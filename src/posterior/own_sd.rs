@@ -7,13 +7,14 @@
 //! prior(θ) is the mixture that the earlier periods leave over their own (σ, τ). Inner units.
 
 use super::grid::{self, MOST, Place, Weighted, failed};
-use super::legendre::{Curve, Panels};
+use super::legendre::{Curve, POINTS, Panels, rule};
 use super::moments::Bounds;
 use super::plane::{Coordinate, Level, Plane, Sd};
 use super::told::Told;
 use super::weighing::{self, floor};
 use crate::math::{fm, roots};
 use crate::quantity::Absent;
+use std::borrow::Cow;
 use std::cell::RefCell;
 use std::sync::OnceLock;
 
@@ -27,6 +28,8 @@ const ROUNDS: usize = 14;
 const CONFIRMED: f64 = 1e-9;
 /// Normals so much (ln) lower than the highest at a place are left out there: all of them are below 1e−14 of it.
 const UNSEEN: f64 = 41.0;
+/// Points lighter than this cannot be seen in a sum over them.
+const LIGHTEST: f64 = 1e-26;
 /// A level with moments up to this only is followed further out.
 const HEAVY: f64 = 6.0;
 
@@ -41,7 +44,21 @@ pub(super) struct OwnSd {
     /// σ² with its weights before the mean is taken in.
     of_sd: Vec<(f64, f64)>,
     pub error: f64,
+    /// The panels of the level, the heaviest first.
+    pub heaviest: Vec<Stretch>,
     prior_weight: OnceLock<f64>,
+    points: [OnceLock<Vec<(f64, f64, f64)>>; 2],
+}
+
+/// One panel of the level.
+#[derive(Debug, Clone, Copy)]
+pub(super) struct Stretch {
+    pub lo: f64,
+    pub hi: f64,
+    /// The share of the whole of this one and of all lighter ones.
+    pub rest: f64,
+    /// At the nodes of the rule: the level, its density and S there.
+    pub nodes: [(f64, f64, f64); POINTS],
 }
 
 /// What the readings say of σ given the level: σ² ~ S(θ)/χ²_df.
@@ -139,7 +156,7 @@ impl OwnSd {
         } else {
             0.0
         };
-        let of_sd: Vec<(f64, f64)> = lattice(df, step_of(df + 1.0, 1e-12), reach, 1e-14)
+        let of_sd: Vec<(f64, f64)> = lattice(df, (step_of(df + 1.0, 1e-12), 0.0), reach, 1e-14)
             .into_iter()
             .map(|(x, weight)| (scatter.ss * fm::exp(2.0 * x), weight))
             .collect();
@@ -222,7 +239,9 @@ impl OwnSd {
             )));
         }
         let error = confirmed.max(error);
-        Ok(OwnSd { level, scatter, before, of_sd, error, prior_weight: OnceLock::new() })
+        let heaviest = stretches(&level, &scatter);
+        let (prior_weight, points) = (OnceLock::new(), Default::default());
+        Ok(OwnSd { level, scatter, before, of_sd, error, heaviest, prior_weight, points })
     }
 
     /// Σ w B, the prior's weight in the level's mean.
@@ -259,10 +278,51 @@ impl OwnSd {
         })
     }
 
-    /// ln σ less ½ ln S(θ), with weights whose sum is 1: for sums over σ given the level. `finer` shortens its steps.
-    pub fn sd_given_level(&self, finer: f64) -> Vec<(f64, f64)> {
-        lattice(self.scatter.df, finer * step_of(self.scatter.df, 1e-15), 0.0, 1e-27)
+    /// (level, σ, weight) whose sums are integrals over both; every `round` has other and more of them.
+    pub fn points(&self, round: u32) -> Cow<'_, [(f64, f64, f64)]> {
+        match self.points.get(round as usize) {
+            Some(kept) => Cow::Borrowed(kept.get_or_init(|| self.points_anew(round))),
+            None => Cow::Owned(self.points_anew(round)),
+        }
     }
+
+    fn points_anew(&self, round: u32) -> Vec<(f64, f64, f64)> {
+        // The second rule differs by its panels and by where σ's lattice begins; the steps of further ones are shorter.
+        let (parts, offset) = if round == 0 { (1, 0.0) } else { (1 << round, 0.5) };
+        let mut finer = 1.0;
+        for _ in 1..round {
+            finer *= std::f64::consts::FRAC_1_SQRT_2;
+        }
+        let df = self.scatter.df;
+        let of_sd = lattice(df, (finer * step_of(df, 1e-13), offset), 0.0, 1e-27);
+        let of_sd: Vec<(f64, f64)> = of_sd.into_iter().map(|(x, share)| (fm::exp(x), share)).collect();
+        let mut points = Vec::new();
+        for (level, weight) in self.level.weights(parts) {
+            let size = self.scatter.squares(level).sqrt();
+            let of_sd = of_sd.iter().map(|(ratio, share)| (level, size * ratio, weight * share));
+            points.extend(of_sd.filter(|point| point.2 > LIGHTEST));
+        }
+        points
+    }
+}
+
+fn stretches(level: &Panels, scatter: &Scatter) -> Vec<Stretch> {
+    let mut all: Vec<(f64, f64, f64)> = level.shares().collect();
+    // A stable sort: panels of one weight stay in their order.
+    all.sort_by(|a, b| b.2.total_cmp(&a.2));
+    let mut rest = 0.0;
+    let mut made = Vec::with_capacity(all.len());
+    for (lo, hi, share) in all.into_iter().rev() {
+        rest += share;
+        let mut nodes = [(0.0, 0.0, 0.0); POINTS];
+        for (node, (x, _)) in nodes.iter_mut().zip(rule()) {
+            let at = 0.5 * (hi + lo) + 0.5 * (hi - lo) * x;
+            *node = (at, level.density(at), scatter.squares(at));
+        }
+        made.push(Stretch { lo, hi, rest, nodes });
+    }
+    made.reverse();
+    made
 }
 
 fn exponent(error: f64, var: f64, mean_var: f64) -> f64 {
@@ -288,21 +348,22 @@ fn ln_chance(of_sd: &[(f64, f64)], scatter: &Scatter, mean: f64, var: f64) -> f6
     fm::ln(sum) - least - fm::HALF_LN_TWO_PI
 }
 
-/// x = ln σ − ½ ln S for σ² ~ S/χ²_df, with weights that add up to 1: the trapezoid rule in ln σ. It goes `further`
+/// x = ln σ − ½ ln S for σ² ~ S/χ²_df, with weights that add up to 1: the trapezoid rule in ln σ, its points `offset`
+/// steps from the top. It goes `further`
 /// up than its weights, lighter than `smallest` of the heaviest, would.
-fn lattice(df: f64, step: f64, further: f64, smallest: f64) -> Vec<(f64, f64)> {
+fn lattice(df: f64, (step, offset): (f64, f64), further: f64, smallest: f64) -> Vec<(f64, f64)> {
     let centre = -0.5 * fm::ln(df);
     // −½ df (2u + e^−2u − 1), u = x − centre: 0 at its top.
     let ln_weight = |u: f64| -0.5 * df * (2.0 * u + fm::exp_m1(-2.0 * u));
     let depth = fm::ln(smallest);
     let mut all = Vec::new();
     let mut index = 0;
-    while ln_weight(f64::from(index) * step) > depth {
+    while ln_weight((f64::from(index) + offset) * step) > depth {
         index -= 1;
     }
     let mut whole = 0.0;
     loop {
-        let u = f64::from(index) * step;
+        let u = (f64::from(index) + offset) * step;
         let ln = ln_weight(u);
         if u > further && ln < depth {
             break;
