@@ -171,8 +171,7 @@ impl Beside {
         let (middle, width) = (factor * centre + place, level + spread);
         // E σ² = S/(ν−2), Var σ² = 2 S²/((ν−2)² (ν−4)).
         let (mean_of_root, var_of_root) = chi_square::of_inverse_root(df);
-        let first = |t: f64| {
-            let s = own.scatter.squares(t);
+        let first = |t: f64, s: f64| {
             factor * (t - centre)
                 + match added {
                     Added::Nothing | Added::Normal(_) => 0.0,
@@ -180,23 +179,20 @@ impl Beside {
                     Added::Variance(h) => h * s / (df - 2.0),
                 }
         };
-        let of_added = |t: f64| {
-            let s = own.scatter.squares(t);
-            match added {
-                Added::Nothing => 0.0,
-                Added::Normal(share) => share * s / (df - 2.0),
-                Added::Sd(z) => z * z * s * var_of_root,
-                Added::Variance(h) => {
-                    let mean = h * s / (df - 2.0);
-                    2.0 * mean * mean / (df - 4.0)
-                }
+        let of_added = |s: f64| match added {
+            Added::Nothing => 0.0,
+            Added::Normal(share) => share * s / (df - 2.0),
+            Added::Sd(z) => z * z * s * var_of_root,
+            Added::Variance(h) => {
+                let mean = h * s / (df - 2.0);
+                2.0 * mean * mean / (df - 4.0)
             }
         };
-        let mean = own.level.expect(&first);
+        let mean = own.expect(&first);
         let var = || {
-            own.level.expect(&|t| {
-                let d = first(t) - mean;
-                d * d + of_added(t)
+            own.expect(&|t, s| {
+                let d = first(t, s) - mean;
+                d * d + of_added(s)
             })
         };
         let mean_out = moment(1.0, bound, what, || scale * (factor * centre + mean) + shift);

@@ -244,6 +244,18 @@ impl OwnSd {
         Ok(OwnSd { level, scatter, before, of_sd, error, heaviest, prior_weight, points })
     }
 
+    /// ∫ p(θ) g(θ, S(θ)) dθ over the panels' nodes, for a g as smooth as p.
+    pub fn expect(&self, g: &dyn Fn(f64, f64) -> f64) -> f64 {
+        let mut sum = 0.0;
+        for stretch in &self.heaviest {
+            let half = 0.5 * (stretch.hi - stretch.lo);
+            for ((level, density, squares), (_, w)) in stretch.nodes.iter().zip(rule()) {
+                sum += half * w * density * g(*level, *squares);
+            }
+        }
+        sum
+    }
+
     /// Σ w B, the prior's weight in the level's mean.
     pub fn prior_weight(&self) -> f64 {
         *self.prior_weight.get_or_init(|| {
