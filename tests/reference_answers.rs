@@ -24,7 +24,7 @@ const OF_PLAN: f64 = 1e-6;
 /// Specs that take more than a few seconds without optimisation: two or three unknown spreads under a dozen
 /// alternatives, or shares and percentiles over them. `cargo test --release reference_answers -- --include-ignored`
 /// runs them too.
-const LONG: [&str; 22] = [
+const LONG: [&str; 23] = [
     "09-history-uniform-known",
     "10-history-uniform-history",
     "11-history-half-normal",
@@ -47,6 +47,7 @@ const LONG: [&str; 22] = [
     "79-rules-stated-readings",
     "89-needed-history",
     "94-share-readings",
+    "95-share-history",
 ];
 
 fn folder() -> PathBuf {
