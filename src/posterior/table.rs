@@ -9,7 +9,7 @@ const TERMS: usize = 12;
 /// Panels on either side of the centre; beyond them the function itself is asked.
 const HALF: usize = 40;
 /// The last two terms (relative, or absolute below 1) where a panel is resolved.
-const RESOLVED: f64 = 1e-13;
+const RESOLVED: f64 = 1e-12;
 
 type Series = [f64; TERMS];
 
