@@ -26,7 +26,7 @@ const RATIO: f64 = 0.85;
 const ROUNDS: usize = 14;
 /// And the level's whole mass, by panels, with the sum over σ's own lattice to this.
 const CONFIRMED: f64 = 1e-9;
-/// Normals so much (ln) lower than the highest at a place are left out there: all of them are below 1e−14 of it.
+/// Terms so much (ln) lower than the highest of a sum are left out: all of them are below 1e−14 of it.
 const UNSEEN: f64 = 41.0;
 /// Points lighter than this cannot be seen in a sum over them.
 const LIGHTEST: f64 = 1e-26;
@@ -78,9 +78,9 @@ impl Scatter {
         self.ss + self.readings * (d * d)
     }
 
-    /// x̄.
-    pub fn centre(&self) -> f64 {
-        self.mean
+    /// A usual σ: that of the readings about their own mean.
+    pub fn usual_sd(&self) -> f64 {
+        (self.ss / self.df).sqrt()
     }
 
     /// ln of what the readings say of the level, σ integrated out; 0 at x̄.
@@ -169,7 +169,7 @@ impl OwnSd {
                 var: node.prior_var,
             };
             if scatter.readings > 0.0 && before.ln_weight > f64::NEG_INFINITY {
-                before.ln_weight += ln_chance(&of_sd, &scatter, before.mean, before.var);
+                before.ln_weight += over_sd(&of_sd, &scatter, before.mean, before.var).0;
             }
             before
         };
@@ -264,27 +264,10 @@ impl OwnSd {
             }
             let top = self.before.iter().map(|b| b.ln_weight).fold(f64::NEG_INFINITY, f64::max);
             let (mut whole, mut sum) = (0.0, 0.0);
-            for before in &self.before {
+            for before in self.before.iter().filter(|before| before.ln_weight > top - UNSEEN) {
                 let weight = fm::exp(before.ln_weight - top);
-                if weight < 1e-20 {
-                    continue;
-                }
-                let error = self.scatter.mean - before.mean;
-                let least = self
-                    .of_sd
-                    .iter()
-                    .map(|(sd2, _)| exponent(error, before.var, sd2 / self.scatter.readings));
-                let least = least.fold(f64::INFINITY, f64::min);
-                let (mut all, mut share) = (0.0, 0.0);
-                for (sd2, of_sd) in &self.of_sd {
-                    let mean_var = sd2 / self.scatter.readings;
-                    let total = before.var + mean_var;
-                    let w = of_sd * fm::exp(least - exponent(error, before.var, mean_var)) / total.sqrt();
-                    all += w;
-                    share += w * (mean_var / total);
-                }
                 whole += weight;
-                sum += weight * (share / all);
+                sum += weight * over_sd(&self.of_sd, &self.scatter, before.mean, before.var).1;
             }
             sum / whole
         })
@@ -337,27 +320,25 @@ fn stretches(level: &Panels, scatter: &Scatter) -> Vec<Stretch> {
     made
 }
 
-fn exponent(error: f64, var: f64, mean_var: f64) -> f64 {
-    0.5 * error * error / (var + mean_var)
-}
-
-/// ln of the chance of x̄ under N(mean, var + σ²/n), σ summed over its lattice; a constant left out.
-fn ln_chance(of_sd: &[(f64, f64)], scatter: &Scatter, mean: f64, var: f64) -> f64 {
+/// Over σ's lattice: ln of the chance of x̄ under N(mean, var + σ²/n), and the share of σ²/n in that variance,
+/// weighed by that chance: the weight of the prior N(mean, var).
+fn over_sd(of_sd: &[(f64, f64)], scatter: &Scatter, mean: f64, var: f64) -> (f64, f64) {
     let error = scatter.mean - mean;
     let per_reading = 1.0 / scatter.readings;
-    let mut least = f64::INFINITY;
-    for (sd2, _) in of_sd {
-        least = least.min(exponent(error, var, sd2 * per_reading));
-    }
-    let mut sum = 0.0;
-    for (sd2, weight) in of_sd {
-        let mean_var = sd2 * per_reading;
-        let away = least - exponent(error, var, mean_var);
-        if away > -35.0 {
-            sum += weight * fm::exp(away) / (var + mean_var).sqrt();
+    let exponent = |total: f64| 0.5 * error * error / total;
+    let of_mean = || of_sd.iter().map(|(sd2, weight)| (sd2 * per_reading, *weight));
+    let least = of_mean().map(|(mean_var, _)| exponent(var + mean_var)).fold(f64::INFINITY, f64::min);
+    let (mut sum, mut share) = (0.0, 0.0);
+    for (mean_var, weight) in of_mean() {
+        let total = var + mean_var;
+        let away = least - exponent(total);
+        if away > -UNSEEN {
+            let here = weight * fm::exp(away) / total.sqrt();
+            sum += here;
+            share += here * (mean_var / total);
         }
     }
-    fm::ln(sum) - least - fm::HALF_LN_TWO_PI
+    (fm::ln(sum) - least - fm::HALF_LN_TWO_PI, share / sum)
 }
 
 /// x = ln σ − ½ ln S for σ² ~ S/χ²_df, with weights that add up to 1: the trapezoid rule in ln σ, its points `offset`
@@ -423,7 +404,7 @@ impl<'a> Density<'a> {
             .iter()
             .map(|b| (b.ln_prior - whole - 0.5 * fm::ln(b.var) - fm::HALF_LN_TWO_PI, b.mean, 0.5 / b.var))
             .collect();
-        let ln_top = if scatter.readings > 0.0 { ln_chance(of_sd, scatter, scatter.mean, 0.0) } else { 0.0 };
+        let ln_top = if scatter.readings > 0.0 { over_sd(of_sd, scatter, scatter.mean, 0.0).0 } else { 0.0 };
         Density { scatter, ln_top, normals, exponents: RefCell::default() }
     }
 

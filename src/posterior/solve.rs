@@ -326,7 +326,7 @@ impl Inner {
 
     /// A usual σ, outer units.
     pub fn usual_sd(&self, own: &OwnSd) -> f64 {
-        self.units.sd_out((own.scatter.squares(own.scatter.centre()) / own.scatter.df).sqrt())
+        self.units.sd_out(own.scatter.usual_sd())
     }
 
     /// The law of factor · level + shift + what is added, from the origin.

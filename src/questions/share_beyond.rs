@@ -145,13 +145,13 @@ fn bound_by_laws(posterior: &Posterior, (limit, sign): (f64, f64), tail: f64, up
             }
         }
     };
-    // Shares below 1e-18, or as near to 1, are not told apart here.
-    const REACH: f64 = 9.0;
-    let (first, last) = (excess(-REACH), excess(REACH));
+    // With marked readings shares below 1e-18, or as near to 1, are not told apart.
+    let reach = if posterior.is_marked() { 9.0 } else { REACH };
+    let (first, last) = (excess(-reach), excess(reach));
     let found = match (first > 0.0, last < 0.0) {
-        (true, _) => Ok(-REACH),
-        (_, true) => Ok(REACH),
-        _ => roots::solve(&excess, -REACH, REACH, roots::Tolerance::new(1e-13, 1e-13)),
+        (true, _) => Ok(-reach),
+        (_, true) => Ok(reach),
+        _ => roots::solve(&excess, -reach, reach, roots::Tolerance::new(1e-13, 1e-13)),
     };
     if let Some(absent) = failed.into_inner() {
         return Err(absent);
